@@ -1,0 +1,151 @@
+#include "driver/core/clock.h"
+
+#include <boost/asio/any_completion_handler.hpp>
+#include <boost/asio/any_io_executor.hpp>
+#include <boost/asio/associated_cancellation_slot.hpp>
+#include <boost/asio/async_result.hpp>
+#include <boost/asio/awaitable.hpp>
+#include <boost/asio/error.hpp>
+#include <boost/asio/io_context.hpp>
+#include <boost/asio/post.hpp>
+#include <boost/asio/steady_timer.hpp>
+#include <boost/asio/use_awaitable.hpp>
+#include <cstdio>
+#include <ctime>
+#include <unordered_map>
+
+namespace shuntwright {
+
+namespace asio = boost::asio;
+
+std::string rfc3339(Instant when) {
+  using namespace std::chrono;
+  const auto ms = floor<milliseconds>(when);
+  const auto day = floor<days>(ms);
+  const year_month_day date(day);
+  const hh_mm_ss time(ms - day);
+  char out[64];
+  std::snprintf(out, sizeof out, "%04d-%02u-%02uT%02d:%02d:%02d.%03dZ", static_cast<int>(date.year()),
+                static_cast<unsigned>(date.month()), static_cast<unsigned>(date.day()),
+                static_cast<int>(time.hours().count()), static_cast<int>(time.minutes().count()),
+                static_cast<int>(time.seconds().count()), static_cast<int>(time.subseconds().count()));
+  return out;
+}
+
+namespace {
+
+/// One pending wait: fires from the clock or is cut short by cancellation, whichever comes first.
+struct PendingWait {
+  asio::any_completion_handler<void(boost::system::error_code)> handler;
+  Clock* clock = nullptr;
+  Clock::Ticket ticket = 0;
+
+  void finish(boost::system::error_code ec) {
+    if (!handler) return;
+    auto done = std::move(handler);
+    handler = nullptr;
+    std::move(done)(ec);
+  }
+};
+
+}  // namespace
+
+Task<void> waitUntil(Clock& clock, Instant when) {
+  auto executor = co_await asio::this_coro::executor;
+  co_await asio::async_initiate<const asio::use_awaitable_t<>&, void(boost::system::error_code)>(
+      [&clock, when, executor](auto handler) {
+        auto wait = std::make_shared<PendingWait>();
+        wait->clock = &clock;
+        auto slot = asio::get_associated_cancellation_slot(handler);
+        wait->handler = std::move(handler);
+        if (slot.is_connected()) {
+          slot.assign([weak = std::weak_ptr<PendingWait>(wait), executor](asio::cancellation_type type) {
+            if (type == asio::cancellation_type::none) return;
+            if (auto pending = weak.lock()) {
+              pending->clock->cancel(pending->ticket);
+              asio::post(executor, [pending] { pending->finish(asio::error::operation_aborted); });
+            }
+          });
+        }
+        wait->ticket = clock.at(when, [wait] { wait->finish({}); });
+      },
+      asio::use_awaitable);
+}
+
+Task<void> waitFor(Clock& clock, Nanoseconds duration) { return waitUntil(clock, clock.now() + duration); }
+
+// ---------------------------------------------------------------- real time
+
+struct RealClock::State {
+  explicit State(asio::io_context& ctx) : context(ctx) {}
+  asio::io_context& context;
+  Instant startUtc = std::chrono::time_point_cast<Nanoseconds>(std::chrono::system_clock::now());
+  std::chrono::steady_clock::time_point startSteady = std::chrono::steady_clock::now();
+  Ticket last = 0;
+  std::unordered_map<Ticket, std::unique_ptr<asio::steady_timer>> timers;
+};
+
+RealClock::RealClock(asio::io_context& context) : state_(std::make_shared<State>(context)) {}
+RealClock::~RealClock() { state_->timers.clear(); }
+
+Instant RealClock::now() const {
+  return state_->startUtc + (std::chrono::steady_clock::now() - state_->startSteady);
+}
+
+Clock::Ticket RealClock::at(Instant when, std::function<void()> callback) {
+  const Ticket ticket = ++state_->last;
+  auto timer = std::make_unique<asio::steady_timer>(state_->context);
+  timer->expires_at(state_->startSteady + (when - state_->startUtc));
+  timer->async_wait([weak = std::weak_ptr<State>(state_), ticket,
+                     callback = std::move(callback)](boost::system::error_code ec) {
+    auto state = weak.lock();
+    if (!state) return;
+    const bool wanted = state->timers.erase(ticket) == 1;
+    if (!ec && wanted) callback();
+  });
+  state_->timers.emplace(ticket, std::move(timer));
+  return ticket;
+}
+
+void RealClock::cancel(Ticket ticket) { state_->timers.erase(ticket); }
+
+// ---------------------------------------------------------------- virtual time
+
+Clock::Ticket VirtualClock::at(Instant when, std::function<void()> callback) {
+  const Ticket ticket = ++last_;
+  const Instant deadline = when < now_ ? now_ : when;
+  queue_.emplace(Key{deadline, ticket}, std::move(callback));
+  deadlines_.emplace(ticket, deadline);
+  return ticket;
+}
+
+void VirtualClock::cancel(Ticket ticket) {
+  const auto found = deadlines_.find(ticket);
+  if (found == deadlines_.end()) return;
+  queue_.erase(Key{found->second, ticket});
+  deadlines_.erase(found);
+}
+
+bool VirtualClock::advance() {
+  if (queue_.empty()) return false;
+  auto first = queue_.extract(queue_.begin());
+  now_ = first.key().first;
+  deadlines_.erase(first.key().second);
+  first.mapped()();
+  return true;
+}
+
+Instant VirtualClock::next() const { return queue_.empty() ? Instant::max() : queue_.begin()->first.first; }
+
+void runVirtual(asio::io_context& context, VirtualClock& clock, const std::function<bool()>& done) {
+  for (;;) {
+    context.restart();
+    while (context.poll() > 0) {
+      if (done && done()) return;
+    }
+    if (done && done()) return;
+    if (!clock.advance()) return;
+  }
+}
+
+}  // namespace shuntwright

@@ -1,0 +1,164 @@
+#pragma once
+
+#include <array>
+#include <map>
+#include <memory>
+#include <optional>
+#include <string>
+#include <utility>
+#include <vector>
+
+#include "driver/core/clock.h"
+#include "driver/core/error.h"
+#include "driver/description/profile.h"
+#include "driver/description/wiring.h"
+#include "driver/units/units.h"
+
+namespace shuntwright::description {
+
+/// Where a device is plugged in: "serial:/dev/ttyUSB0", "tcp:127.0.0.1:5025", "replay:FILE".
+struct Port {
+  enum class Kind { serial, tcp, replay };
+  Kind kind = Kind::tcp;
+  std::string path;  ///< device node, host or file
+  int tcpPort = 0;
+  std::string text;  ///< as written
+};
+
+struct Device {
+  Place place;
+  std::string name;
+  std::shared_ptr<const Profile> profile;
+  Port port;
+  std::string serialNumber;                 ///< expected; empty: any
+  std::optional<units::Frequency> rate;     ///< samples/s a channel; none: the profile's first
+};
+
+/// What the packet says of a gauge. `factor` and `resistance` are nominal; tolerances are rectangular.
+struct GaugeSheet {
+  Place place;
+  std::string name;
+  units::GaugeFactor factor;
+  units::Fraction factorTolerance = 1.0 * units::percent;
+  Toleranced resistance{120.0 * units::ohm, 0.3 * units::percent};
+  std::optional<units::Area> gridArea;
+  std::string specimen;  ///< what it is bonded to, for the heating warning: "steel", "aluminium", ...
+};
+
+/// A precision resistor that relays switch.
+struct Resistor {
+  Place place;
+  std::string name;
+  units::Resistance value;
+  units::Fraction tolerance;                ///< rectangular half-width; 0 when a certificate gives U
+  units::Fraction expandedUncertainty;      ///< of the certificate; 0 when only a tolerance is known
+  double coverageFactor = 2;
+  units::TemperatureCoefficient temperatureCoefficient;
+  units::TemperatureDifference temperatureSpan;  ///< half-width of the resistor's temperature about the certificate's
+  std::string certificate;
+};
+
+/// One wire. Known by its resistance or by length and wire number.
+struct Lead {
+  Place place;
+  units::Resistance resistance;             ///< at `temperature`, worked out from length and AWG if given so
+  units::Fraction tolerance = 2.0 * units::percent;
+  units::Temperature temperature = units::Temperature::celsius(20);
+  units::TemperatureDifference temperatureTolerance = 5.0 * units::kelvin;  ///< half-width
+  std::optional<units::Length> length;
+  std::optional<int> awg;
+};
+
+struct RelayRef {
+  std::string device;
+  int relay = 0;  ///< as numbered on the wire
+  friend auto operator<=>(const RelayRef&, const RelayRef&) = default;
+};
+
+/// A resistor that a relay puts between two terminals.
+struct Shunt {
+  Place place;
+  std::string name;
+  std::string resistor;                     ///< key of Rack::resistors
+  RelayRef relay;
+  std::pair<Terminal, Terminal> across;
+  Side side = Side::instrument;
+};
+
+/// Where the loss in the leads goes. It is applied once.
+enum class LeadLoss {
+  in_prediction,  ///< lead resistance is known and lies in the predicted step; the span is the amplifier's own
+  in_span,        ///< lead resistance is not known; only allowed for shunts whose step carries the loss
+};
+
+/// Why the bridge is off zero with nothing applied. It decides the scale at the working point.
+enum class Unbalance { unknown, standing_strain, gauge_off_nominal, completion };
+
+/// Data of a bought transducer.
+struct TransducerSheet {
+  units::Resistance inputResistance = 380.0 * units::ohm;
+  units::Resistance outputResistance = 350.0 * units::ohm;
+  units::Ratio sensitivity = 2.0 * units::millivolt_per_volt;  ///< at rated value
+  units::Fraction sensitivityTolerance = 0.1 * units::percent;
+  double ratedValue = 0;
+  std::string unit;  ///< "kN", "degC", ...
+};
+
+struct Channel {
+  Place place;
+  std::string name;
+  std::string device;
+  int input = 0;                             ///< as numbered on the wire
+  CircuitKind circuit = CircuitKind::quarter_3_wire;
+  bool sensed = false;                       ///< excitation sensed at the gauge (6-wire)
+  std::string gauge;                         ///< key of Rack::gauges; empty for a transducer
+  /// Gauge resistance as measured on the specimen, if it was: value and expanded uncertainty as fraction.
+  std::optional<Toleranced> measuredResistance;
+  double poisson = 0.3;
+  std::optional<TransducerSheet> transducer;
+  std::map<Terminal, Lead> leads;            ///< exactly the circuit's leads
+  std::optional<units::Resistance> completion;  ///< which of the profile's; quarter bridges and half_opposite
+  units::Voltage excitation = 5.0 * units::volt;
+  LeadLoss leadLoss = LeadLoss::in_prediction;
+  Unbalance unbalance = Unbalance::unknown;
+  bool loadControl = false;                  ///< feeds a controller: a shunt on it moves the actuator
+  std::optional<units::Strain> expected;     ///< largest strain expected in the test
+  std::string group;                         ///< free text: "rosette R1", "mid-span"
+  std::vector<Shunt> shunts;                 ///< may be empty: the channel is recorded, not calibrated
+};
+
+/// Verdict limits. Defaults are common practice, no source.
+struct Limits {
+  units::Fraction spanDeviation = 2.0 * units::percent;        ///< |span ratio - 1|
+  units::Strain zeroReturn = 10.0 * units::microstrain;        ///< |return - before|
+  units::Strain noise = 5.0 * units::microstrain;              ///< standard deviation of a sample
+  units::Fraction repeatability = 0.5 * units::percent;        ///< spread of repeated steps
+  units::Ratio unbalance = 2.0 * units::millivolt_per_volt;    ///< |before|
+};
+
+struct CalibrationSettings {
+  int windowSamples = 32;               ///< samples averaged for one reading
+  int repeats = 2;                      ///< before/shunt/after cycles of each shunt
+  Nanoseconds settleLimit = std::chrono::seconds(5);  ///< give up waiting for a steady reading
+};
+
+/// One bench.
+struct Rack {
+  std::string file;
+  std::string text;
+  std::string name;
+  std::string title;
+  std::vector<Device> devices;
+  std::map<std::string, GaugeSheet> gauges;
+  std::map<std::string, Resistor> resistors;
+  std::vector<Channel> channels;
+  Limits limits;
+  CalibrationSettings calibration;
+
+  const Device* device(const std::string& name) const;
+  const Channel* channel(const std::string& name) const;
+  const GaugeSheet& gaugeOf(const Channel& channel) const;  ///< channel.gauge must not be empty
+  const Resistor& resistorOf(const Shunt& shunt) const;
+};
+
+}  // namespace shuntwright::description
