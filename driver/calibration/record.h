@@ -1,0 +1,86 @@
+#pragma once
+
+#include <cstdint>
+#include <optional>
+#include <string>
+#include <vector>
+
+#include "driver/bridge/rational_map.h"
+#include "driver/core/clock.h"
+#include "driver/description/rack.h"
+#include "driver/units/units.h"
+
+namespace shuntwright::calibration {
+
+enum class Verdict { pass, fail, not_calibrated };
+const char* name(Verdict verdict);  ///< "pass", "fail", "not calibrated"
+
+/// Something that a person should know about a channel.
+struct Finding {
+  std::string code;      ///< "step-missing", "wrong-sign", "span-deviates", "noisy", "no-zero-return", "saturated", ...
+  std::string message;
+  std::string evidence;  ///< the figures behind it
+};
+
+/// One input of an uncertainty budget, as a quality manager reads it.
+struct BudgetLine {
+  std::string quantity;      ///< "shunt resistor RC350", "gauge resistance", "noise of the windows"
+  double value = 0;
+  std::string unit;
+  std::string distribution;  ///< "normal", "rectangular"
+  double standardUncertainty = 0;  ///< in `unit`
+  double degreesOfFreedom = 0;     ///< infinity for type B
+  double sensitivity = 0;          ///< percent of the result per `unit`
+  double contribution_percent = 0; ///< |sensitivity| x standardUncertainty
+};
+
+struct Budget {
+  std::vector<BudgetLine> lines;
+  double standardUncertainty_percent = 0;
+  double effectiveDegreesOfFreedom = 0;
+  double coverageFactor = 2;
+  double expandedUncertainty_percent = 0;  ///< at 95.45 %
+};
+
+/// One before / shunt / after measurement, the mean of its repeats. Ratios in V/V as read.
+struct ShuntResult {
+  std::string name;
+  units::Ratio before, after, returned;  ///< "returned" is after the relay opened again
+  units::Ratio measuredStep;             ///< drift removed (A-B-A)
+  units::Ratio predictedStep;            ///< at the before state
+  units::Ratio stepDeviation;            ///< standard deviation of the repeated steps; 0 for one repeat
+  units::Ratio noise;                    ///< standard deviation of a sample
+  Nanoseconds settling{0};               ///< longest time until a window was steady
+  int repeats = 0;
+};
+
+struct ChannelResult {
+  std::string name;
+  Verdict verdict = Verdict::not_calibrated;
+  std::vector<Finding> findings;
+  double spanRatio = 1;                  ///< measured / predicted
+  Budget budget;                         ///< of the correction's scale: everything that a shunt can see
+  std::optional<units::Resistance> leadResistance;      ///< as used: entered (mean of the leads)
+  std::optional<units::Resistance> leadUncertainty;     ///< expanded
+  units::Ratio zero;                     ///< reading at no load
+  std::vector<ShuntResult> shunts;
+  bridge::RationalMap correction;        ///< reading in V/V -> strain (or fraction of rated value), zeroed
+  double factorUncertainty_percent = 0;  ///< expanded, of the gauge factor alone: no shunt sees it
+};
+
+/// Everything that one calibration found.
+struct Record {
+  std::string id;        ///< from the start time and the seed or a random source: "20260504-093000-7f3a"
+  Instant started;
+  std::string software;  ///< "shuntwright 0.1.0"
+  std::string rackName;
+  std::string rackFile;
+  std::vector<ChannelResult> channels;
+  int windows = 0;       ///< readings taken
+  Nanoseconds duration{0};
+
+  bool passed() const;   ///< no channel failed
+  const ChannelResult* channel(const std::string& name) const;
+};
+
+}  // namespace shuntwright::calibration
