@@ -58,6 +58,7 @@ bool exists(const Circuit& circuit, const ShuntPath& path);
 /// The exact ratio at a strain with these shunts connected, by a nodal solve of the whole network.
 /// Leads may be 0 ohm. Errors: bad_use when a shunt's terminals do not exist in the circuit; bad_use when
 /// a resistance is negative or an arm is not positive at that strain.
-Result<units::Ratio> ratio(const Circuit& circuit, units::Strain strain, std::span<const ShuntPath> shunts = {});
+Result<units::Ratio> ratio(const Circuit& circuit, units::Strain strain,
+                           std::span<const ShuntPath> shunts = {});
 
 }  // namespace shuntwright::bridge

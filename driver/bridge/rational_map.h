@@ -21,7 +21,8 @@ struct RationalMap {
 
 struct FittedMap {
   RationalMap map;
-  units::Strain worstError;  ///< largest |map - truth| over the range, searched on a dense grid; rounding only when exact
+  units::Strain worstError;  ///< largest |map - truth| over the range, searched on a dense grid; rounding
+                             ///< only when exact
   units::Strain range;       ///< half-width the error was searched over
 };
 
@@ -31,7 +32,8 @@ Result<FittedMap> mapOf(const Circuit& circuit, units::Strain centre = {},
                         units::Strain range = 20000.0 * units::microstrain);
 
 /// The strain at which the circuit shows this ratio, by the exact network (refined until the ratio agrees to
-/// rounding). Errors: bad_use when no strain in +-100 000 microstrain gives it.
+/// rounding). Errors: bad_use when no strain in +-100 000 microstrain (a transducer: +-10 times the rated
+/// value) gives it.
 Result<units::Strain> strainOf(const Circuit& circuit, units::Ratio ratio);
 
 }  // namespace shuntwright::bridge
