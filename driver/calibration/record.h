@@ -65,7 +65,11 @@ struct ChannelResult {
   units::Ratio zero;                     ///< reading at no load
   std::vector<ShuntResult> shunts;
   bridge::RationalMap correction;        ///< reading in V/V -> strain (or fraction of rated value), zeroed
+  units::Strain worstMapError;           ///< of the correction's form against the exact circuit, within its range
+  units::Strain zeroExpandedUncertainty; ///< how far the zero may move until the test
   double factorUncertainty_percent = 0;  ///< expanded, of the gauge factor alone: no shunt sees it
+  std::string unit = "microstrain";      ///< what corrected values are shown in
+  double unitsPerStrain = 1e6;           ///< shown value = corrected value x this (a transducer: rated value)
 };
 
 /// Everything that one calibration found.
@@ -78,8 +82,9 @@ struct Record {
   std::vector<ChannelResult> channels;
   int windows = 0;       ///< readings taken
   Nanoseconds duration{0};
+  std::vector<std::string> relaysMaybeClosed;  ///< that would not open; must be empty
 
-  bool passed() const;   ///< no channel failed
+  bool passed() const;   ///< no channel failed and no relay is left closed
   const ChannelResult* channel(const std::string& name) const;
 };
 

@@ -1,0 +1,223 @@
+#include "driver/calibration/analysis.h"
+
+#include <algorithm>
+#include <cmath>
+#include <limits>
+
+#include "driver/calibration/channel_model.h"
+#include "driver/calibration/uncertainty.h"
+
+namespace shuntwright::calibration {
+
+using namespace units;
+using description::Channel;
+using description::Rack;
+
+std::vector<Ratio> stepsOf(const ShuntReadings& readings) {
+  std::vector<Ratio> steps;
+  for (std::size_t k = 0; k < readings.closed.size() && k + 1 < readings.opened.size(); ++k) {
+    steps.push_back(readings.closed[k].mean - 0.5 * (readings.opened[k].mean + readings.opened[k + 1].mean));
+  }
+  return steps;
+}
+
+namespace {
+
+template <class Get>
+double meanOf(const std::vector<Window>& windows, Get get) {
+  double sum = 0;
+  for (const auto& w : windows) sum += get(w);
+  return windows.empty() ? 0 : sum / static_cast<double>(windows.size());
+}
+
+double valueOf(Ratio r) { return r.in(volt_per_volt); }
+
+/// By how much the variance of a mean exceeds that of independent samples, when an input filter of time
+/// constant tau makes neighbours alike: (1 + rho) / (1 - rho), rho = exp(-T / tau).
+double correlationFactor(const Rack& rack, const Channel& channel) {
+  const auto& device = *rack.device(channel.device);
+  const double tau_s = seconds(device.profile->inputs->filterTimeConstant);
+  if (tau_s <= 0) return 1;
+  double rate_Hz = 10;
+  if (device.rate) {
+    rate_Hz = device.rate->in(hertz);
+  } else if (!device.profile->inputs->rates.empty()) {
+    rate_Hz = device.profile->inputs->rates.front().in(hertz);
+  }
+  const double rho = std::exp(-1 / (rate_Hz * tau_s));
+  return (1 + rho) / (1 - rho);
+}
+
+/// Figures of one shunt, and the standard uncertainty of its mean step.
+struct StepFigures {
+  ShuntResult result;
+  double u_V_per_V = 0;
+  double degrees = 1;
+};
+
+StepFigures figuresOf(const description::Shunt& shunt, const ShuntReadings& readings, double correlation) {
+  StepFigures f;
+  ShuntResult& r = f.result;
+  r.name = shunt.name;
+  r.settling = readings.settling;
+  r.repeats = static_cast<int>(readings.closed.size());
+  if (readings.opened.empty()) return f;
+  r.before = readings.opened.front().mean;
+  r.returned = readings.opened.back().mean;
+  r.after = meanOf(readings.closed, [](const Window& w) { return valueOf(w.mean); }) * volt_per_volt;
+  const auto steps = stepsOf(readings);
+  if (steps.empty()) return f;
+  const auto count = static_cast<double>(steps.size());
+  double mean = 0;
+  for (const auto step : steps) mean += valueOf(step) / count;
+  r.measuredStep = mean * volt_per_volt;
+  double square = 0;
+  for (const auto step : steps) square += (valueOf(step) - mean) * (valueOf(step) - mean);
+  const double repeatDeviation = steps.size() > 1 ? std::sqrt(square / (count - 1)) : 0;
+  r.stepDeviation = repeatDeviation * volt_per_volt;
+
+  double variance = 0, degrees = 0, samples = 0;
+  for (const auto* windows : {&readings.opened, &readings.closed}) {
+    for (const auto& w : *windows) {
+      const double own = std::max(1, w.samples - 2);
+      variance += own * valueOf(w.deviation) * valueOf(w.deviation);
+      degrees += own;
+      samples += w.samples;
+    }
+  }
+  variance /= std::max(1.0, degrees);
+  r.noise = std::sqrt(variance) * volt_per_volt;
+  const double perWindow =
+      variance * correlation / std::max(1.0, samples / static_cast<double>(readings.opened.size() + readings.closed.size()));
+  // Closed windows weigh 1/n each, open ones 1/n except the two ends with half of that.
+  f.u_V_per_V = std::sqrt(perWindow * (1 / count + (count - 0.5) / (count * count)));
+  f.degrees = degrees;
+  // Repeats that scatter far more than the noise explains speak for themselves.
+  const double expected = std::sqrt(perWindow * 1.5);
+  if (repeatDeviation > 3 * expected && repeatDeviation > 0) {
+    f.u_V_per_V = repeatDeviation / std::sqrt(count);
+    f.degrees = count - 1;
+  }
+  return f;
+}
+
+void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& result) {
+  result.name = channel.name;
+  if (channel.transducer) {
+    result.unit = channel.transducer->unit;
+    result.unitsPerStrain = channel.transducer->ratedValue;
+  }
+  const double factor_percent = channel.transducer ? channel.transducer->sensitivityTolerance.in(percent)
+                                                   : rack.gaugeOf(channel).factorTolerance.in(percent);
+  const Component rectangle{Shape::rectangular, factor_percent / std::sqrt(3.0)};
+  result.factorUncertainty_percent = coverageHalfWidth(std::span(&rectangle, 1));
+  if (channel.leads.empty()) return;
+  double sum = 0, worst = 0;
+  for (const auto& [terminal, lead] : channel.leads) {
+    const double r = lead.resistance.in(ohm);
+    sum += r;
+    const double warmth = 0.00393 * lead.temperatureTolerance.in(kelvin);
+    const Component parts[] = {{Shape::rectangular, r * lead.tolerance.in(one) / std::sqrt(3.0)},
+                               {Shape::rectangular, r * warmth / std::sqrt(3.0)}};
+    worst = std::max(worst, coverageHalfWidth(parts));
+  }
+  result.leadResistance = sum / static_cast<double>(channel.leads.size()) * ohm;
+  result.leadUncertainty = worst * ohm;
+}
+
+/// The correction for a span and a zero reading; the nominal one when the zero cannot be explained.
+Result<void> correct(const Channel& channel, const ChannelModel& model, double span, Ratio zero,
+                     ChannelResult& result) {
+  const Strain range = channel.transducer ? 1.2 * strain : 20000.0 * microstrain;
+  const bool absolute = channel.transducer && channel.shunts.empty();
+  auto point = absolute ? Result<WorkingPoint>(WorkingPoint{model.inTest, {}})
+                        : explain(model.inTest, zero / span, model.cause);
+  if (!point) return std::unexpected(std::move(point.error()));
+  auto fitted = bridge::mapOf(point->circuit, point->standing, range);
+  if (!fitted) return std::unexpected(std::move(fitted.error()));
+  result.worstMapError = fitted->worstError;
+  result.correction = fitted->map.afterAmplifier(span, 0);
+  // A sensor that is never calibrated and not zeroed keeps its absolute scale (a thermometer).
+  if (!absolute) result.correction = result.correction.zeroedAt(valueOf(zero));
+  return {};
+}
+
+}  // namespace
+
+ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelReadings& readings) {
+  ChannelResult result;
+  describeChannel(rack, channel, result);
+  const ChannelModel model = modelOf(rack, channel);
+  const double correlation = correlationFactor(rack, channel);
+  if (readings.zero) result.zero = readings.zero->mean;
+
+  std::vector<Ratio> measured;
+  double weighted = 0, squares = 0, degreesSum = 0, worstReturn = 0, smallest = 0;
+  for (std::size_t k = 0; k < readings.shunts.size(); ++k) {
+    StepFigures f = figuresOf(channel.shunts[k], readings.shunts[k], correlation);
+    const double step = std::abs(valueOf(f.result.measuredStep));
+    measured.push_back(f.result.measuredStep);
+    weighted += step * step * f.u_V_per_V * f.u_V_per_V;
+    squares += step * step;
+    degreesSum += f.degrees;
+    smallest = smallest == 0 ? step : std::min(smallest, step);
+    worstReturn = std::max(worstReturn, std::abs(valueOf(f.result.returned - f.result.before)));
+    result.shunts.push_back(std::move(f.result));
+  }
+
+  // Span and working point depend a little on each other (zero = reading / span): a few rounds settle it.
+  double span = 1, slope = 0;
+  std::optional<Error> trouble;
+  for (int round = 0; round < 4; ++round) {
+    auto prediction = predictScale(model, result.zero / span);
+    if (!prediction) {
+      trouble = std::move(prediction.error());
+      break;
+    }
+    slope = prediction->slope_per_strain;
+    for (std::size_t k = 0; k < result.shunts.size(); ++k) result.shunts[k].predictedStep = prediction->steps[k];
+    if (!measured.empty()) span = spanOf(measured, prediction->steps);
+    if (!(span > 0.2 && span < 5)) break;  // judged below; not a span to correct with
+  }
+  result.spanRatio = span;
+  const double usable = span > 0.2 && span < 5 ? span : 1;
+  if (!trouble) {
+    if (auto corrected = correct(channel, model, usable, result.zero, result); !corrected) {
+      trouble = std::move(corrected.error());
+    }
+  }
+  const Ratio resolution = rack.device(channel.device)->profile->inputs->resolution;
+  if (!trouble && !measured.empty()) {
+    ReadingScatter scatter;
+    scatter.stepRelative = squares > 0 ? std::sqrt(weighted) / squares : 0;
+    scatter.stepDegrees = std::max(1.0, degreesSum);
+    scatter.resolution = resolution;
+    scatter.smallestStep = smallest * volt_per_volt;
+    auto budget = scaleBudget(rack, channel, result.zero / usable, measured, scatter);
+    if (budget) {
+      result.budget = std::move(*budget);
+    } else {
+      trouble = std::move(budget.error());
+    }
+  }
+  if (!trouble && readings.zero) {
+    const Window& zero = *readings.zero;
+    ZeroScatter scatter;
+    scatter.standardUncertainty =
+        zero.deviation * std::sqrt(correlation / std::max(1, zero.samples)) / usable;
+    scatter.resolution = resolution;
+    scatter.returnSpread = worstReturn * volt_per_volt;
+    if (auto u = zeroUncertainty(rack, channel, result.zero / usable, scatter)) {
+      result.zeroExpandedUncertainty = studentFactor(std::numeric_limits<double>::infinity()) * *u;
+    }
+  }
+  judge(result, readings, rack.limits, slope);
+  if (trouble) {
+    result.findings.push_back({"no-solution", trouble->message, trouble->remedy});
+    result.verdict = Verdict::fail;
+    if (auto nominal = bridge::mapOf(model.inTest)) result.correction = nominal->map;
+  }
+  return result;
+}
+
+}  // namespace shuntwright::calibration

@@ -1,0 +1,41 @@
+#pragma once
+
+#include <optional>
+#include <vector>
+
+#include "driver/calibration/record.h"
+#include "driver/calibration/window.h"
+#include "driver/core/error.h"
+#include "driver/description/rack.h"
+
+namespace shuntwright::calibration {
+
+/// All readings of one shunt: open, closed, open, closed, ... open. Shape: opened has one window more than
+/// closed, unless the relay would not work.
+struct ShuntReadings {
+  std::vector<Window> opened;
+  std::vector<Window> closed;
+  Nanoseconds settling{0};
+  bool steady = true;
+  std::optional<Error> relayError;
+};
+
+struct ChannelReadings {
+  std::vector<ShuntReadings> shunts;  ///< as the channel lists them
+  std::optional<Window> zero;         ///< at no load, every relay open
+};
+
+/// Steps with linear drift removed: each closed window against the mean of the open ones beside it (A-B-A).
+std::vector<units::Ratio> stepsOf(const ShuntReadings& readings);
+
+/// Turns a channel's readings into its correction, budget and verdict. Never fails as a whole: what cannot be
+/// worked out is a finding and a failed verdict, and the correction is then the nominal one.
+ChannelResult analyse(const description::Rack& rack, const description::Channel& channel,
+                      const ChannelReadings& readings);
+
+/// Findings and verdict against the rack's limits; called by analyse once the figures are there.
+/// @param slope_per_strain  dr/de, to turn ratios into strain.
+void judge(ChannelResult& result, const ChannelReadings& readings, const description::Limits& limits,
+           double slope_per_strain);
+
+}  // namespace shuntwright::calibration

@@ -1,0 +1,289 @@
+#include "driver/calibration/channel_model.h"
+
+#include <array>
+#include <cmath>
+#include <numbers>
+
+#include "driver/units/copper.h"
+
+namespace shuntwright::calibration {
+
+using namespace units;
+using description::Channel;
+using description::Rack;
+using description::Terminal;
+using description::Unbalance;
+
+ChannelModel modelWithLeads(const Rack& rack, const Channel& channel) {
+  ChannelModel model;
+  model.atCalibration = bridge::circuitOf(rack, channel);
+  model.inTest = model.atCalibration;
+  model.cause = channel.unbalance;
+  for (const auto& shunt : channel.shunts) model.shunts.push_back(bridge::pathOf(rack, shunt));
+  return model;
+}
+
+ChannelModel modelOf(const Rack& rack, const Channel& channel) {
+  ChannelModel model = modelWithLeads(rack, channel);
+  if (channel.leadLoss == description::LeadLoss::in_span) {
+    model.atCalibration.leads.fill(0.0 * ohm);
+    model.inTest.leads.fill(0.0 * ohm);
+  }
+  return model;
+}
+
+namespace {
+
+/// The factor on one arm's resistance that makes the unstrained bridge show `zero`. Secant steps: the ratio
+/// is a smooth, monotonic function of one arm.
+Result<double> armFactor(bridge::Circuit circuit, std::size_t arm, Ratio zero) {
+  const Resistance nominal = circuit.arms[arm].resistance;
+  const auto miss = [&](double factor) -> Result<double> {
+    circuit.arms[arm].resistance = nominal * factor;
+    auto r = bridge::ratio(circuit, {});
+    if (!r) return std::unexpected(std::move(r.error()));
+    return (*r - zero).in(volt_per_volt);
+  };
+  double a = 1, b = 1.001;
+  auto fa = miss(a), fb = miss(b);
+  for (int i = 0; i < 40; ++i) {
+    if (!fa) return std::unexpected(fa.error());
+    if (!fb) return std::unexpected(fb.error());
+    if (std::abs(*fb) < 1e-15 || *fa == *fb) break;
+    const double c = b - *fb * (b - a) / (*fb - *fa);
+    a = b;
+    fa = fb;
+    b = c;
+    if (!(std::abs(b - 1) < 0.3)) {
+      return fail(ErrorCode::bad_use, "the zero reading is too far off for a resistor off nominal", {},
+                  "check the wiring; an open or shorted arm reads like this");
+    }
+    fb = miss(b);
+  }
+  return b;
+}
+
+Result<Strain> standingStrain(const bridge::Circuit& circuit, Ratio zero) {
+  double a = 0, b = 1e-4;
+  const auto miss = [&](double strainValue) -> Result<double> {
+    auto r = bridge::ratio(circuit, strainValue * strain);
+    if (!r) return std::unexpected(std::move(r.error()));
+    return (*r - zero).in(volt_per_volt);
+  };
+  auto fa = miss(a), fb = miss(b);
+  for (int i = 0; i < 40; ++i) {
+    if (!fa) return std::unexpected(fa.error());
+    if (!fb) return std::unexpected(fb.error());
+    if (std::abs(*fb) < 1e-15 || *fa == *fb) break;
+    const double c = b - *fb * (b - a) / (*fb - *fa);
+    a = b;
+    fa = fb;
+    b = c;
+    if (!std::isfinite(b) || std::abs(b) > 2) {
+      return fail(ErrorCode::bad_use, "no standing strain explains the zero reading", {}, "check the wiring");
+    }
+    fb = miss(b);
+  }
+  return b * strain;
+}
+
+}  // namespace
+
+Result<WorkingPoint> explain(const bridge::Circuit& circuit, Ratio zero, Unbalance cause) {
+  WorkingPoint point{circuit, {}};
+  if (cause == Unbalance::standing_strain) {
+    auto standing = standingStrain(circuit, zero);
+    if (!standing) return std::unexpected(std::move(standing.error()));
+    point.standing = *standing;
+    return point;
+  }
+  const std::size_t arm = cause == Unbalance::completion ? 1 : 0;
+  auto factor = armFactor(circuit, arm, zero);
+  if (!factor) return std::unexpected(std::move(factor.error()));
+  point.circuit.arms[arm].resistance = circuit.arms[arm].resistance * *factor;
+  return point;
+}
+
+namespace {
+
+Result<double> slopeAt(const WorkingPoint& point) {
+  const Strain half = 100.0 * microstrain;
+  auto up = bridge::ratio(point.circuit, point.standing + half);
+  if (!up) return std::unexpected(std::move(up.error()));
+  auto down = bridge::ratio(point.circuit, point.standing - half);
+  if (!down) return std::unexpected(std::move(down.error()));
+  return (*up - *down).in(volt_per_volt) / (2 * half.in(strain));
+}
+
+/// Carries what the zero reading said about one arm over to the circuit as it is in the test.
+WorkingPoint moved(const WorkingPoint& point, const bridge::Circuit& from, const bridge::Circuit& to) {
+  WorkingPoint out{to, point.standing};
+  for (std::size_t k = 0; k < 4; ++k) {
+    const double factor = point.circuit.arms[k].resistance / from.arms[k].resistance;
+    out.circuit.arms[k].resistance = to.arms[k].resistance * factor;
+  }
+  return out;
+}
+
+}  // namespace
+
+Result<ScalePrediction> predictScale(const ChannelModel& model, Ratio zero) {
+  auto point = explain(model.atCalibration, zero, model.cause);
+  if (!point) return std::unexpected(std::move(point.error()));
+  ScalePrediction prediction;
+  auto before = bridge::ratio(point->circuit, point->standing);
+  if (!before) return std::unexpected(std::move(before.error()));
+  for (const auto& path : model.shunts) {
+    auto after = bridge::ratio(point->circuit, point->standing, std::span(&path, 1));
+    if (!after) return std::unexpected(std::move(after.error()));
+    prediction.steps.push_back(*after - *before);
+  }
+  auto slope = slopeAt(moved(*point, model.atCalibration, model.inTest));
+  if (!slope) return std::unexpected(std::move(slope.error()));
+  prediction.slope_per_strain = *slope;
+  return prediction;
+}
+
+double spanOf(const std::vector<Ratio>& measured, const std::vector<Ratio>& predicted) {
+  double product = 0, square = 0;
+  for (std::size_t k = 0; k < measured.size(); ++k) {
+    const double m = measured[k].in(millivolt_per_volt), p = predicted[k].in(millivolt_per_volt);
+    product += m * p;
+    square += p * p;
+  }
+  return square > 0 ? product / square : 1;
+}
+
+// ---------------------------------------------------------------- what is not known exactly
+
+namespace {
+
+constexpr double kRectangular = std::numbers::sqrt3;
+
+UncertainInput input(std::string quantity, double value, std::string unit, double standardUncertainty,
+                     std::function<void(ChannelModel&, double)> shift, Shape shape = Shape::rectangular) {
+  UncertainInput out;
+  out.quantity = std::move(quantity);
+  out.value = value;
+  out.unit = std::move(unit);
+  out.standardUncertainty = standardUncertainty;
+  out.shape = shape;
+  out.shift = std::move(shift);
+  return out;
+}
+
+void shiftArm(ChannelModel& model, std::size_t arm, double delta_ohm) {
+  model.atCalibration.arms[arm].resistance += delta_ohm * ohm;
+  model.inTest.arms[arm].resistance += delta_ohm * ohm;
+}
+
+void addArms(const Rack& rack, const Channel& channel, const ChannelModel& model, std::vector<UncertainInput>& out) {
+  const auto& inputs = *rack.device(channel.device)->profile->inputs;
+  for (std::size_t arm = 0; arm < 4; ++arm) {
+    const auto& part = model.atCalibration.arms[arm];
+    const double value = part.resistance.in(ohm);
+    const auto shift = [arm](ChannelModel& m, double delta) { shiftArm(m, arm, delta); };
+    const std::string number = " of arm " + std::to_string(arm + 1);
+    if (part.relativePerStrain != 0) {
+      if (channel.transducer) continue;  // its certificate speaks for the whole
+      const auto& nominal = rack.gaugeOf(channel).resistance;
+      if (channel.measuredResistance && arm == 0) {
+        const double u = value * channel.measuredResistance->tolerance.in(one) / 2;  // expanded, k = 2
+        out.push_back(input("gauge resistance" + number + ", measured", value, "ohm", u, shift, Shape::normal));
+      } else {
+        const double u = value * nominal.tolerance.in(one) / kRectangular;
+        out.push_back(input("gauge resistance" + number, value, "ohm", u, shift));
+      }
+    } else if (arm == 1 || (arm == 3 && channel.circuit == description::CircuitKind::half_opposite)) {
+      double tolerance = 0;
+      for (const auto& offered : inputs.completions) {
+        if (channel.completion && offered.value == *channel.completion) tolerance = offered.tolerance.in(one);
+      }
+      out.push_back(input("completion resistor" + number, value, "ohm", value * tolerance / kRectangular, shift));
+    } else {
+      const double u = value * inputs.halfBridge.tolerance.in(one) / kRectangular;
+      out.push_back(input("half-bridge resistor" + number, value, "ohm", u, shift));
+    }
+  }
+}
+
+void addLeads(const Channel& channel, std::vector<UncertainInput>& out) {
+  double temperatureTolerance_K = 0, temperature_C = 20;
+  for (const auto& [terminal, lead] : channel.leads) {
+    const double value = lead.resistance.in(ohm);
+    const auto at = terminal;
+    out.push_back(input("lead " + std::string(description::name(terminal)), value, "ohm",
+                        value * lead.tolerance.in(one) / kRectangular, [at](ChannelModel& m, double delta) {
+                          m.atCalibration.lead(at) += delta * ohm;
+                          m.inTest.lead(at) += delta * ohm;
+                        }));
+    temperatureTolerance_K = std::max(temperatureTolerance_K, lead.temperatureTolerance.in(kelvin));
+    temperature_C = lead.temperature.celsius();
+  }
+  if (channel.leads.empty() || temperatureTolerance_K <= 0) return;
+  std::map<Terminal, double> ohmPerKelvin;
+  for (const auto& [terminal, lead] : channel.leads) {
+    const Temperature warmer = lead.temperature + 1.0 * kelvin;
+    ohmPerKelvin[terminal] = (copperAt(lead.resistance, lead.temperature, warmer) - lead.resistance).in(ohm);
+  }
+  const double u = temperatureTolerance_K / kRectangular;
+  out.push_back(input("lead temperature at calibration", temperature_C, "degC", u,
+                      [ohmPerKelvin](ChannelModel& m, double delta) {
+                        for (const auto& [terminal, slope] : ohmPerKelvin) {
+                          m.atCalibration.lead(terminal) += slope * delta * ohm;
+                          m.inTest.lead(terminal) += slope * delta * ohm;
+                        }
+                      }));
+  out.push_back(input("lead temperature, change until the test", 0, "K", u,
+                      [ohmPerKelvin](ChannelModel& m, double delta) {
+                        for (const auto& [terminal, slope] : ohmPerKelvin) {
+                          m.inTest.lead(terminal) += slope * delta * ohm;
+                        }
+                      }));
+}
+
+void addShunts(const Rack& rack, const Channel& channel, std::vector<UncertainInput>& out) {
+  // Shunts of one resistor move together.
+  std::map<std::string, std::vector<std::size_t>> byResistor;
+  for (std::size_t k = 0; k < channel.shunts.size(); ++k) byResistor[channel.shunts[k].resistor].push_back(k);
+  for (const auto& [resistorName, indices] : byResistor) {
+    const auto& resistor = rack.resistors.at(resistorName);
+    const double value = resistor.value.in(ohm);
+    const auto shift = [indices](ChannelModel& m, double delta) {
+      for (const auto k : indices) m.shunts[k].resistance += delta * ohm;
+    };
+    if (resistor.expandedUncertainty.in(one) > 0) {
+      out.push_back(input("shunt resistor " + resistorName + ", certificate", value, "ohm",
+                          value * resistor.expandedUncertainty.in(one) / resistor.coverageFactor, shift,
+                          Shape::normal));
+    } else {
+      out.push_back(input("shunt resistor " + resistorName, value, "ohm",
+                          value * resistor.tolerance.in(one) / kRectangular, shift));
+    }
+    const double thermal = value * (resistor.temperatureCoefficient * resistor.temperatureSpan).in(one);
+    if (thermal != 0) {
+      out.push_back(input("shunt resistor " + resistorName + ", temperature", 0, "ohm",
+                          std::abs(thermal) / kRectangular, shift));
+    }
+  }
+  for (std::size_t k = 0; k < channel.shunts.size(); ++k) {
+    const auto& relay = channel.shunts[k].relay;
+    const auto& relays = *rack.device(relay.device)->profile->relays;
+    out.push_back(input("contact of relay " + relay.device + "/" + std::to_string(relay.relay),
+                        relays.contactResistance.in(ohm), "ohm", relays.contactTolerance.in(ohm) / kRectangular,
+                        [k](ChannelModel& m, double delta) { m.shunts[k].resistance += delta * ohm; }));
+  }
+}
+
+}  // namespace
+
+std::vector<UncertainInput> inputsOf(const Rack& rack, const Channel& channel) {
+  std::vector<UncertainInput> inputs;
+  const ChannelModel model = modelWithLeads(rack, channel);
+  addShunts(rack, channel, inputs);
+  addArms(rack, channel, model, inputs);
+  addLeads(channel, inputs);
+  return inputs;
+}
+
+}  // namespace shuntwright::calibration

@@ -1,0 +1,66 @@
+#pragma once
+
+#include <functional>
+#include <limits>
+#include <string>
+#include <vector>
+
+#include "driver/bridge/circuit.h"
+#include "driver/calibration/coverage.h"
+#include "driver/core/error.h"
+#include "driver/description/rack.h"
+
+namespace shuntwright::calibration {
+
+/// The physics behind one channel's correction, with every value that is not known exactly open to change.
+struct ChannelModel {
+  bridge::Circuit atCalibration;  ///< while the shunts were closed
+  bridge::Circuit inTest;         ///< later, when strain is read: the leads may have warmed
+  std::vector<bridge::ShuntPath> shunts;
+  description::Unbalance cause = description::Unbalance::unknown;
+};
+
+/// The channel's model at its nominal values. With the lead loss in the span the model's leads are 0.
+ChannelModel modelOf(const description::Rack& rack, const description::Channel& channel);
+/// The same with the leads as the rack states them, whatever becomes of their loss.
+ChannelModel modelWithLeads(const description::Rack& rack, const description::Channel& channel);
+
+/// The bridge brought into the state that its zero reading shows.
+struct WorkingPoint {
+  bridge::Circuit circuit;
+  units::Strain standing;  ///< strain that is there at zero; 0 unless the cause is standing strain
+};
+
+/// Explains an unbalance by its stated cause: a gauge off nominal changes arm 1, a completion off nominal
+/// changes arm 2 (its stated gauge stays as measured), a standing strain stays a strain; `unknown` is taken
+/// as a gauge off nominal (what that choice may cost is a line of the budget).
+/// Errors: bad_use when no such change gives the ratio (more than 30 % off nominal).
+Result<WorkingPoint> explain(const bridge::Circuit& circuit, units::Ratio zero, description::Unbalance cause);
+
+/// What the model says of a channel whose (true) zero ratio is known.
+struct ScalePrediction {
+  std::vector<units::Ratio> steps;  ///< of each shunt, from the working point at calibration
+  double slope_per_strain = 0;      ///< dr/de at the working point in test, V/V per m/m
+};
+Result<ScalePrediction> predictScale(const ChannelModel& model, units::Ratio zero);
+
+/// Amplifier's span from all shunts: least squares of measured against predicted steps through the origin.
+double spanOf(const std::vector<units::Ratio>& measured, const std::vector<units::Ratio>& predicted);
+
+/// One value that is not known exactly.
+struct UncertainInput {
+  std::string quantity;
+  double value = 0;
+  std::string unit;
+  Shape shape = Shape::rectangular;
+  double standardUncertainty = 0;  ///< in `unit`
+  double degreesOfFreedom = std::numeric_limits<double>::infinity();
+  std::function<void(ChannelModel&, double delta)> shift;  ///< moves it by delta, in `unit`
+};
+
+/// Everything about the circuit and the shunts that is not known exactly: resistors by tolerance or
+/// certificate and temperature, relay contacts, gauges, completions, half bridge, each lead, and the leads'
+/// temperature at calibration and its change until the test.
+std::vector<UncertainInput> inputsOf(const description::Rack& rack, const description::Channel& channel);
+
+}  // namespace shuntwright::calibration

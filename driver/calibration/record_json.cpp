@@ -1,0 +1,229 @@
+#include "driver/calibration/record_json.h"
+
+#include <boost/json/parse.hpp>
+#include <boost/json/serialize.hpp>
+#include <boost/json/value.hpp>
+#include <cmath>
+#include <limits>
+
+namespace shuntwright::calibration {
+
+namespace json = boost::json;
+using namespace units;
+
+namespace {
+
+json::value number(double value) { return std::isfinite(value) ? json::value(value) : json::value(nullptr); }
+
+json::value mVperV(Ratio r) { return number(r.in(millivolt_per_volt)); }
+
+json::object shuntJson(const ShuntResult& s) {
+  json::object o;
+  o["name"] = s.name;
+  o["before_mV_per_V"] = mVperV(s.before);
+  o["after_mV_per_V"] = mVperV(s.after);
+  o["return_mV_per_V"] = mVperV(s.returned);
+  o["measured_step_mV_per_V"] = mVperV(s.measuredStep);
+  o["predicted_step_mV_per_V"] = mVperV(s.predictedStep);
+  o["step_deviation_mV_per_V"] = mVperV(s.stepDeviation);
+  o["noise_mV_per_V"] = mVperV(s.noise);
+  o["settling_s"] = number(seconds(s.settling));
+  o["repeats"] = s.repeats;
+  return o;
+}
+
+json::object budgetJson(const Budget& b) {
+  json::array lines;
+  for (const auto& line : b.lines) {
+    json::object o;
+    o["quantity"] = line.quantity;
+    o["value"] = number(line.value);
+    o["unit"] = line.unit;
+    o["distribution"] = line.distribution;
+    o["standard_uncertainty"] = number(line.standardUncertainty);
+    o["degrees_of_freedom"] = number(line.degreesOfFreedom);
+    o["sensitivity_percent_per_unit"] = number(line.sensitivity);
+    o["contribution_percent"] = number(line.contribution_percent);
+    lines.push_back(std::move(o));
+  }
+  json::object o;
+  o["lines"] = std::move(lines);
+  o["standard_uncertainty_percent"] = number(b.standardUncertainty_percent);
+  o["effective_degrees_of_freedom"] = number(b.effectiveDegreesOfFreedom);
+  o["coverage_factor"] = number(b.coverageFactor);
+  o["coverage_probability_percent"] = 95.45;
+  o["expanded_uncertainty_percent"] = number(b.expandedUncertainty_percent);
+  return o;
+}
+
+json::object channelJson(const ChannelResult& c) {
+  json::object o;
+  o["name"] = c.name;
+  o["verdict"] = name(c.verdict);
+  json::array findings;
+  for (const auto& f : c.findings) {
+    json::object one;
+    one["code"] = f.code;
+    one["message"] = f.message;
+    one["evidence"] = f.evidence;
+    findings.push_back(std::move(one));
+  }
+  o["findings"] = std::move(findings);
+  const bool calibrated = !c.shunts.empty();
+  o["span_ratio"] = calibrated ? number(c.spanRatio) : json::value(nullptr);
+  o["span_expanded_uncertainty_percent"] =
+      calibrated ? number(c.budget.expandedUncertainty_percent) : json::value(nullptr);
+  o["lead_resistance_ohm"] = c.leadResistance ? number(c.leadResistance->in(ohm)) : json::value(nullptr);
+  o["lead_expanded_uncertainty_ohm"] = c.leadUncertainty ? number(c.leadUncertainty->in(ohm)) : json::value(nullptr);
+  o["zero_mV_per_V"] = mVperV(c.zero);
+  o["zero_expanded_uncertainty_microstrain"] = number(c.zeroExpandedUncertainty.in(microstrain));
+  o["gauge_factor_expanded_uncertainty_percent"] = number(c.factorUncertainty_percent);
+  o["unit"] = c.unit;
+  o["units_per_strain"] = number(c.unitsPerStrain);
+  json::array shunts;
+  for (const auto& s : c.shunts) shunts.push_back(shuntJson(s));
+  o["shunts"] = std::move(shunts);
+  json::object correction;
+  correction["p"] = number(c.correction.p);
+  correction["q"] = number(c.correction.q);
+  correction["w"] = number(c.correction.w);
+  o["correction"] = std::move(correction);
+  o["worst_map_error_microstrain"] = number(c.worstMapError.in(microstrain));
+  o["budget"] = budgetJson(c.budget);
+  return o;
+}
+
+}  // namespace
+
+std::string recordJson(const Record& record) {
+  json::object o;
+  o["record_id"] = record.id;
+  o["started"] = rfc3339(record.started);
+  o["started_unix_ns"] = record.started.time_since_epoch().count();
+  o["software"] = record.software;
+  o["rack"] = record.rackName;
+  o["rack_file"] = record.rackFile;
+  json::array channels;
+  for (const auto& channel : record.channels) channels.push_back(channelJson(channel));
+  o["channels"] = std::move(channels);
+  o["windows"] = record.windows;
+  o["duration_s"] = number(seconds(record.duration));
+  json::array relays;
+  for (const auto& relay : record.relaysMaybeClosed) relays.push_back(json::value(relay));
+  o["relays_maybe_closed"] = std::move(relays);
+  return json::serialize(o);
+}
+
+// ---------------------------------------------------------------- reading back
+
+namespace {
+
+double get(const json::object& o, const char* key) {
+  const auto& v = o.at(key);
+  return v.is_null() ? std::numeric_limits<double>::quiet_NaN() : v.to_number<double>();
+}
+
+std::string word(const json::object& o, const char* key) { return std::string(o.at(key).as_string()); }
+
+Ratio ratioIn(const json::object& o, const char* key) { return get(o, key) * millivolt_per_volt; }
+
+Verdict verdictNamed(const std::string& text) {
+  for (const Verdict v : {Verdict::pass, Verdict::fail, Verdict::not_calibrated}) {
+    if (text == name(v)) return v;
+  }
+  throw std::invalid_argument("unknown verdict \"" + text + "\"");
+}
+
+ShuntResult shuntFrom(const json::object& o) {
+  ShuntResult s;
+  s.name = word(o, "name");
+  s.before = ratioIn(o, "before_mV_per_V");
+  s.after = ratioIn(o, "after_mV_per_V");
+  s.returned = ratioIn(o, "return_mV_per_V");
+  s.measuredStep = ratioIn(o, "measured_step_mV_per_V");
+  s.predictedStep = ratioIn(o, "predicted_step_mV_per_V");
+  s.stepDeviation = ratioIn(o, "step_deviation_mV_per_V");
+  s.noise = ratioIn(o, "noise_mV_per_V");
+  s.settling = fromSeconds(get(o, "settling_s"));
+  s.repeats = static_cast<int>(o.at("repeats").to_number<int>());
+  return s;
+}
+
+Budget budgetFrom(const json::object& o) {
+  const double infinite = std::numeric_limits<double>::infinity();
+  Budget b;
+  for (const auto& v : o.at("lines").as_array()) {
+    const auto& l = v.as_object();
+    BudgetLine line;
+    line.quantity = word(l, "quantity");
+    line.value = get(l, "value");
+    line.unit = word(l, "unit");
+    line.distribution = word(l, "distribution");
+    line.standardUncertainty = get(l, "standard_uncertainty");
+    line.degreesOfFreedom = l.at("degrees_of_freedom").is_null() ? infinite : get(l, "degrees_of_freedom");
+    line.sensitivity = get(l, "sensitivity_percent_per_unit");
+    line.contribution_percent = get(l, "contribution_percent");
+    b.lines.push_back(std::move(line));
+  }
+  b.standardUncertainty_percent = get(o, "standard_uncertainty_percent");
+  const auto& degrees = o.at("effective_degrees_of_freedom");
+  b.effectiveDegreesOfFreedom = degrees.is_null() ? infinite : degrees.to_number<double>();
+  b.coverageFactor = get(o, "coverage_factor");
+  b.expandedUncertainty_percent = get(o, "expanded_uncertainty_percent");
+  return b;
+}
+
+ChannelResult channelFrom(const json::object& o) {
+  ChannelResult c;
+  c.name = word(o, "name");
+  c.verdict = verdictNamed(word(o, "verdict"));
+  for (const auto& f : o.at("findings").as_array()) {
+    const auto& one = f.as_object();
+    c.findings.push_back({word(one, "code"), word(one, "message"), word(one, "evidence")});
+  }
+  if (!o.at("span_ratio").is_null()) c.spanRatio = get(o, "span_ratio");
+  if (!o.at("lead_resistance_ohm").is_null()) c.leadResistance = get(o, "lead_resistance_ohm") * ohm;
+  if (!o.at("lead_expanded_uncertainty_ohm").is_null()) {
+    c.leadUncertainty = get(o, "lead_expanded_uncertainty_ohm") * ohm;
+  }
+  c.zero = ratioIn(o, "zero_mV_per_V");
+  c.zeroExpandedUncertainty = get(o, "zero_expanded_uncertainty_microstrain") * microstrain;
+  c.factorUncertainty_percent = get(o, "gauge_factor_expanded_uncertainty_percent");
+  c.unit = word(o, "unit");
+  c.unitsPerStrain = get(o, "units_per_strain");
+  for (const auto& s : o.at("shunts").as_array()) c.shunts.push_back(shuntFrom(s.as_object()));
+  const auto& correction = o.at("correction").as_object();
+  c.correction = {get(correction, "p"), get(correction, "q"), get(correction, "w")};
+  c.worstMapError = get(o, "worst_map_error_microstrain") * microstrain;
+  c.budget = budgetFrom(o.at("budget").as_object());
+  return c;
+}
+
+}  // namespace
+
+Result<Record> parseRecordJson(std::string_view text, const std::string& where) {
+  const char* remedy = "calibrate again, or name the file that calibrate wrote";
+  boost::system::error_code ec;
+  const json::value document = json::parse(json::string_view(text.data(), text.size()), ec);
+  if (ec) return fail(ErrorCode::bad_file, "this is no calibration record: " + ec.message(), where, remedy);
+  try {
+    const auto& o = document.as_object();
+    Record record;
+    record.id = word(o, "record_id");
+    record.started = Instant(Nanoseconds(o.at("started_unix_ns").to_number<std::int64_t>()));
+    record.software = word(o, "software");
+    record.rackName = word(o, "rack");
+    record.rackFile = word(o, "rack_file");
+    for (const auto& c : o.at("channels").as_array()) record.channels.push_back(channelFrom(c.as_object()));
+    record.windows = o.at("windows").to_number<int>();
+    record.duration = fromSeconds(get(o, "duration_s"));
+    for (const auto& r : o.at("relays_maybe_closed").as_array()) {
+      record.relaysMaybeClosed.emplace_back(std::string(r.as_string()));
+    }
+    return record;
+  } catch (const std::exception& e) {
+    return fail(ErrorCode::bad_file, std::string("this calibration record lacks something: ") + e.what(), where, remedy);
+  }
+}
+
+}  // namespace shuntwright::calibration

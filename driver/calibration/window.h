@@ -1,0 +1,44 @@
+#pragma once
+
+#include <cstddef>
+
+#include "driver/core/clock.h"
+#include "driver/core/error.h"
+#include "driver/core/task.h"
+#include "driver/device/device.h"
+#include "driver/units/units.h"
+
+namespace shuntwright::calibration {
+
+/// The samples of one input averaged for one reading.
+struct Window {
+  units::Ratio mean;
+  units::Ratio deviation;   ///< standard deviation of a sample about a straight line through the window
+  units::Ratio drift;       ///< of that line, first sample to last
+  int samples = 0;          ///< used
+  int saturated = 0;
+  int missing = 0;
+  Instant start, end;
+
+  bool usable() const { return samples >= 2 && saturated == 0; }
+};
+
+/// Takes windows from an amplifier that is acquiring. What comes before a window's start is dropped.
+class WindowReader {
+ public:
+  WindowReader(device::Device& amplifier, Clock& clock, units::Frequency rate);
+
+  /// The mean of the first `count` samples of one input taken at or after `notBefore`. Samples that are
+  /// saturated or missing are counted and left out of the mean. Errors: timeout when they do not come
+  /// within three times their due time and two seconds, or the device's.
+  Task<Result<Window>> take(std::size_t input, Instant notBefore, int count);
+
+ private:
+  device::Device& amplifier_;
+  Clock& clock_;
+  units::Frequency rate_;
+  device::SampleBlock block_;
+  std::size_t next_ = 0;
+};
+
+}  // namespace shuntwright::calibration
