@@ -41,6 +41,16 @@ std::vector<std::string_view> circuitNames();
 /// and transducers only).
 std::vector<Terminal> leadsOf(CircuitKind kind, bool sensed);
 
+/// All four arms stand outside the instrument: only these can have sense leads.
+bool isFull(CircuitKind kind);
+
+/// The terminals of a circuit on one side: at the gauge the far ends of its leads, at the instrument its
+/// leads and the amplifier's own EXC and SIG terminals.
+std::vector<Terminal> terminalsOf(CircuitKind kind, bool sensed, Side side);
+
+/// True when two terminals are the same node there: at the gauge COMP and SIG+, and EXC and SENSE.
+bool onePoint(Terminal a, Terminal b, Side side);
+
 /// For each arm, the factor on the channel's strain: +1, -1, -nu, +nu, or 0 for a resistor that is no
 /// gauge. Shape: arms 1..4 at index 0..3. For a transducer: +1, -1, +1, -1.
 std::array<double, 4> armWeights(CircuitKind kind, double poisson);
