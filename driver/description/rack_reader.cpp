@@ -184,14 +184,17 @@ class RackReader {
   /// [gauge.NAME] and [resistor.NAME]: a table of tables.
   template <class Read>
   void readNamed(std::string_view key, const Read& read) {
+    const TomlNode* defaults = root_.table(std::string(key) + "_defaults");
     const TomlNode* all = root_.table(key);
     if (!all) return;
-    for (const TomlEntry& entry : all->entries) {
-      if (entry.value.type == TomlNode::Type::table)
+    for (TomlEntry entry : all->entries) {
+      if (entry.value.type == TomlNode::Type::table) {
+        if (defaults) mergeDefaults(entry.value, *defaults);
         read(entry);
-      else
+      } else {
         diagnostics_.error(entry.place, inQuotes(entry.key) + " stands in [" + std::string(key) + "] itself",
                            "name the " + std::string(key) + ": [" + std::string(key) + ".NAME]");
+      }
     }
   }
 
@@ -222,6 +225,8 @@ class RackReader {
     reader.take("temperature_coefficient", out.temperatureCoefficient, {"-10000 ppm/K", "10000 ppm/K"});
     reader.take("temperature_span", out.temperatureSpan, {"0 K", "100 K"});
     reader.take("certificate", out.certificate);
+    if (isOwn(reader.entry("expanded_uncertainty")) && !isOwn(reader.entry("tolerance")))
+      out.tolerance = {};  // a certificate of its own stands above a tolerance for all
     if (!reader.has("tolerance") && !reader.has("expanded_uncertainty"))
       diagnostics_.error(
           reader.place(), reader.what() + " has neither tolerance nor expanded uncertainty",
