@@ -20,50 +20,80 @@ namespace asio = boost::asio;
 using boost::system::error_code;
 
 struct Event::Waiter {
-  asio::any_completion_handler<void(error_code)> handler;
+  asio::any_completion_handler<void(error_code, bool)> handler;
   asio::any_io_executor executor;
+  Clock* clock = nullptr;
+  std::weak_ptr<const void> clockAlive;
+  Clock::Ticket ticket = 0;
 
-  void finish(error_code ec) {
+  void finish(error_code ec, bool notified) {
     if (!handler) return;
-    asio::post(executor, [h = std::make_shared<decltype(handler)>(std::exchange(handler, nullptr)), ec] {
-      std::move (*h)(ec);
-    });
+    if (ticket != 0 && !clockAlive.expired()) clock->cancel(ticket);
+    asio::post(executor, [h = std::make_shared<decltype(handler)>(std::exchange(handler, nullptr)), ec,
+                          notified] { std::move (*h)(ec, notified); });
   }
 };
 
 Event::Event() : waiters_(std::make_shared<std::list<std::shared_ptr<Waiter>>>()) {}
 
 Event::~Event() {
-  for (auto& waiter : *waiters_) waiter->finish(asio::error::operation_aborted);
+  const auto left = std::exchange(*waiters_, {});
+  for (const auto& waiter : left) waiter->finish(asio::error::operation_aborted, false);
 }
 
-Task<void> Event::wait() {
+namespace {
+
+using Waiters = std::list<std::shared_ptr<Event::Waiter>>;
+
+/// Ends one wait from outside the notifications: by cancellation or at its deadline.
+void endWait(const std::weak_ptr<Waiters>& waiters, const std::weak_ptr<Event::Waiter>& waiter,
+             error_code ec) {
+  const auto pending = waiter.lock();
+  if (!pending) return;
+  if (const auto list = waiters.lock()) list->remove(pending);
+  pending->finish(ec, false);
+}
+
+Task<bool> waitOn(std::shared_ptr<Waiters> waiters, Clock* clock, Instant deadline) {
   auto executor = co_await asio::this_coro::executor;
-  auto waiters = waiters_;
-  co_await asio::async_initiate<const asio::use_awaitable_t<>&, void(error_code)>(
-      [waiters, executor](auto handler) {
-        auto waiter = std::make_shared<Waiter>();
-        waiter->executor = executor;
-        auto slot = asio::get_associated_cancellation_slot(handler);
-        waiter->handler = std::move(handler);
-        waiters->push_back(waiter);
-        if (slot.is_connected()) {
-          slot.assign([weakList = std::weak_ptr(waiters),
-                       weak = std::weak_ptr(waiter)](asio::cancellation_type type) {
-            auto pending = weak.lock();
-            if (!pending || type == asio::cancellation_type::none) return;
-            if (auto list = weakList.lock()) list->remove(pending);
-            pending->finish(asio::error::operation_aborted);
-          });
-        }
-      },
-      asio::use_awaitable);
+  auto initiate = [waiters, executor, clock, deadline](auto handler) {
+    auto waiter = std::make_shared<Event::Waiter>();
+    waiter->executor = executor;
+    auto slot = asio::get_associated_cancellation_slot(handler);
+    waiter->handler = std::move(handler);
+    waiters->push_back(waiter);
+    const std::weak_ptr<Waiters> list = waiters;
+    const std::weak_ptr<Event::Waiter> weak = waiter;
+    if (slot.is_connected()) {
+      slot.assign([list, weak](asio::cancellation_type type) {
+        if (type != asio::cancellation_type::none) endWait(list, weak, asio::error::operation_aborted);
+      });
+    }
+    if (clock && deadline != Instant::max()) {
+      waiter->clock = clock;
+      waiter->clockAlive = clock->alive();
+      waiter->ticket = clock->at(deadline, [list, weak] { endWait(list, weak, {}); });
+    }
+  };
+  // Named first: g++ 12 destroys captures twice when the lambda stands inside the co_await expression.
+  auto waiting = asio::async_initiate<const asio::use_awaitable_t<>&, void(error_code, bool)>(
+      initiate, asio::use_awaitable);
+  co_return co_await std::move(waiting);
+}
+
+}  // namespace
+
+Task<void> Event::wait() {
+  co_await waitOn(waiters_, nullptr, Instant::max());
+}
+
+Task<bool> Event::wait(Clock& clock, Instant deadline) {
+  return waitOn(waiters_, &clock, deadline);
 }
 
 void Event::notifyAll() {
-  auto woken = std::move(*waiters_);
-  waiters_->clear();
-  for (auto& waiter : woken) waiter->finish({});
+  const auto woken = std::exchange(*waiters_, {});
+  for (const auto& waiter : woken) waiter->finish({}, true);
 }
 
 AsyncMutex::Lock& AsyncMutex::Lock::operator=(Lock&& other) noexcept {

@@ -7,6 +7,7 @@
 #include <memory>
 #include <vector>
 
+#include "driver/core/clock.h"
 #include "driver/core/task.h"
 
 namespace shuntwright {
@@ -21,6 +22,8 @@ class Event {
   Event& operator=(const Event&) = delete;
 
   Task<void> wait();
+  /// False when the deadline comes first. Instant::max(): waits for ever.
+  Task<bool> wait(Clock& clock, Instant deadline);
   void notifyAll();
 
   struct Waiter;

@@ -52,27 +52,31 @@ struct PendingWait {
 
 Task<void> waitUntil(Clock& clock, Instant when) {
   auto executor = co_await asio::this_coro::executor;
-  co_await asio::async_initiate<const asio::use_awaitable_t<>&, void(boost::system::error_code)>(
-      [&clock, when, executor](auto handler) {
-        auto wait = std::make_shared<PendingWait>();
-        wait->clock = &clock;
-        auto slot = asio::get_associated_cancellation_slot(handler);
-        wait->handler = std::move(handler);
-        if (slot.is_connected()) {
-          slot.assign([weak = std::weak_ptr<PendingWait>(wait), executor](asio::cancellation_type type) {
-            if (type == asio::cancellation_type::none) return;
-            if (auto pending = weak.lock()) {
-              pending->clock->cancel(pending->ticket);
-              asio::post(executor, [pending] { pending->finish(asio::error::operation_aborted); });
-            }
-          });
+  auto initiate = [&clock, when, executor](auto handler) {
+    auto wait = std::make_shared<PendingWait>();
+    wait->clock = &clock;
+    auto slot = asio::get_associated_cancellation_slot(handler);
+    wait->handler = std::move(handler);
+    if (slot.is_connected()) {
+      slot.assign([weak = std::weak_ptr<PendingWait>(wait), executor](asio::cancellation_type type) {
+        if (type == asio::cancellation_type::none) return;
+        if (auto pending = weak.lock()) {
+          pending->clock->cancel(pending->ticket);
+          asio::post(executor, [pending] { pending->finish(asio::error::operation_aborted); });
         }
-        wait->ticket = clock.at(when, [wait] { wait->finish({}); });
-      },
-      asio::use_awaitable);
+      });
+    }
+    wait->ticket = clock.at(when, [wait] { wait->finish({}); });
+  };
+  // Named first: g++ 12 destroys captures twice when the lambda stands inside the co_await expression.
+  auto waiting = asio::async_initiate<const asio::use_awaitable_t<>&, void(boost::system::error_code)>(
+      initiate, asio::use_awaitable);
+  co_await std::move(waiting);
 }
 
-Task<void> waitFor(Clock& clock, Nanoseconds duration) { return waitUntil(clock, clock.now() + duration); }
+Task<void> waitFor(Clock& clock, Nanoseconds duration) {
+  return waitUntil(clock, clock.now() + duration);
+}
 
 // ---------------------------------------------------------------- real time
 
@@ -86,7 +90,9 @@ struct RealClock::State {
 };
 
 RealClock::RealClock(asio::io_context& context) : state_(std::make_shared<State>(context)) {}
-RealClock::~RealClock() { state_->timers.clear(); }
+RealClock::~RealClock() {
+  state_->timers.clear();
+}
 
 Instant RealClock::now() const {
   return state_->startUtc + (std::chrono::steady_clock::now() - state_->startSteady);
@@ -107,9 +113,17 @@ Clock::Ticket RealClock::at(Instant when, std::function<void()> callback) {
   return ticket;
 }
 
-void RealClock::cancel(Ticket ticket) { state_->timers.erase(ticket); }
+void RealClock::cancel(Ticket ticket) {
+  state_->timers.erase(ticket);
+}
 
 // ---------------------------------------------------------------- virtual time
+
+VirtualClock::~VirtualClock() {
+  // What the callbacks own may cancel other tickets while it is destroyed.
+  deadlines_.clear();
+  const auto abandoned = std::exchange(queue_, {});
+}
 
 Clock::Ticket VirtualClock::at(Instant when, std::function<void()> callback) {
   const Ticket ticket = ++last_;
@@ -135,7 +149,9 @@ bool VirtualClock::advance() {
   return true;
 }
 
-Instant VirtualClock::next() const { return queue_.empty() ? Instant::max() : queue_.begin()->first.first; }
+Instant VirtualClock::next() const {
+  return queue_.empty() ? Instant::max() : queue_.begin()->first.first;
+}
 
 void runVirtual(asio::io_context& context, VirtualClock& clock, const std::function<bool()>& done) {
   for (;;) {

@@ -25,7 +25,9 @@ using Instant = std::chrono::time_point<std::chrono::system_clock, Nanoseconds>;
 /// RFC 3339 in UTC with milliseconds: "2026-05-04T09:30:00.000Z".
 std::string rfc3339(Instant when);
 
-inline double seconds(Nanoseconds duration) { return std::chrono::duration<double>(duration).count(); }
+inline double seconds(Nanoseconds duration) {
+  return std::chrono::duration<double>(duration).count();
+}
 inline Nanoseconds fromSeconds(double value) {
   return std::chrono::duration_cast<Nanoseconds>(std::chrono::duration<double>(value));
 }
@@ -41,6 +43,12 @@ class Clock {
   /// Runs `callback` once from the event loop at or after `when`, unless cancelled first.
   virtual Ticket at(Instant when, std::function<void()> callback) = 0;
   virtual void cancel(Ticket ticket) = 0;  ///< unknown or finished tickets are ignored
+
+  /// Expires with the clock, for waits that may be torn down after it.
+  std::weak_ptr<const void> alive() const { return alive_; }
+
+ private:
+  std::shared_ptr<const void> alive_ = std::make_shared<char>();
 };
 
 /// Awaitable waits over any clock; cancellation ends them at once.
@@ -66,6 +74,7 @@ class RealClock final : public Clock {
 class VirtualClock final : public Clock {
  public:
   explicit VirtualClock(Instant start = kDefaultStart) : now_(start) {}
+  ~VirtualClock() override;
 
   /// 2026-05-04T09:30:00Z, an invented Monday morning.
   static constexpr Instant kDefaultStart{std::chrono::seconds(1'777'887'000)};
