@@ -60,7 +60,8 @@ Task<bool> waitOn(std::shared_ptr<Waiters> waiters, Clock* clock, Instant deadli
     auto waiter = std::make_shared<Event::Waiter>();
     waiter->executor = executor;
     auto slot = asio::get_associated_cancellation_slot(handler);
-    waiter->handler = std::move(handler);
+    // Asio 1.81's move assignment copies; swap does not.
+    decltype(waiter->handler)(std::move(handler)).swap(waiter->handler);
     waiters->push_back(waiter);
     const std::weak_ptr<Waiters> list = waiters;
     const std::weak_ptr<Event::Waiter> weak = waiter;

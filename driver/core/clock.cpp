@@ -56,7 +56,8 @@ Task<void> waitUntil(Clock& clock, Instant when) {
     auto wait = std::make_shared<PendingWait>();
     wait->clock = &clock;
     auto slot = asio::get_associated_cancellation_slot(handler);
-    wait->handler = std::move(handler);
+    // Asio 1.81's move assignment copies; swap does not.
+    decltype(wait->handler)(std::move(handler)).swap(wait->handler);
     if (slot.is_connected()) {
       slot.assign([weak = std::weak_ptr<PendingWait>(wait), executor](asio::cancellation_type type) {
         if (type == asio::cancellation_type::none) return;
