@@ -33,7 +33,7 @@ Result<FittedMap> mapOf(const Circuit& circuit, units::Strain centre, units::Str
   const double width = range.in(units::strain);
   if (!(width > 0)) {
     return fail(ErrorCode::bad_use,
-                fmt::format("the range of a map is {} microstrain; it is more than 0", width * 1e6));
+                fmt::format("the range of a map is {:.6g} microstrain; it is more than 0", width * 1e6));
   }
   const double e1 = -kOuterState * width, e2 = kOuterState * width;  // about the centre
   const auto at = [&](double strain) { return ratio(circuit, strain * units::strain); };
@@ -81,8 +81,9 @@ Result<units::Strain> strainOf(const Circuit& circuit, units::Ratio wanted) {
   if (!(target >= least && target <= most)) {
     return fail(
         ErrorCode::bad_use,
-        fmt::format("no strain within +-{:.0f} microstrain gives {} mV/V: the circuit goes from {} to {}",
-                    limit * 1e6, target * 1e3, least * 1e3, most * 1e3));
+        fmt::format(
+            "no strain within +-{:.0f} microstrain gives {:.6g} mV/V: the circuit goes from {:.6g} to {:.6g}",
+            limit * 1e6, target * 1e3, least * 1e3, most * 1e3));
   }
   // Newton's method, kept inside a bracket that shrinks with every step.
   double below = -limit, above = limit, e = 0;

@@ -90,26 +90,27 @@ Result<const Topology*> checked(const Circuit& circuit, double strain, std::span
   for (std::size_t i = 0; i < description::kTerminals; ++i) {
     const auto t = static_cast<Terminal>(i);
     if (topology->hasLead(t) && !notNegative(ohms(circuit.lead(t)))) {
-      return fail(ErrorCode::bad_use, fmt::format("the {} lead has {} ohm; a resistance is 0 or more",
+      return fail(ErrorCode::bad_use, fmt::format("the {} lead has {:.6g} ohm; a resistance is 0 or more",
                                                   description::name(t), ohms(circuit.lead(t))));
     }
   }
   for (std::size_t i = 0; i < 4; ++i) {
     const double resistance = armResistance(circuit.arms[i], strain);
     if (positive(resistance)) continue;
-    return fail(ErrorCode::bad_use,
-                fmt::format("arm {} of the {} circuit has {} ohm at {} microstrain; an arm is more than 0",
-                            i + 1, description::name(circuit.kind), resistance, strain * 1e6));
+    return fail(
+        ErrorCode::bad_use,
+        fmt::format("arm {} of the {} circuit has {:.6g} ohm at {:.6g} microstrain; an arm is more than 0",
+                    i + 1, description::name(circuit.kind), resistance, strain * 1e6));
   }
   if (!positive(ohms(circuit.inputResistance))) {
     return fail(ErrorCode::bad_use,
-                fmt::format("the amplifier's input resistance is {} ohm; it is more than 0",
+                fmt::format("the amplifier's input resistance is {:.6g} ohm; it is more than 0",
                             ohms(circuit.inputResistance)));
   }
   if (!notNegative(ohms(circuit.excitationSeries))) {
     return fail(
         ErrorCode::bad_use,
-        fmt::format("the resistance inside the transducer's excitation lines is {} ohm; it is 0 or more",
+        fmt::format("the resistance inside the transducer's excitation lines is {:.6g} ohm; it is 0 or more",
                     ohms(circuit.excitationSeries)),
         {}, "a transducer's input resistance is not below its output resistance");
   }
@@ -117,7 +118,7 @@ Result<const Topology*> checked(const Circuit& circuit, double strain, std::span
     if (!exists(circuit, path)) return noSuchPath(circuit, *topology, path);
     if (!notNegative(ohms(path.resistance))) {
       return fail(ErrorCode::bad_use,
-                  fmt::format("a shunt has {} ohm; a resistance is 0 or more", ohms(path.resistance)));
+                  fmt::format("a shunt has {:.6g} ohm; a resistance is 0 or more", ohms(path.resistance)));
     }
   }
   return topology;
