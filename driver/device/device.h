@@ -35,7 +35,7 @@ class Device {
 
   /// Errors besides I/O: refused when the model or the serial number is not the one expected.
   virtual Task<Result<Identity>> identify() = 0;
-  virtual Task<Result<void>> setRate(units::Frequency rate) = 0;          ///< nothing to do without set_rate
+  virtual Task<Result<void>> setRate(units::Frequency rate) = 0;  ///< nothing to do without set_rate
   virtual Task<Result<void>> setExcitation(units::Voltage excitation) = 0;  ///< likewise
 
   virtual Task<Result<void>> closeRelay(int relay) = 0;

@@ -41,6 +41,10 @@ TextDialect::TextDialect(std::shared_ptr<const Profile> profile) : profile_(std:
     inputs_ = static_cast<std::size_t>(profile_->inputs->count);
     format_.emplace(*profile_->inputs);
   }
+  const auto& protocol = profile_->protocol;
+  const std::size_t end = protocol.requestEnd.find(protocol.answerEnd);
+  echoEndsLine_ = end != std::string::npos;
+  if (echoEndsLine_) echoTail_ = protocol.requestEnd.substr(end + protocol.answerEnd.size());
 }
 
 LineSplitter TextDialect::splitter() const {
@@ -56,7 +60,9 @@ Result<Request> TextDialect::request(const Exchange& exchange, std::span<const V
   request.line = request.text;
   appendChecksum(profile_->protocol.checksum, request.line);
   append(request.bytes, bytesOf(request.line));
-  append(request.bytes, bytesOf(profile_->protocol.requestEnd));
+  const std::string& requestEnd = profile_->protocol.requestEnd;
+  append(request.bytes, bytesOf(requestEnd));
+  request.echo = request.line + requestEnd.substr(0, requestEnd.find(profile_->protocol.answerEnd));
   for (const Value& value : values) {
     // Views into the caller's text would not outlive it; numbers are all that answers repeat.
     if (!std::holds_alternative<std::string_view>(value.value)) request.values.push_back(value);
@@ -64,22 +70,26 @@ Result<Request> TextDialect::request(const Exchange& exchange, std::span<const V
   return request;
 }
 
-std::string_view TextDialect::afterEcho(std::string_view line, const Request& request,
-                                        const description::TextProtocol& protocol) {
-  if (!line.starts_with(request.line)) return {};
-  std::string_view rest = line.substr(request.line.size());
-  if (rest.starts_with(protocol.requestEnd)) rest.remove_prefix(protocol.requestEnd.size());
-  return rest;
+std::string_view TextDialect::withoutEcho(std::string_view line, const Request& request,
+                                          bool& expected) const {
+  if (!expected) {
+    if (!echoTail_.empty() && line.starts_with(echoTail_)) line.remove_prefix(echoTail_.size());
+    return line;
+  }
+  if (echoEndsLine_) {
+    if (line != request.echo) return line;
+    expected = false;
+    return {};
+  }
+  const std::size_t at = line.find(request.echo);
+  if (at == std::string_view::npos) return line;
+  expected = false;
+  return line.substr(at + request.echo.size());
 }
 
-Incoming TextDialect::classify(std::string_view line, const Request* pending, bool expectEcho,
-                               std::span<float> ratio, std::span<std::uint8_t> flags) {
+Incoming TextDialect::classify(std::string_view line, const Request* pending, std::span<float> ratio,
+                               std::span<std::uint8_t> flags) {
   Incoming out;
-  out.body = line;
-  if (pending && expectEcho && line == pending->line) {
-    out.kind = Incoming::Kind::echo;
-    return out;
-  }
   auto body = stripChecksum(profile_->protocol.checksum, line);
   if (!body) {
     out.kind = beginsLikeStream(line) ? Incoming::Kind::damaged_stream : Incoming::Kind::damaged;

@@ -22,6 +22,7 @@ struct Request {
   std::string text;           ///< as the profile writes it, filled in: "CLOSE 3"
   std::string line;           ///< with the check sum, without the terminator
   Bytes bytes;                ///< what goes over the wire
+  std::string echo;           ///< the line in which its echo ends, or which runs into the answer
   std::vector<Value> values;  ///< numbers that an answer must repeat where it has fields of the same name
 
   bool wantsAnswer() const { return exchange->answer.has_value(); }
@@ -61,11 +62,10 @@ class TextDialect {
   Result<Request> request(const description::Exchange& exchange, std::span<const Value> values = {}) const;
 
   /// Says what a line is. A line of samples comes first, so that samples left over from an earlier run are
-  /// never taken for an answer; then echo, error answers, and the answer to `pending`.
-  /// @param pending     the request that waits for an answer; may be null
-  /// @param expectEcho  its echo has not come yet
+  /// never taken for an answer; then error answers, and the answer to `pending`.
+  /// @param pending  the request that waits for an answer; may be null
   /// @param ratio, flags  out, `inputs()` values each, filled in for Kind::stream
-  Incoming classify(std::string_view line, const Request* pending, bool expectEcho, std::span<float> ratio,
+  Incoming classify(std::string_view line, const Request* pending, std::span<float> ratio,
                     std::span<std::uint8_t> flags);
 
   /// Fields of the last line that was an answer. Views point into that line.
@@ -75,9 +75,11 @@ class TextDialect {
   /// what came.
   Result<void> values(std::span<float> ratio, std::span<std::uint8_t> flags) const;
 
-  /// The rest of a line that begins with the echo of a request whose end is not the end of an answer.
-  static std::string_view afterEcho(std::string_view line, const Request& request,
-                                    const description::TextProtocol& protocol);
+  /// Takes the echo of `request` off a line. An echo ends as the request does; where an answer ends
+  /// otherwise, the echo shares its line with the answer or leaves the rest of its end before it.
+  /// @param expected  in: the echo has not come yet; out: false when it was found
+  /// @returns what is left, empty when the line was the echo alone.
+  std::string_view withoutEcho(std::string_view line, const Request& request, bool& expected) const;
 
  private:
   bool readStream(std::string_view body, Incoming& out, std::span<float> ratio,
@@ -90,6 +92,8 @@ class TextDialect {
   std::shared_ptr<const description::Profile> profile_;
   std::size_t inputs_ = 0;
   std::optional<ValueFormat> format_;
+  bool echoEndsLine_ = true;  ///< the end of a request ends an answer, too
+  std::string echoTail_;      ///< what of it then stands before the answer
   Fields fields_;
 };
 
