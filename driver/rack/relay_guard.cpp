@@ -24,6 +24,11 @@ std::string listed(const std::set<RelayRef>& relays) {
 
 const description::Relays& relaysOf(const device::Device& device) { return *device.described().profile->relays; }
 
+std::unexpected<Error> readsBackClosed(const RelayRef& relay) {
+  return fail(ErrorCode::device_error, "relay " + text(relay) + " was told to open and reads back closed",
+              "device " + relay.device, "the contact may be welded: take the shunt resistor off by hand before going on");
+}
+
 bool canRead(const device::Device& device) { return relaysOf(device).state.has_value(); }
 
 }  // namespace
@@ -74,9 +79,7 @@ Task<Result<void>> RelayGuard::open(RelayRef relay) {
     auto closed = co_await (*device)->relayClosed(relay.relay);
     if (!closed) co_return std::unexpected(closed.error());
     if (*closed) {
-      co_return fail(ErrorCode::device_error, "relay " + text(relay) + " was told to open and reads back closed",
-                     "device " + relay.device,
-                     "the contact may be welded: take the shunt resistor off by hand before going on");
+      co_return readsBackClosed(relay);
     }
   }
   co_return noteOpen(relay);
@@ -88,20 +91,21 @@ Task<Result<void>> RelayGuard::openDevice(std::string name, std::vector<int> rel
   device::Device& device = *found->second;
   if (auto done = co_await device.openAllRelays(); !done) co_return done;
   if (canRead(device)) co_await waitFor(clock_, relaysOf(device).releaseTime);
+  Result<void> result;
   for (const int number : relays) {
     const RelayRef relay{name, number};
     if (canRead(device)) {
       auto closed = co_await device.relayClosed(number);
       if (!closed) co_return std::unexpected(closed.error());
       if (*closed) {
-        co_return fail(ErrorCode::device_error, "relay " + text(relay) + " was told to open and reads back closed",
-                       "device " + name,
-                       "the contact may be welded: take the shunt resistor off by hand before going on");
+        // One that stays closed does not keep the others in the book.
+        result = readsBackClosed(relay);
+        continue;
       }
     }
-    if (auto noted = noteOpen(relay); !noted) co_return noted;
+    if (auto noted = noteOpen(relay); !noted) result = noted;
   }
-  co_return Result<void>{};
+  co_return result;
 }
 
 Task<Result<void>> RelayGuard::openAll(Nanoseconds limit) {
