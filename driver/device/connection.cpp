@@ -244,7 +244,8 @@ Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& req
   const auto& protocol = profile().protocol;
   if (owed_) co_await awaitQuiet();
   if (lastAnswer_ != Instant::min() && clock_.now() < lastAnswer_ + protocol.gap) {
-    co_await waitUntil(clock_, lastAnswer_ + protocol.gap);
+    const Instant free = lastAnswer_ + protocol.gap;
+    co_await waitUntil(clock_, free);
   }
   if (failure_) co_return std::unexpected(*failure_);
 
@@ -266,7 +267,8 @@ Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& req
   };
   Guard guard{*this, pending, waits, clock_.now()};
   pending_ = &pending;
-  auto written = co_await stream_->write(request.bytes, clock_.now() + protocol.timeout);
+  const Instant writeBy = clock_.now() + protocol.timeout;
+  auto written = co_await stream_->write(request.bytes, writeBy);
   const Instant sent = guard.sent = clock_.now();
   if (!written) {
     co_return std::unexpected(std::move(written.error()).wrap("the request could not be sent"));
@@ -278,7 +280,8 @@ Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& req
   }
   const Instant deadline = sent + protocol.timeout;
   while (!pending.done && !failure_) {
-    if (!co_await progress_.wait(clock_, deadline)) break;
+    const bool heard = co_await progress_.wait(clock_, deadline);
+    if (!heard) break;
   }
   if (pending.done) {
     if (!pending.result) co_return std::unexpected(std::move(pending.result.error()));
@@ -290,7 +293,9 @@ Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& req
 
 Task<void> Connection::awaitQuiet() {
   while (owed_ && !failure_) {
-    if (!co_await progress_.wait(clock_, owed_->until)) break;
+    const Instant until = owed_->until;
+    const bool heard = co_await progress_.wait(clock_, until);
+    if (!heard) break;
   }
   owed_.reset();
   // The rest of a line that broke off must not be put before the next answer.

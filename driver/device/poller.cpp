@@ -45,8 +45,9 @@ Task<void> Poller::run() {
   Clock& clock = connection_->clock();
   std::uint64_t number = 0;
   while (wanted_ && !connection_->failure()) {
-    if (clock.now() < tick(number)) {
-      co_await changed_.wait(clock, tick(number));
+    const Instant due = tick(number);
+    if (clock.now() < due) {
+      co_await changed_.wait(clock, due);
       continue;
     }
     co_await read();

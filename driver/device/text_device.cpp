@@ -209,7 +209,8 @@ Task<Result<SampleBlock>> TextDevice::next(Instant deadline) {
     }
     if (connection->failure()) co_return std::unexpected(*connection->failure());
     if (!running_) co_return fail(ErrorCode::bad_use, "no sampling is under way", connection->where());
-    if (!co_await connection->arrived().wait(connection->clock(), deadline)) {
+    const bool heard = co_await connection->arrived().wait(connection->clock(), deadline);
+    if (!heard) {
       if (queue && !queue->empty()) continue;
       co_return fail(ErrorCode::timeout, "no samples came in time", connection->where(),
                      "check that the device still streams, and at which rate");
