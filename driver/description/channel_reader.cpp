@@ -56,7 +56,7 @@ class ChannelReader {
     // Leads and shunts are judged by the circuit; with that unknown, every remark would be a guess.
     const TomlEntry* leads = reader_.neededEntry("leads", "{ length = \"20 m\", awg = 26 }");
     if (leads && reader_.isA(TomlNode::Type::table, *leads) && circuitKnown)
-      readLeads(leads->value, reader_.what(), channel_, diagnostics_);
+      readLeads(leads->value, leads->inherited ? "the defaults" : reader_.what(), channel_, diagnostics_);
     const auto shunts = reader_.tables("shunts");
     if (circuitKnown) readShunts(shunts);
     reader_.finish();

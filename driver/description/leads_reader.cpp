@@ -97,7 +97,7 @@ void readLeads(const TomlNode& table, const std::string& what, Channel& channel,
                        [&](Terminal t) { return !channel.leads.contains(t); });
   if (!lacking.empty())
     diagnostics.error(
-        table.place, "the leads of " + what + " lack " + list(lacking),
+        table.place, list(lacking) + " missing from the leads of " + what,
         "give each wire of the " + std::string(name(channel.circuit)) +
             " circuit its resistance, or all of them by each = \"2.7 ohm\" or by length and awg");
 }

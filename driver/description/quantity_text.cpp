@@ -81,15 +81,14 @@ std::string unitList(const QuantityWords& words) {
   return list;
 }
 
-/// "Ohms" -> "ohm", "volts" stays for nearest() to judge.
+/// "Ohms" -> "ohm": a plural is tried as a singular first.
 std::string_view unitMeant(std::string_view text, const QuantityWords& words) {
   std::vector<std::string_view> names;
   for (const UnitWord& unit : words.units)
     if (!unit.alias) names.push_back(unit.name);
-  if (text.size() > 1 && (text.ends_with('s') || text.ends_with('S'))) {
-    const std::string_view singular = text.substr(0, text.size() - 1);
-    for (const std::string_view name : names)
-      if (nearest(singular, {name}) == name && singular.size() == name.size()) return name;
+  if (text.ends_with('s') || text.ends_with('S')) {
+    const std::string_view singular = nearest(text.substr(0, text.size() - 1), names);
+    if (!singular.empty()) return singular;
   }
   return nearest(text, names);
 }

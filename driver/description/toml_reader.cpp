@@ -81,12 +81,21 @@ std::string_view name(TomlNode::Type type) {
   return "";
 }
 
+namespace {
+
+void markInherited(TomlEntry& entry) {
+  entry.inherited = true;
+  for (TomlEntry& inner : entry.value.entries) markInherited(inner);
+}
+
+}  // namespace
+
 void mergeDefaults(TomlNode& table, const TomlNode& defaults) {
   for (const TomlEntry& fallback : defaults.entries) {
     const auto own = std::ranges::find(table.entries, fallback.key, &TomlEntry::key);
     if (own == table.entries.end()) {
       table.entries.push_back(fallback);
-      table.entries.back().inherited = true;
+      markInherited(table.entries.back());
     } else if (own->value.type == TomlNode::Type::table && fallback.value.type == TomlNode::Type::table) {
       mergeDefaults(own->value, fallback.value);
     }
@@ -195,7 +204,7 @@ const TomlEntry* TableReader::entry(std::string_view key) {
 const TomlEntry* TableReader::neededEntry(std::string_view key, std::string_view example) {
   const TomlEntry* found = entry(key);
   if (!found)
-    diagnostics_.error(table_.place, what_ + " lacks " + quotedKey(key),
+    diagnostics_.error(table_.place, quotedKey(key) + " is missing from " + what_,
                        "add it" + (example.empty() ? std::string()
                                                    : ": " + std::string(key) + " = " + std::string(example)));
   return found;
@@ -245,8 +254,10 @@ void TableReader::finish() {
   const std::vector<std::string_view> known(known_.begin(), known_.end());
   for (const TomlEntry& found : table_.entries) {
     if (std::ranges::find(known_, found.key) != known_.end()) continue;
-    diagnostics_.error(found.place, "unknown key " + inQuotes(found.key) + " in " + what_,
-                       suggestion(found.key, known));
+    diagnostics_.error(
+        found.place,
+        "unknown key " + inQuotes(found.key) + " in " + (found.inherited ? "the defaults" : what_),
+        suggestion(found.key, known));
   }
 }
 
