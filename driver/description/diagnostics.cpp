@@ -102,10 +102,8 @@ void Diagnostics::warning(Place place, std::string message, std::string remedy) 
 
 void Diagnostics::add(Problem problem) {
   // What stands once in a file is said once, however many channels inherit it.
-  const bool known = std::ranges::any_of(problems_, [&](const Problem& other) {
-    return other.place == problem.place && other.message == problem.message;
-  });
-  if (!known) problems_.push_back(std::move(problem));
+  if (said_.insert(problem.place.text() + ' ' + problem.message).second)
+    problems_.push_back(std::move(problem));
 }
 
 void Diagnostics::keepText(std::string file, std::string text) {
@@ -116,9 +114,13 @@ void Diagnostics::sortByPlace() {
   const auto order = [this](const std::string& file) {
     return std::ranges::find(texts_, file, &std::pair<std::string, std::string>::first) - texts_.begin();
   };
-  std::ranges::stable_sort(problems_, {}, [&](const Problem& p) {
-    return std::tuple(order(p.place.file), p.place.line, p.place.column);
-  });
+  std::vector<std::tuple<std::ptrdiff_t, int, int, std::size_t>> keys;  // the index keeps equals in order
+  for (const Problem& p : problems_)
+    keys.emplace_back(order(p.place.file), p.place.line, p.place.column, keys.size());
+  std::ranges::sort(keys);
+  std::vector<Problem> sorted;
+  for (const auto& key : keys) sorted.push_back(std::move(problems_[std::get<3>(key)]));
+  problems_ = std::move(sorted);
 }
 
 bool Diagnostics::ok() const {

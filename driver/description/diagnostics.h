@@ -1,5 +1,6 @@
 #pragma once
 
+#include <set>
 #include <string>
 #include <string_view>
 #include <vector>
@@ -40,6 +41,7 @@ class Diagnostics {
   void add(Problem problem);
 
   std::vector<Problem> problems_;
+  std::set<std::string> said_;
   std::vector<std::pair<std::string, std::string>> texts_;
 };
 

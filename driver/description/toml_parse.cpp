@@ -11,7 +11,8 @@ namespace shuntwright::description {
 namespace {
 
 constexpr std::size_t kLongestText = 4u << 20;
-constexpr int kDeepestKey = 16;  // a.b.c... nests tables; the parser's own limit does not see those
+constexpr int kDeepestKey = 16;    // a.b.c... nests tables; the parser's own limit does not see those
+constexpr int kDeepestValue = 32;  // arrays and inline tables within each other
 
 struct Mistake {
   Place place;
@@ -27,6 +28,7 @@ class Scan {
 
   std::optional<Mistake> mistake() {
     int dots = 0;
+    int depth = 0;
     while (at_ < text_.size()) {
       const char c = text_[at_];
       if (static_cast<unsigned char>(c) >= 0x80)
@@ -39,6 +41,9 @@ class Scan {
       } else {
         if (c == '.' && ++dots > kDeepestKey)
           return Mistake{place_, "a key is nested too deep", "at most 16 parts joined by dots"};
+        if ((c == '[' || c == '{') && ++depth > kDeepestValue)
+          return Mistake{place_, "brackets are nested too deep", "at most 32 within each other"};
+        if (c == ']' || c == '}') depth = std::max(depth - 1, 0);
         if (std::string_view(",=[]{}\n").find(c) != std::string_view::npos) dots = 0;
         step();
       }
@@ -96,8 +101,8 @@ TomlNode convert(const toml::node& node, const std::string& file) {
     for (const auto& [key, value] : *table)
       out.entries.push_back(
           {std::string(key.str()), placeOf(key.source(), file), false, convert(value, file)});
-    std::ranges::stable_sort(out.entries, {},
-                             [](const TomlEntry& e) { return std::tuple(e.place.line, e.place.column); });
+    std::ranges::sort(out.entries, {},
+                      [](const TomlEntry& e) { return std::tuple(e.place.line, e.place.column); });
   } else if (const auto* array = node.as_array()) {
     out.type = TomlNode::Type::array;
     for (const auto& item : *array) out.items.push_back(convert(item, file));

@@ -50,7 +50,7 @@ struct TomlEntry {
 };
 
 /// The whole file as a table, or nothing after a syntax error. Keeps the text in `diagnostics`. Refuses files
-/// over 4 MiB, non-ASCII outside strings and comments, and keys nested deeper than 16.
+/// over 4 MiB, non-ASCII outside strings and comments, keys of more than 16 parts, brackets deeper than 32.
 std::optional<TomlNode> parseToml(std::string_view text, const std::string& file, Diagnostics& diagnostics);
 
 /// Adds what `table` lacks from `defaults`, key by key and tables within tables; marks it inherited.

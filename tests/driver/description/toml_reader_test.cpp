@@ -68,6 +68,14 @@ TEST(ParseToml, survivesWhatStopsTheParserItself) {
             std::vector<std::string>{"1:34: a key is nested too deep | at most 16 parts joined by dots"});
   EXPECT_EQ(syntax(std::string(100000, '[')).size(), 1u);
   EXPECT_EQ(syntax("a = " + std::string(100000, '[')).size(), 1u);
+  std::string tables = "a = ";
+  for (int i = 0; i < 100000; ++i) tables += "{a=";
+  EXPECT_EQ(syntax(tables),
+            std::vector<std::string>{"1:101: brackets are nested too deep | at most 32 within each other"});
+  // As deep as both limits together let it: must be read or refused, not overflow the stack.
+  std::string both = "a = ", closing;
+  for (int i = 0; i < 32; ++i) both += "{a.a.a.a.a.a.a.a.a.a.a.a.a.a.a.a = ", closing += "}";
+  EXPECT_EQ(syntax(both + "1" + closing), std::vector<std::string>{});
   EXPECT_EQ(syntax(std::string(5u << 20, ' ')),
             std::vector<std::string>{"0:0: the file is longer than 4 MiB | split it"});
 }
