@@ -1,0 +1,85 @@
+#include "driver/recording/csv.h"
+
+#include <algorithm>
+#include <charconv>
+#include <cmath>
+#include <ostream>
+
+namespace shuntwright::recording {
+
+namespace {
+
+constexpr std::uint64_t kRowsAtATime = 4096;
+
+void addNumber(std::string& line, double value) {
+  if (!std::isfinite(value)) return;
+  char text[40];
+  const auto end = std::to_chars(text, text + sizeof text, value, std::chars_format::general, 9).ptr;
+  line.append(text, end);
+}
+
+Result<std::size_t> chosen(const Reader& reader, const std::string& name) {
+  const auto& devices = reader.devices();
+  std::string all;
+  for (std::size_t k = 0; k < devices.size(); ++k) {
+    if (devices[k].name == name) return k;
+    all += (all.empty() ? "" : ", ") + devices[k].name;
+  }
+  if (name.empty() && devices.size() == 1) return std::size_t{0};
+  if (name.empty()) {
+    return fail(ErrorCode::bad_use, "the recording has several devices with clocks of their own", {},
+                "name one with --device: " + all);
+  }
+  return fail(ErrorCode::not_found, "the recording has no device " + name, {}, "it has: " + all);
+}
+
+}  // namespace
+
+std::string csvField(const std::string& text) {
+  if (text.find_first_of(",\"\r\n") == std::string::npos) return text;
+  std::string quoted = "\"";
+  for (const char c : text) {
+    if (c == '"') quoted += '"';
+    quoted += c;
+  }
+  return quoted + '"';
+}
+
+Result<void> writeCsv(const Reader& reader, const CsvOptions& options, std::ostream& out) {
+  auto index = chosen(reader, options.device);
+  if (!index) return std::unexpected(std::move(index.error()));
+  const auto& device = reader.devices()[*index];
+  const std::size_t columns = device.channels.size();
+
+  std::string line = "time,seconds";
+  for (const auto& c : device.channels) line += "," + csvField(c.name + " [" + c.unit + "]");
+  if (options.raw) {
+    for (const auto& c : device.channels) line += "," + csvField(c.name + " raw [mV/V]");
+  }
+  for (const auto& c : device.channels) line += "," + csvField(c.name + " flags");
+  out << line << "\r\n";
+
+  Instant start;
+  for (std::uint64_t first = 0; first < reader.rows(*index); first += kRowsAtATime) {
+    auto rows = reader.read(*index, first, std::min(kRowsAtATime, reader.rows(*index) - first));
+    if (!rows) return std::unexpected(std::move(rows.error()));
+    if (first == 0 && !rows->time.empty()) start = rows->time.front();
+    for (std::size_t r = 0; r < rows->time.size(); ++r) {
+      line = rfc3339(rows->time[r]) + ",";
+      addNumber(line, seconds(rows->time[r] - start));
+      for (std::size_t k = 0; k < columns; ++k) {
+        line += ',';
+        addNumber(line, rows->corrected[r * columns + k]);
+      }
+      for (std::size_t k = 0; options.raw && k < columns; ++k) {
+        line += ',';
+        addNumber(line, 1e3 * rows->ratio[r * columns + k]);
+      }
+      for (std::size_t k = 0; k < columns; ++k) line += "," + std::to_string(int{rows->flags[r * columns + k]});
+      out << line << "\r\n";
+    }
+  }
+  return {};
+}
+
+}  // namespace shuntwright::recording
