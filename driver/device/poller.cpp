@@ -35,9 +35,13 @@ Task<void> Poller::start() {
 
 Task<void> Poller::stop() {
   auto self = shared_from_this();
+  halt();
+  while (running_) co_await changed_.wait();
+}
+
+void Poller::halt() {
   wanted_ = false;
   changed_.notifyAll();
-  while (running_) co_await changed_.wait();
 }
 
 Task<void> Poller::run() {

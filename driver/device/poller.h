@@ -20,6 +20,8 @@ class Poller : public std::enable_shared_from_this<Poller> {
   Task<void> start();
   /// Ends it; awaits a reading that is under way.
   Task<void> stop();
+  /// Ends it without awaiting anything.
+  void halt();
 
   /// The last reading that failed, once.
   std::optional<Error> takeError() { return std::exchange(error_, std::nullopt); }

@@ -235,6 +235,7 @@ Task<Result<void>> TextDevice::stop() {
 
 void TextDevice::close() {
   running_ = false;
+  if (poller_) poller_->halt();
   connection_->close();
 }
 
