@@ -21,9 +21,7 @@ struct Session {
 
 /// Where a session stands. Shared with pending reads.
 struct Playing {
-  explicit Playing(std::shared_ptr<const Session> what, Instant opened)
-      : session(std::move(what)), last(opened) {
-    lastOffset = session->events.front().offset;
+  explicit Playing(std::shared_ptr<const Session> what, Instant opened) : session(std::move(what)) {
     times.assign(session->events.size(), Instant::max());
     times.front() = opened;
   }
