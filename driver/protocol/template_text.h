@@ -21,7 +21,7 @@ struct Value {
 /// width and base say. Errors: bad_use when a field has no value or a value does not suit its field.
 Result<std::string> render(const description::TextTemplate& text, std::span<const Value> values);
 
-/// What a template found in a line. The views point into the line.
+/// What a template found in a line. Views point into the line, and into the template.
 class Fields {
  public:
   struct Field {
@@ -47,5 +47,6 @@ class Fields {
 /// allocating. A field takes the shortest text up to the next literal, the last one the rest of the line;
 /// decimal and hexadecimal fields take digits only. Lists are not looked into.
 bool match(const description::TextTemplate& text, std::string_view line, Fields& fields);
+bool match(const description::TextTemplate&& text, std::string_view line, Fields& fields) = delete;
 
 }  // namespace shuntwright::protocol
