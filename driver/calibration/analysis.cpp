@@ -211,7 +211,9 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
       result.zeroExpandedUncertainty = studentFactor(std::numeric_limits<double>::infinity()) * *u;
     }
   }
-  judge(result, readings, rack.limits, slope);
+  // Limits in microstrain speak of strain gauges; for a transducer they are taken as the indicated strain of a
+  // quarter bridge of factor 2.
+  judge(result, readings, rack.limits, channel.transducer ? 0.5 : slope);
   if (trouble) {
     result.findings.push_back({"no-solution", trouble->message, trouble->remedy});
     result.verdict = Verdict::fail;

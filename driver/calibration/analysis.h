@@ -34,7 +34,7 @@ ChannelResult analyse(const description::Rack& rack, const description::Channel&
                       const ChannelReadings& readings);
 
 /// Findings and verdict against the rack's limits; called by analyse once the figures are there.
-/// @param slope_per_strain  dr/de, to turn ratios into strain.
+/// @param slope_per_strain  dr/de, to turn ratios into the strain that the limits speak of.
 void judge(ChannelResult& result, const ChannelReadings& readings, const description::Limits& limits,
            double slope_per_strain);
 

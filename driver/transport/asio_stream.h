@@ -44,7 +44,8 @@ Task<IoOutcome> withDeadline(Clock& clock, Instant deadline, Start start) {
   auto initiate = [&clock, deadline, start](auto handler) mutable {
     auto operation = std::make_shared<Operation>();
     auto slot = asio::get_associated_cancellation_slot(handler);
-    operation->handler = std::move(handler);
+    // Asio 1.81's move assignment copies; swap does not.
+    decltype(operation->handler)(std::move(handler)).swap(operation->handler);
     const std::weak_ptr<Operation> weak = operation;
     if (slot.is_connected()) {
       slot.assign([weak](asio::cancellation_type type) {

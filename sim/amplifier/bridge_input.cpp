@@ -1,0 +1,78 @@
+#include "sim/amplifier/bridge_input.h"
+
+#include <cmath>
+#include <numbers>
+
+namespace shuntwright::sim {
+
+using namespace units;
+
+namespace {
+constexpr Nanoseconds kTick = std::chrono::milliseconds(100);
+}
+
+BridgeInput::BridgeInput(TrueChannel channel, const Specimen& specimen, const LoadClock& clock,
+                         const description::Inputs& inputs, const Imperfections& imperfections,
+                         const ChannelFaults& faults, Random random)
+    : channel_(std::move(channel)),
+      specimen_(&specimen),
+      clock_(&clock),
+      imperfections_(imperfections),
+      faults_(faults),
+      random_(random),
+      span_(1 + random_.uniform(-1, 1) * imperfections.spanTolerance),
+      offset_(random_.uniform(-1, 1) * imperfections.offset.in(volt_per_volt)),
+      driftPhase_(random_.uniform(0, 2 * std::numbers::pi)),
+      driftPeriod_s_(random_.uniform(600, 3600)),
+      mainsPhase_(random_.uniform(0, 2 * std::numbers::pi)),
+      // A real filter is not quite the one of the data sheet.
+      timeConstant_s_(seconds(inputs.filterTimeConstant) * random_.uniform(0.9, 1.05)),
+      last_(clock.start),
+      nextRefresh_(clock.start) {}
+
+double BridgeInput::strainAt(Instant when) const {
+  const double time_s = seconds(when - clock_->start);
+  const double load_s = when < clock_->loadStart ? -1 : seconds(when - clock_->loadStart);
+  return specimen_->strainOf(channel_.described(), load_s, time_s) + left_;
+}
+
+double BridgeInput::trueRatioAt(Instant when) const {
+  return channel_.ratio(strainAt(when), channel_.leadWarming_K(seconds(when - clock_->start)));
+}
+
+void BridgeInput::refresh(Instant now) {
+  input_ = trueRatioAt(now);
+  drift_ = imperfections_.drift.in(volt_per_volt) *
+           std::sin(2 * std::numbers::pi * seconds(now - clock_->start) / driftPeriod_s_ + driftPhase_);
+  nextRefresh_ = now + kTick;
+  if (!started_) {
+    started_ = true;
+    filtered_ = input_;
+    last_ = now;
+  }
+}
+
+void BridgeInput::touch(Instant when) {
+  if (!started_) refresh(when);
+  const double passed_s = seconds(when - last_);
+  if (passed_s > 0) {
+    filtered_ = timeConstant_s_ > 0 ? input_ + (filtered_ - input_) * std::exp(-passed_s / timeConstant_s_) : input_;
+    last_ = when;
+  }
+}
+
+void BridgeInput::contactChanged(Instant when, bool closed) {
+  if (closed) left_ += faults_.noReturn.in(strain);
+  refresh(when);
+}
+
+double BridgeInput::sample(Instant now) {
+  touch(now);
+  if (now >= nextRefresh_) refresh(now);
+  const double noise = imperfections_.noise.in(volt_per_volt) * faults_.noiseScale * random_.normal();
+  const double mains = imperfections_.mains.in(volt_per_volt) *
+                       std::sin(2 * std::numbers::pi * 50 * seconds(now - clock_->start) + mainsPhase_);
+  return span_ * filtered_ + offset_ + drift_ + noise + mains;
+}
+
+}  // namespace shuntwright::sim

@@ -1,0 +1,56 @@
+#include "sim/physics/specimen.h"
+
+#include <algorithm>
+#include <cmath>
+#include <numbers>
+
+namespace shuntwright::sim {
+
+using namespace units;
+
+double loadPart(const Scenario& scenario, double time_s) {
+  if (time_s <= 0) return 0;
+  const double ramp_s = seconds(scenario.ramp), hold_s = seconds(scenario.hold);
+  double from = 0;
+  for (const double level : scenario.levels) {
+    if (time_s < ramp_s) return from + (level - from) * time_s / ramp_s;
+    time_s -= ramp_s;
+    if (time_s < hold_s) return level;
+    time_s -= hold_s;
+    from = level;
+  }
+  return from;
+}
+
+double beamStrain(const Beam& beam, const GaugePlace& place, Force load) {
+  const double length_m = beam.span.in(metre);
+  const double x_m = std::clamp(place.alongBeam.in(metre), 0.0, length_m);
+  const double moment_Nm = load.in(newton) / 2 * std::min(x_m, length_m - x_m);
+  const double axial = moment_Nm * place.fibre.in(metre) / (beam.modulus_GPa * 1e9 * beam.secondMoment_m4);
+  const double angle = place.angle_deg * std::numbers::pi / 180;
+  const double cosine = std::cos(angle), sine = std::sin(angle);
+  return axial * (cosine * cosine - beam.poisson * sine * sine);
+}
+
+Specimen::Specimen(const description::Rack& rack, const Scenario& scenario, Random random) : scenario_(scenario) {
+  for (const auto& channel : rack.channels) {
+    const double share = random.uniform(0.8, 1.0);
+    followers_[channel.name] = channel.expected ? share * channel.expected->in(strain) : share * 500e-6;
+  }
+}
+
+double Specimen::strainOf(const description::Channel& channel, double loadTime_s, double time_s) const {
+  const double part = loadPart(scenario_, loadTime_s);
+  if (channel.transducer) {
+    const auto& sheet = *channel.transducer;
+    // A thermometer sees the hall warm up; anything else sees the load.
+    if (sheet.unit == "degC") return (21 + 2 * (1 - std::exp(-std::max(0.0, time_s) / 900))) / sheet.ratedValue;
+    return part * scenario_.maxLoad.in(sheet.unit == "N" ? newton : kilonewton) / sheet.ratedValue;
+  }
+  if (const auto place = scenario_.places.find(channel.name); place != scenario_.places.end()) {
+    return beamStrain(scenario_.beam, place->second, part * scenario_.maxLoad);
+  }
+  return part * followers_.at(channel.name);
+}
+
+}  // namespace shuntwright::sim

@@ -1,0 +1,33 @@
+#pragma once
+
+#include <string>
+
+#include "driver/core/clock.h"
+#include "driver/core/random.h"
+#include "driver/description/rack.h"
+#include "sim/fault/scenario.h"
+
+namespace shuntwright::sim {
+
+/// The load at a time since the load test began: straight ramps between held levels, 0 before and after.
+double loadPart(const Scenario& scenario, double seconds);  ///< of the largest load, 0 to 1
+
+/// Strain along the beam's axis of a simply supported beam with a load F at mid-span, by bending theory:
+/// M(x) = F x / 2 for x <= L/2 (mirrored beyond), e = M c / (E I); at an angle a to the axis, with the
+/// transverse strain -nu e: e(a) = e (cos^2 a - nu sin^2 a).
+double beamStrain(const Beam& beam, const GaugePlace& place, units::Force load);
+
+/// What a channel's gauge sees: strain, or the fraction of a transducer's rated value.
+class Specimen {
+ public:
+  Specimen(const description::Rack& rack, const Scenario& scenario, Random random);
+  /// @param loadTime_s  since the load test began; negative: it has not
+  /// @param time_s      since the start of everything
+  double strainOf(const description::Channel& channel, double loadTime_s, double time_s) const;
+
+ private:
+  const Scenario scenario_;
+  std::map<std::string, double> followers_;  ///< channels without a place: strain at full load
+};
+
+}  // namespace shuntwright::sim

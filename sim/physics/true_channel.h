@@ -1,0 +1,52 @@
+#pragma once
+
+#include <array>
+#include <vector>
+
+#include "driver/core/random.h"
+#include "driver/description/rack.h"
+#include "sim/fault/scenario.h"
+
+namespace shuntwright::sim {
+
+/// A shunt as it really is: its resistor, and whether its relay's contact is closed.
+struct TrueShunt {
+  description::Shunt described;
+  double resistor_ohm = 0;
+  bool closed = false;
+  double contact_ohm = 0;
+};
+
+/// One channel's circuit as it really is, drawn from a random source about what rack and profile state.
+class TrueChannel {
+ public:
+  TrueChannel(const description::Rack& rack, const description::Channel& channel, const Imperfections& imperfections,
+              const ChannelFaults& faults, Random random);
+
+  const description::Channel& described() const { return *channel_; }
+  std::vector<TrueShunt>& shunts() { return shunts_; }
+  const std::vector<TrueShunt>& shunts() const { return shunts_; }
+  double gaugeFactor() const { return gaugeFactor_; }
+  double gauge_ohm() const { return arms_[0]; }
+
+  /// Ratio at the amplifier's terminals (V/V), by node voltages.
+  /// @param strain         at the gauge (fraction of rated value for a transducer)
+  /// @param leadsWarmer_K  by how much the leads are warmer than the rack states
+  double ratio(double strain, double leadsWarmer_K) const;
+
+  /// The leads' temperature wander at a time since the start: slow, and within the stated tolerance.
+  double leadWarming_K(double seconds) const;
+
+ private:
+  const description::Channel* channel_;
+  std::array<double, 4> arms_{};            ///< ohm, unstrained
+  std::array<double, 4> relativePerStrain_{};
+  std::array<double, description::kTerminals> leads_{};  ///< ohm at the stated temperature
+  double inputResistance_ohm_ = 1e9;
+  double excitationSeries_ohm_ = 0;
+  double gaugeFactor_ = 2;
+  double warmStart_K_ = 0, warmEnd_K_ = 0, warmTime_s_ = 600;
+  std::vector<TrueShunt> shunts_;
+};
+
+}  // namespace shuntwright::sim
