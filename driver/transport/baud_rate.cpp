@@ -18,4 +18,10 @@ std::error_code setBaudRate(int descriptor, int baud) {
   return {};
 }
 
+std::optional<int> baudRate(int descriptor) {
+  struct termios2 settings {};
+  if (ioctl(descriptor, TCGETS2, &settings) != 0) return std::nullopt;
+  return static_cast<int>(settings.c_ospeed);
+}
+
 }  // namespace shuntwright::transport
