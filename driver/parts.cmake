@@ -35,6 +35,10 @@ if(SHUNTWRIGHT_SANITIZE)
   endif()
 endif()
 
+if(SHUNTWRIGHT_FUZZ)
+  target_compile_options(shuntwright_flags INTERFACE -fsanitize=fuzzer-no-link)
+endif()
+
 # Boost is used header-only, toml++ and spdlog in their compiled form.
 add_library(shuntwright_asio INTERFACE)
 target_compile_definitions(shuntwright_asio INTERFACE BOOST_ASIO_SEPARATE_COMPILATION
