@@ -84,7 +84,7 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
   }
   if (imperfections.leadsWarm) {
     warmStart_K_ = random.uniform(-wander_K, wander_K);
-    warmEnd_K_ = random.uniform(-wander_K, wander_K);
+    warmEnd_K_ = warmStart_K_ + random.uniform(-wander_K, wander_K);
     warmTime_s_ = random.uniform(300, 1200);
   }
   for (const auto& shunt : channel.shunts) {

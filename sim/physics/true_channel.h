@@ -34,7 +34,8 @@ class TrueChannel {
   /// @param leadsWarmer_K  by how much the leads are warmer than the rack states
   double ratio(double strain, double leadsWarmer_K) const;
 
-  /// The leads' temperature wander at a time since the start: slow, and within the stated tolerance.
+  /// By how much the leads are warmer than stated, at a time since the start: they begin anywhere within the
+  /// stated tolerance and settle exponentially up to as much away from there.
   double leadWarming_K(double seconds) const;
 
  private:

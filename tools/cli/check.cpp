@@ -1,0 +1,124 @@
+#include <CLI/CLI.hpp>
+#include <boost/json/array.hpp>
+#include <boost/json/object.hpp>
+#include <boost/json/serialize.hpp>
+#include <ostream>
+
+#include "driver/description/load.h"
+#include "driver/rack/prediction.h"
+#include "tools/cli/command.h"
+
+namespace shuntwright::cli {
+
+namespace {
+
+namespace json = boost::json;
+using namespace units;
+
+json::array problemsJson(const description::Diagnostics& diagnostics) {
+  json::array out;
+  for (const auto& p : diagnostics.problems()) {
+    json::object o;
+    o["file"] = p.place.file;
+    o["line"] = p.place.line > 0 ? json::value(p.place.line) : json::value(nullptr);
+    o["column"] = p.place.column > 0 ? json::value(p.place.column) : json::value(nullptr);
+    o["severity"] = p.severity == description::Severity::error ? "error" : "warning";
+    o["message"] = p.message;
+    o["remedy"] = p.remedy.empty() ? json::value(nullptr) : json::value(p.remedy);
+    out.push_back(std::move(o));
+  }
+  return out;
+}
+
+json::object channelJson(const rack::ChannelPrediction& channel) {
+  json::object o;
+  o["name"] = channel.name;
+  o["circuit"] = channel.circuit;
+  json::array shunts;
+  for (const auto& shunt : channel.shunts) {
+    json::object s;
+    s["name"] = shunt.name;
+    s["predicted_before_mV_per_V"] = shunt.step.before.in(millivolt_per_volt);
+    s["predicted_step_mV_per_V"] = shunt.step.step.in(millivolt_per_volt);
+    s["simulated_microstrain"] = shunt.step.simulated.in(microstrain);
+    s["step_lead_percent_per_ohm"] = shunt.step.stepPercentPerOhm;
+    s["strain_lead_percent_per_ohm"] = shunt.step.strainPercentPerOhm;
+    s["carries_lead_loss"] = shunt.step.carriesLeadLoss;
+    shunts.push_back(std::move(s));
+  }
+  o["shunts"] = std::move(shunts);
+  return o;
+}
+
+class Check final : public Command {
+ public:
+  std::string name() const override { return "check"; }
+  std::string summary() const override {
+    return "Validates profiles and racks and shows what each shunt is predicted to do; touches no hardware";
+  }
+  std::string example() const override { return "shuntwright check profiles/racks/gantry_beam.toml"; }
+  void configure(CLI::App& app) override {
+    app.add_option("FILE", files_, "Profiles and racks (TOML)")->required();
+  }
+
+  int run(const Console& console) override {
+    description::Diagnostics diagnostics;
+    const auto read = description::diskReader();
+    std::vector<rack::ChannelPrediction> channels;
+    for (const auto& file : files_) {
+      const auto text = read(file);
+      if (!text) {
+        diagnostics.error(Place{file}, "the file cannot be read", "check the path");
+        continue;
+      }
+      if (description::kindOfFile(*text) == "profile") {
+        (void)description::loadProfile(file, read, diagnostics);
+        continue;
+      }
+      auto rack = description::loadRack(file, read, diagnostics);
+      if (!rack) continue;
+      auto predicted = rack::predict(*rack, diagnostics);
+      std::move(predicted.begin(), predicted.end(), std::back_inserter(channels));
+    }
+    if (console.json) {
+      json::object o;
+      o["ok"] = diagnostics.ok();
+      o["problems"] = problemsJson(diagnostics);
+      json::array list;
+      for (const auto& channel : channels) list.push_back(channelJson(channel));
+      o["channels"] = std::move(list);
+      console.out << json::serialize(o) << '\n';
+    } else {
+      console.err << diagnostics.render(console.colour && console.errIsTerminal);
+      print(console, channels);
+      if (diagnostics.ok()) console.out << console.good("ok") << '\n';
+    }
+    return diagnostics.ok() ? kPassed : kBadUse;
+  }
+
+ private:
+  static void print(const Console& console, const std::vector<rack::ChannelPrediction>& channels) {
+    if (channels.empty()) return;
+    using A = Table::Align;
+    Table table({{"channel", A::left}, {"circuit", A::left}, {"shunt", A::left}, {"before mV/V"}, {"step mV/V"},
+                 {"simulates \xC2\xB5\xCE\xB5"}, {"step %/ohm"}, {"strain %/ohm"}, {"carries lead loss", A::left}});
+    for (const auto& channel : channels) {
+      if (channel.shunts.empty()) table.row({channel.name, channel.circuit, "none"});
+      for (const auto& shunt : channel.shunts) {
+        const auto& s = shunt.step;
+        table.row({channel.name, channel.circuit, shunt.name, fixed(s.before.in(millivolt_per_volt), 5),
+                   fixed(s.step.in(millivolt_per_volt), 6), fixed(s.simulated.in(microstrain), 1),
+                   fixed(s.stepPercentPerOhm, 4), fixed(s.strainPercentPerOhm, 4), s.carriesLeadLoss ? "yes" : "no"});
+      }
+    }
+    table.print(console);
+  }
+
+  std::vector<std::string> files_;
+};
+
+}  // namespace
+
+std::unique_ptr<Command> makeCheck() { return std::make_unique<Check>(); }
+
+}  // namespace shuntwright::cli

@@ -1,0 +1,225 @@
+#include <unistd.h>
+
+#include <CLI/CLI.hpp>
+#include <boost/asio/any_io_executor.hpp>
+#include <boost/asio/awaitable.hpp>
+#include <boost/asio/co_spawn.hpp>
+#include <boost/asio/posix/stream_descriptor.hpp>
+#include <boost/asio/read_until.hpp>
+#include <boost/asio/streambuf.hpp>
+#include <boost/asio/this_coro.hpp>
+#include <boost/json/array.hpp>
+#include <boost/json/object.hpp>
+#include <boost/json/serialize.hpp>
+#include <istream>
+#include <ostream>
+
+#include "driver/calibration/record_json.h"
+#include "driver/recording/load_steps.h"
+#include "tools/cli/bench_session.h"
+#include "tools/cli/command.h"
+#include "tools/cli/recording_session.h"
+
+namespace shuntwright::cli {
+
+namespace {
+
+namespace asio = boost::asio;
+namespace json = boost::json;
+
+/// Lines typed while recording: "b LABEL" begins a hold, "e" ends it, "q" ends the recording, anything else is a
+/// mark.
+class Keyboard : public std::enable_shared_from_this<Keyboard> {
+ public:
+  Keyboard(asio::any_io_executor executor, RecordingSession& session, bool& quit)
+      : input_(executor, ::dup(STDIN_FILENO)), session_(session), quit_(quit) {}
+
+  void listen() {
+    asio::async_read_until(input_, buffer_, '\n', [self = shared_from_this()](boost::system::error_code ec, std::size_t) {
+      if (ec) return;
+      std::istream in(&self->buffer_);
+      std::string line;
+      std::getline(in, line);
+      self->take(line);
+      self->listen();
+    });
+  }
+  void stop() {
+    boost::system::error_code ignored;
+    input_.close(ignored);
+  }
+
+ private:
+  void take(const std::string& line) {
+    if (line == "q") {
+      quit_ = true;
+    } else if (line == "e") {
+      (void)session_.mark(recording::kStepEnd, "");
+    } else if (line.starts_with("b ")) {
+      (void)session_.mark(recording::kStepBegin, line.substr(2));
+    } else {
+      (void)session_.mark("mark", line);
+    }
+  }
+
+  asio::posix::stream_descriptor input_;
+  asio::streambuf buffer_;
+  RecordingSession& session_;
+  bool& quit_;
+};
+
+/// The live table: redrawn in place on a terminal, nothing in a pipe.
+class LiveTable {
+ public:
+  explicit LiveTable(const Console& console) : console_(console) {}
+
+  void draw(const RecordingSession& session, double elapsed_s) {
+    if (!console_.errIsTerminal) return;
+    std::string text = lines_ > 0 ? "\x1b[" + std::to_string(lines_) + "A" : "";
+    lines_ = 0;
+    const auto line = [&](const std::string& what) {
+      text += what + "\x1b[K\n";
+      ++lines_;
+    };
+    line(fixed(elapsed_s, 1) + " s  " + std::to_string(session.rows()) + " rows  lost " + std::to_string(session.lost()) +
+         "  [b LABEL begin hold, e end hold, q quit, text mark]" +
+         (session.trouble().empty() ? "" : "  TROUBLE " + session.trouble()));
+    // Three channels a line keeps 32 of them on a small terminal.
+    std::string row;
+    int column = 0;
+    for (const auto& v : session.live()) {
+      char cell[64];
+      const char* mark = (v.flags & device::kSaturated)   ? "SAT"
+                         : (v.flags & device::kMissing)   ? "---"
+                         : (v.flags & device::kSwitching) ? "RLY"
+                         : v.calibrated                   ? ""
+                                                          : "nom";
+      std::snprintf(cell, sizeof cell, "%-6s %9.1f %-11s%-4s", v.channel.c_str(), static_cast<double>(v.value),
+                    v.unit.c_str(), mark);
+      row += cell;
+      if (++column == 3) {
+        line(row);
+        row.clear();
+        column = 0;
+      }
+    }
+    if (!row.empty()) line(row);
+    console_.err << text << std::flush;
+  }
+
+ private:
+  const Console& console_;
+  int lines_ = 0;
+};
+
+class Record final : public Command {
+ public:
+  std::string name() const override { return "record"; }
+  std::string summary() const override { return "Records live corrected strain to a file, with a live table and marks from the keyboard"; }
+  std::string example() const override { return "shuntwright record profiles/racks/gantry_beam.toml --out run.h5 --duration 60 --isolated"; }
+  void configure(CLI::App& app) override {
+    bench_.addTo(app);
+    app.add_option("--out", out_, "The recording (HDF5); never overwritten")->required();
+    app.add_option("--calibration", calibration_, "A calibration record (JSON); the rack's latest when left out");
+    app.add_option("--duration", duration_s_, "Stop after this many seconds");
+    app.add_flag("--isolated", isolated_, "Confirms that the load path is isolated while relays are opened and rates set");
+  }
+
+  int run(const Console& console) override {
+    auto rack = loadRackFor(console, bench_.rackFile);
+    if (!rack) return kBadUse;
+    const std::string file = calibration_.empty() ? calibrationPath(*rack) : calibration_;
+    auto text = readFile(file);
+    if (!text) {
+      return console.fail(Error(ErrorCode::not_found, "no calibration of this rack is in force", file,
+                                "run `shuntwright calibrate " + bench_.rackFile + "` first, or name one with --calibration"));
+    }
+    auto record = calibration::parseRecordJson(*text, file);
+    if (!record) return console.fail(record.error());
+    if (!record->passed()) console.err << "note: calibration " << record->id << " did not pass for every channel\n";
+    auto permit = askForPermit(console, *rack, isolated_);
+    if (!permit) return console.fail(permit.error());
+    Job job{console, *rack, *record, *permit, out_, duration_s_};
+    return runOnBench(console, *rack, bench_, true, [&job](SessionContext context) -> Task<Result<int>> {
+      return work(context, &job);
+    });
+  }
+
+ private:
+  struct Job {
+    const Console& console;
+    const description::Rack& rack;
+    const calibration::Record& record;
+    rack::LoadPathPermit permit;
+    std::string out;
+    double duration_s;
+  };
+
+  static Task<Result<int>> work(SessionContext context, Job* job) {
+    if (auto ready = co_await context.live.prepare(job->permit); !ready) co_return std::unexpected(std::move(ready.error()));
+    Clock& clock = context.live.clock();
+    auto session = RecordingSession::begin(job->rack, job->record, job->out, clock);
+    if (!session) co_return std::unexpected(std::move(session.error()));
+    auto executor = co_await asio::this_coro::executor;
+    bool quit = false;
+    std::shared_ptr<Keyboard> keyboard;
+    if (job->console.interactive) {
+      keyboard = std::make_shared<Keyboard>(executor, **session, quit);
+      keyboard->listen();
+    }
+    LiveTable table(job->console);
+    const Instant start = clock.now();
+    Instant nextDraw = start;
+    const std::function<bool()> stop = [&] {
+      const Instant now = clock.now();
+      if (now >= nextDraw) {
+        table.draw(**session, seconds(now - start));
+        nextDraw = now + std::chrono::milliseconds(250);
+      }
+      return quit || context.stopAsked || (job->duration_s > 0 && seconds(now - start) >= job->duration_s);
+    };
+    auto done = co_await (*session)->run(context.live, stop);
+    if (keyboard) keyboard->stop();
+    table.draw(**session, seconds(clock.now() - start));
+    if (!done) co_return std::unexpected(std::move(done.error()));
+    if (auto finished = (*session)->finish(); !finished) co_return std::unexpected(std::move(finished.error()));
+    report(job->console, **session, job->record.id);
+    co_return kPassed;
+  }
+
+  static void report(const Console& console, const RecordingSession& session, const std::string& calibration) {
+    if (console.json) {
+      json::object o;
+      o["file"] = session.path();
+      o["calibration_id"] = calibration;
+      o["rows"] = session.rows();
+      o["lost"] = session.lost();
+      json::array channels;
+      for (const auto& v : session.live()) {
+        json::object c;
+        c["name"] = v.channel;
+        c["unit"] = v.unit;
+        c["calibrated"] = v.calibrated;
+        c["samples"] = v.samples;
+        c["least"] = v.least;
+        c["most"] = v.most;
+        channels.push_back(std::move(c));
+      }
+      o["channels"] = std::move(channels);
+      console.out << json::serialize(o) << '\n';
+    } else {
+      console.out << "recorded " << session.rows() << " rows to " << session.path() << ", lost " << session.lost() << '\n';
+    }
+  }
+
+  BenchOptions bench_;
+  std::string out_, calibration_;
+  double duration_s_ = 0;
+  bool isolated_ = false;
+};
+
+}  // namespace
+
+std::unique_ptr<Command> makeRecord() { return std::make_unique<Record>(); }
+
+}  // namespace shuntwright::cli

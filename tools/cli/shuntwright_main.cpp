@@ -1,0 +1,3 @@
+#include "tools/cli/command.h"
+
+int main(int argc, char** argv) { return shuntwright::cli::runProgram(argc, argv); }
