@@ -1,8 +1,10 @@
 #include "driver/protocol/values.h"
 
 #include <algorithm>
+#include <bit>
 #include <charconv>
 #include <cmath>
+#include <cstring>
 #include <limits>
 
 #include "driver/core/bytes.h"
@@ -15,9 +17,63 @@ namespace {
 constexpr double kPowers[] = {1e0,  1e1,  1e2,  1e3,  1e4,  1e5,  1e6,  1e7,  1e8,  1e9,  1e10, 1e11,
                               1e12, 1e13, 1e14, 1e15, 1e16, 1e17, 1e18, 1e19, 1e20, 1e21, 1e22};
 constexpr std::uint64_t kExact = std::uint64_t{1} << 53;
+constexpr std::size_t kFewDigits = 18;  // digits that always fit into 64 bits
 
 bool isDigit(char c) {
   return static_cast<unsigned char>(c - '0') < 10;
+}
+
+constexpr std::uint64_t kWholePowers[] = {1, 10, 100, 1000, 10'000, 100'000, 1'000'000, 10'000'000};
+
+/// Appends the digits at `c` to `digits` and gives how many there were; more than 18 in all overflow it.
+[[gnu::always_inline]] inline std::size_t takeDigits(const char*& c, const char* end, std::uint64_t& digits) {
+  const char* const first = c;
+  if constexpr (std::endian::native == std::endian::little) {
+    // Eight characters at once: the digits before the first other character, moved up so that zeros stand
+    // before them, are added in pairs, fours and eights.
+    if (end - c >= 8) {
+      std::uint64_t word;
+      std::memcpy(&word, c, 8);
+      word ^= 0x3030303030303030u;
+      const std::uint64_t others = (word | (word + 0x7676767676767676u)) & 0x8080808080808080u;
+      const int count = others == 0 ? 8 : std::countr_zero(others) / 8;
+      if (count < 8) {
+        if (count == 0) return 0;
+        word <<= 8 * (8 - count);
+        word = word * 10 + (word >> 8);
+        word = (((word & 0x000000FF000000FFu) * 0x000F424000000064u) +
+                (((word >> 16) & 0x000000FF000000FFu) * 0x0000271000000001u)) >>
+               32;
+        digits = digits * kWholePowers[count] + word;
+        c += count;
+        return static_cast<std::size_t>(count);
+      }
+    }
+  }
+  while (c != end && isDigit(*c)) digits = digits * 10 + static_cast<std::uint64_t>(*c++ - '0');
+  return static_cast<std::size_t>(c - first);
+}
+
+/// Sign, digits and a point, few enough digits for a double to hold them exactly.
+struct ShortDecimal {
+  std::uint64_t digits = 0;
+  std::size_t decimals = 0;
+  bool negative = false;
+};
+
+[[gnu::always_inline]] inline bool readShortDecimal(const char*& p, const char* end, ShortDecimal& out) {
+  const char* c = p;
+  if (c != end && (*c == '-' || *c == '+')) out.negative = *c++ == '-';
+  std::size_t count = takeDigits(c, end, out.digits);
+  if (c != end && *c == '.') {
+    ++c;
+    out.decimals = takeDigits(c, end, out.digits);
+    count += out.decimals;
+  }
+  const bool exponent = c != end && (*c == 'e' || *c == 'E');
+  if (count == 0 || count > kFewDigits || out.digits > kExact || exponent) return false;
+  p = c;
+  return true;
 }
 
 bool readAnyDecimal(const char*& p, const char* end, double& value) {
@@ -66,35 +122,24 @@ double scaleOf(description::ValueUnit unit) {
 }  // namespace
 
 bool readDecimal(const char*& p, const char* end, double& value) {
-  // Sign, digits and a point, few enough digits: integer and power of ten are exact, so the one division is
-  // the only rounding and the result is the same as from_chars gives.
-  const char* c = p;
-  bool negative = false;
-  if (c != end && (*c == '-' || *c == '+')) negative = *c++ == '-';
-  std::uint64_t digits = 0;
-  const char* first = c;
-  while (c != end && isDigit(*c)) digits = digits * 10 + static_cast<std::uint64_t>(*c++ - '0');
-  std::size_t count = static_cast<std::size_t>(c - first);
-  std::size_t decimals = 0;
-  if (c != end && *c == '.') {
-    const char* point = ++c;
-    while (c != end && isDigit(*c)) digits = digits * 10 + static_cast<std::uint64_t>(*c++ - '0');
-    decimals = static_cast<std::size_t>(c - point);
-    count += decimals;
-  }
-  const bool exponent = c != end && (*c == 'e' || *c == 'E');
-  if (count == 0 || count > 18 || digits > kExact || exponent) return readAnyDecimal(p, end, value);
-  const double magnitude = static_cast<double>(digits) / kPowers[decimals];
-  value = negative ? -magnitude : magnitude;
-  p = c;
+  ShortDecimal number;
+  if (!readShortDecimal(p, end, number)) return readAnyDecimal(p, end, value);
+  // Integer and power of ten are exact, so the one division is the only rounding and the result is the same
+  // as from_chars gives.
+  const double magnitude = static_cast<double>(number.digits) / kPowers[number.decimals];
+  value = number.negative ? -magnitude : magnitude;
   return true;
 }
 
 ValueFormat::ValueFormat(const description::Inputs& inputs)
     : scale(scaleOf(inputs.gives)),
-      fullScale(static_cast<float>(inputs.fullScale.in(units::volt_per_volt))),
+      fullScale(inputs.fullScale > units::Ratio()
+                    ? static_cast<float>(inputs.fullScale.in(units::volt_per_volt))
+                    : std::numeric_limits<float>::infinity()),
       saturated(inputs.saturated),
       missing(inputs.missing) {
+  for (std::size_t decimals = 0; decimals < scales.size(); ++decimals)
+    scales[decimals] = scale / kPowers[decimals];
   for (const auto* words : {&saturated, &missing}) {
     for (const std::string& word : *words) {
       const char* p = word.data();
@@ -106,29 +151,39 @@ ValueFormat::ValueFormat(const description::Inputs& inputs)
 
 bool readValues(const ValueFormat& format, std::string_view list, std::string_view separator,
                 std::span<float> ratio, std::span<std::uint8_t> flags) {
+  if (separator.empty()) return false;
   const char* p = list.data();
   const char* const end = p + list.size();
-  const bool blanks = separator.empty() || separator.front() != ' ';
+  const bool blanks = separator.front() != ' ';
+  const auto skipBlanks = [&] {
+    while (blanks && p != end && *p == ' ') ++p;
+  };
+  const auto atSeparator = [&] {
+    return p != end && *p == separator.front() &&
+           (separator.size() == 1 ||
+            std::string_view(p, static_cast<std::size_t>(end - p)).starts_with(separator));
+  };
   for (std::size_t i = 0; i < ratio.size(); ++i) {
-    if (i > 0) {
-      if (static_cast<std::size_t>(end - p) < separator.size() ||
-          std::string_view(p, separator.size()) != separator) {
-        return false;
-      }
-      p += separator.size();
-    }
-    while (blanks && p != end && *p == ' ') ++p;
-    double value = 0;
+    skipBlanks();
     const char* const start = p;
-    const bool number = readDecimal(p, end, value);
-    while (blanks && p != end && *p == ' ') ++p;
-    const bool whole =
-        p == end || std::string_view(p, static_cast<std::size_t>(end - p)).starts_with(separator);
-    const bool isWord = number && format.numericWords && isListed(format, tokenAt(start, end, separator));
-    if (number && whole && !isWord) {
-      const float v = static_cast<float>(value * format.scale);
+    // One multiplication instead of division and scale: within 1e-15, far below the float's own rounding.
+    ShortDecimal decimal;
+    double value = 0;
+    bool number = readShortDecimal(p, end, decimal);
+    if (number) {
+      value = static_cast<double>(decimal.digits) * format.scales[decimal.decimals];
+      value = decimal.negative ? -value : value;
+    } else if (readAnyDecimal(p, end, value)) {
+      number = true;
+      value *= format.scale;
+    }
+    skipBlanks();
+    number = number && (p == end || atSeparator());
+    if (number && format.numericWords) number = !isListed(format, tokenAt(start, end, separator));
+    if (number) {
+      const float v = static_cast<float>(value);
       ratio[i] = v;
-      flags[i] = format.fullScale > 0 && std::fabs(v) >= format.fullScale ? kValueSaturated : 0;
+      flags[i] = std::fabs(v) >= format.fullScale ? kValueSaturated : 0;
     } else {
       const std::string_view word = tokenAt(start, end, separator);
       if (among(format.saturated, word)) {
@@ -139,8 +194,12 @@ bool readValues(const ValueFormat& format, std::string_view list, std::string_vi
         return false;
       }
       ratio[i] = std::numeric_limits<float>::quiet_NaN();
-      p = word.empty() ? start : word.data() + word.size();
-      while (blanks && p != end && *p == ' ') ++p;
+      p = word.data() + word.size();
+      skipBlanks();
+    }
+    if (i + 1 < ratio.size()) {
+      if (!atSeparator()) return false;
+      p += separator.size();
     }
   }
   return p == end;

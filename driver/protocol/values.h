@@ -1,5 +1,6 @@
 #pragma once
 
+#include <array>
 #include <cstddef>
 #include <cstdint>
 #include <span>
@@ -25,6 +26,7 @@ struct ValueFormat {
   explicit ValueFormat(const description::Inputs& inputs);
 
   double scale = 1;                    ///< V/V per unit as sent
+  std::array<double, 19> scales{};     ///< the same for 0 to 18 decimals: scale / 10^decimals
   float fullScale = 0;                 ///< V/V; a reading at or beyond it is saturated
   std::vector<std::string> saturated;  ///< words in place of a value
   std::vector<std::string> missing;
