@@ -1,0 +1,207 @@
+#include "sim/fault/scenario_file.h"
+
+#include <charconv>
+
+#include "driver/description/toml_reader.h"
+
+namespace shuntwright::sim {
+
+using description::Diagnostics;
+using description::Rack;
+using description::TableReader;
+using description::TomlNode;
+
+namespace {
+
+/// Reads the parts of a scenario; mistakes go to the diagnostics.
+class ScenarioReader {
+ public:
+  ScenarioReader(const Rack& rack, Diagnostics& diagnostics) : rack_(rack), diagnostics_(diagnostics) {}
+
+  Scenario read(const TomlNode& root) {
+    TableReader table(root, "the scenario", diagnostics_);
+    if (const auto* t = table.table("imperfections")) imperfections(*t);
+    if (const auto* t = table.table("load")) load(*t);
+    for (const auto* t : table.tables("gauge")) gauge(*t);
+    for (const auto* t : table.tables("fault")) fault(*t);
+    table.finish();
+    return std::move(scenario_);
+  }
+
+ private:
+  void imperfections(const TomlNode& node) {
+    TableReader t(node, "[imperfections]", diagnostics_);
+    auto& i = scenario_.imperfections;
+    const std::pair<const char*, double*> scales[] = {{"gauges", &i.gauges},       {"completions", &i.completions},
+                                                      {"leads", &i.leads},         {"resistors", &i.resistors},
+                                                      {"gauge_factors", &i.gaugeFactors}, {"contacts", &i.contacts}};
+    for (const auto& [key, value] : scales) t.take(key, *value, {"0", "100"});
+    t.take("leads_warm", i.leadsWarm);
+    units::Fraction span = i.spanTolerance * units::one;
+    if (t.take("span_tolerance", span, {"0 %", "50 %"})) i.spanTolerance = span.in(units::one);
+    t.take("offset", i.offset);
+    t.take("drift", i.drift);
+    t.take("noise", i.noise);
+    t.take("mains", i.mains);
+    t.take("answer_delay", i.answerDelay, {"0 s", "10 s"});
+    t.finish();
+  }
+
+  void load(const TomlNode& node) {
+    TableReader t(node, "[load]", diagnostics_);
+    t.take("largest", scenario_.maxLoad);
+    t.takeList("levels", scenario_.levels, {"0", "1"});
+    t.take("ramp", scenario_.ramp, {"0.1 s", "1 h"});
+    t.take("hold", scenario_.hold, {"0.1 s", "1 h"});
+    t.finish();
+  }
+
+  void gauge(const TomlNode& node) {
+    TableReader t(node, "[[gauge]]", diagnostics_);
+    std::string channel;
+    GaugePlace place;
+    if (t.need("channel", channel) && !rack_.channel(channel)) unknown(t, "channel", channel);
+    t.need("along", place.alongBeam);
+    t.need("fibre", place.fibre);
+    t.take("angle", place.angle_deg, {"-180", "180"});
+    t.finish();
+    scenario_.places[channel] = place;
+  }
+
+  void unknown(TableReader& t, const char* what, const std::string& name) {
+    const auto* entry = t.entry(what);
+    diagnostics_.error(entry ? entry->value.place : t.place(), std::string("the rack has no ") + what + " \"" + name + "\"",
+                       "name one of the rack's");
+  }
+
+  std::optional<description::RelayRef> relay(TableReader& t, const char* key) {
+    std::string text;
+    if (!t.need(key, text)) return std::nullopt;
+    const auto slash = text.rfind('/');
+    description::RelayRef ref;
+    const char* end = text.data() + text.size();
+    if (slash != std::string::npos) {
+      ref.device = text.substr(0, slash);
+      const auto parsed = std::from_chars(text.data() + slash + 1, end, ref.relay);
+      const auto* device = rack_.device(ref.device);
+      if (parsed.ptr == end && device && device->profile->relays) return ref;
+    }
+    unknown(t, key, text);
+    return std::nullopt;
+  }
+
+  ChannelFaults* channel(TableReader& t) {
+    std::string name;
+    if (!t.need("channel", name)) return nullptr;
+    if (!rack_.channel(name)) {
+      unknown(t, "channel", name);
+      return nullptr;
+    }
+    return &scenario_.channels[name];
+  }
+
+  DeviceFaults* device(TableReader& t) {
+    std::string name;
+    if (!t.need("device", name)) return nullptr;
+    if (!rack_.device(name)) {
+      unknown(t, "device", name);
+      return nullptr;
+    }
+    return &scenario_.devices[name];
+  }
+
+  enum class What {
+    relay_dead, relay_welded, relays_swapped, wrong_shunt, noisy, open_lead, saturated, no_zero_return,
+    mute, garbage, half_answer, error_answer, lost_frames, silent
+  };
+
+  void request(TableReader& t, DeviceFault::Kind kind) {
+    DeviceFaults* faults = device(t);
+    DeviceFault one;
+    one.kind = kind;
+    t.take("request", one.request);
+    t.take("from", one.from, {"1", ""});
+    t.take("count", one.count, {"1", ""});
+    if (faults) faults->requests.push_back(one);
+  }
+
+  void fault(const TomlNode& node) {
+    TableReader t(node, "[[fault]]", diagnostics_);
+    What what{};
+    const bool known = t.choose("what", what,
+                                {{"relay dead", What::relay_dead},
+                                 {"relay welded", What::relay_welded},
+                                 {"relays swapped", What::relays_swapped},
+                                 {"wrong shunt", What::wrong_shunt},
+                                 {"noisy", What::noisy},
+                                 {"open lead", What::open_lead},
+                                 {"saturated", What::saturated},
+                                 {"no zero return", What::no_zero_return},
+                                 {"mute", What::mute},
+                                 {"garbage", What::garbage},
+                                 {"half answer", What::half_answer},
+                                 {"error answer", What::error_answer},
+                                 {"lost frames", What::lost_frames},
+                                 {"silent", What::silent}});
+    if (!known) {
+      if (!t.has("what")) t.neededEntry("what", "what = \"relay dead\"");
+      return;
+    }
+    switch (what) {
+      case What::relay_dead:
+        if (auto r = relay(t, "relay")) scenario_.dead.insert(*r);
+        break;
+      case What::relay_welded:
+        if (auto r = relay(t, "relay")) scenario_.welded.insert(*r);
+        break;
+      case What::relays_swapped: {
+        auto a = relay(t, "relay"), b = relay(t, "with");
+        if (a && b) scenario_.swapped.emplace_back(*a, *b);
+        break;
+      }
+      case What::wrong_shunt:
+        if (auto* c = channel(t)) t.need("scale", c->shuntScale, {"0.01", "100"});
+        break;
+      case What::noisy:
+        if (auto* c = channel(t)) t.need("scale", c->noiseScale, {"0", "1e6"});
+        break;
+      case What::open_lead:
+        if (auto* c = channel(t)) c->openLead = true;
+        break;
+      case What::saturated:
+        if (auto* c = channel(t)) c->saturated = true;
+        break;
+      case What::no_zero_return:
+        if (auto* c = channel(t)) t.need("strain", c->noReturn);
+        break;
+      case What::mute: request(t, DeviceFault::Kind::mute); break;
+      case What::garbage: request(t, DeviceFault::Kind::garbage); break;
+      case What::half_answer: request(t, DeviceFault::Kind::half_answer); break;
+      case What::error_answer: request(t, DeviceFault::Kind::error_answer); break;
+      case What::lost_frames:
+        if (auto* d = device(t)) t.need("part", d->lostFrames, {"0", "1"});
+        break;
+      case What::silent:
+        if (auto* d = device(t)) {
+          Nanoseconds after{0};
+          if (t.need("after", after)) d->silentAfter = after;
+        }
+        break;
+    }
+    t.finish();
+  }
+
+  const Rack& rack_;
+  Diagnostics& diagnostics_;
+  Scenario scenario_;
+};
+
+}  // namespace
+
+Scenario parseScenario(std::string_view text, const std::string& file, const Rack& rack, Diagnostics& diagnostics) {
+  auto root = description::parseToml(text, file, diagnostics);
+  if (!root) return {};
+  return ScenarioReader(rack, diagnostics).read(*root);
+}
+
+}  // namespace shuntwright::sim
