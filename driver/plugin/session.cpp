@@ -1,0 +1,355 @@
+#include "driver/plugin/session.h"
+
+#include <boost/asio/any_io_executor.hpp>
+#include <boost/asio/awaitable.hpp>
+#include <boost/asio/co_spawn.hpp>
+#include <boost/asio/detached.hpp>
+#include <boost/asio/executor_work_guard.hpp>
+#include <boost/asio/io_context.hpp>
+#include <boost/asio/post.hpp>
+#include <chrono>
+#include <future>
+#include <limits>
+#include <map>
+#include <thread>
+
+#include "driver/calibration/record_json.h"
+#include "driver/description/load.h"
+#include "driver/rack/acquisition.h"
+#include "driver/rack/live_rack.h"
+#include "driver/transport/port_opener.h"
+#include "driver/transport/replay_stream.h"
+#include "driver/transport/trace.h"
+
+namespace shuntwright::plugin {
+
+namespace asio = boost::asio;
+
+namespace {
+constexpr std::size_t kQueuedSeconds = 10;
+
+Error notOpen() { return Error(ErrorCode::bad_use, "the session is not open", {}, "call open first"); }
+}  // namespace
+
+/// The session's thread and what lives on it.
+struct Session::Thread {
+  explicit Thread(const description::Rack& r) : rack(r) {}
+
+  const description::Rack& rack;
+  asio::io_context context;
+  std::unique_ptr<Clock> clock;
+  VirtualClock* virtualClock = nullptr;  ///< while replaying
+  std::unique_ptr<rack::RelayJournal> journal;
+  std::unique_ptr<rack::LiveRack> live;
+  std::map<std::string, correction::LiveCorrection> corrections;
+  std::thread worker;
+  std::atomic<bool> ending{false};
+
+  // Acquisition.
+  std::atomic<bool> stopWanted{false};
+  bool running = false;
+  std::future<Result<void>> acquisition;
+
+  // Samples on their way to the host.
+  std::mutex mutex;
+  std::condition_variable arrived;
+  std::condition_variable taken;
+  std::deque<std::unique_ptr<Block>> queue;
+  std::map<std::string, std::size_t> queuedFrames;
+  std::map<std::string, std::uint64_t> dropped;
+  std::optional<Error> acquisitionError;
+
+  void run() {
+    if (!virtualClock) {
+      auto work = asio::make_work_guard(context);
+      while (!ending) context.run_for(std::chrono::milliseconds(50));
+      return;
+    }
+    // In virtual time the thread runs while there is something to do and then waits for the next call.
+    while (!ending) {
+      context.restart();
+      bool busy = false;
+      while (context.poll() > 0) busy = true;
+      if (hold()) continue;
+      if (pending > 0 && virtualClock->advance()) busy = true;
+      if (!busy) std::this_thread::sleep_for(std::chrono::microseconds(200));
+    }
+  }
+
+  /// In virtual time nothing is dropped: the thread waits until the host has read.
+  bool hold() {
+    std::unique_lock lock(mutex);
+    if (queue.size() < 64 || stopWanted || ending) return false;
+    taken.wait_for(lock, std::chrono::milliseconds(20));
+    return true;
+  }
+
+  std::atomic<int> pending{0};
+
+  /// Runs a coroutine on the thread; the future is ready when it has ended. Exceptions become errors.
+  std::future<Result<void>> spawn(std::function<Task<Result<void>>()> body) {
+    auto promise = std::make_shared<std::promise<Result<void>>>();
+    auto future = promise->get_future();
+    ++pending;
+    struct Wrap {
+      static Task<void> run(std::function<Task<Result<void>>()> inner, std::shared_ptr<Result<void>> out) {
+        *out = co_await inner();
+      }
+    };
+    auto out = std::make_shared<Result<void>>();
+    asio::post(context, [this, promise, out, body = std::move(body)] {
+      asio::co_spawn(
+          context, [body, out]() -> Task<void> { return Wrap::run(body, out); },
+          [this, promise, out](std::exception_ptr e) {
+            --pending;
+            if (!e) {
+              promise->set_value(std::move(*out));
+              return;
+            }
+            try {
+              std::rethrow_exception(e);
+            } catch (const std::exception& error) {
+              promise->set_value(fail(ErrorCode::io, error.what()));
+            }
+          });
+    });
+    return future;
+  }
+
+  void push(const std::string& device, device::SampleBlock& samples) {
+    auto block = std::make_unique<Block>();
+    block->device = device;
+    block->samples = std::move(samples);
+    block->corrected.assign(block->samples.ratio.size(), std::numeric_limits<float>::quiet_NaN());
+    if (const auto found = corrections.find(device); found != corrections.end()) {
+      found->second.apply(block->samples, block->corrected);
+    }
+    block->lost = block->samples.lostBefore;
+    const double rate_Hz = rack::LiveRack::rateOf(*rack.device(device)).in(units::hertz);
+    const std::lock_guard lock(mutex);
+    block->lost += std::exchange(dropped[device], 0);
+    queuedFrames[device] += block->samples.frames();
+    queue.push_back(std::move(block));
+    if (!virtualClock) dropOldest(device, static_cast<std::size_t>(kQueuedSeconds * rate_Hz));
+    arrived.notify_all();
+  }
+
+  /// Keeps at most ten seconds of a device's samples; what is dropped is counted in the next block.
+  void dropOldest(const std::string& device, std::size_t most) {
+    auto it = queue.begin();
+    while (queuedFrames[device] > most && it != queue.end()) {
+      if ((*it)->device != device) {
+        ++it;
+        continue;
+      }
+      const std::size_t frames = (*it)->samples.frames();
+      queuedFrames[device] -= frames;
+      std::uint64_t gone = frames + (*it)->lost;
+      it = queue.erase(it);
+      for (auto next = it; next != queue.end(); ++next) {
+        if ((*next)->device != device) continue;
+        (*next)->lost += gone;
+        gone = 0;
+        break;
+      }
+      dropped[device] += gone;
+    }
+  }
+};
+
+Session::Session(SessionOptions options) : options_(std::move(options)) {}
+
+Session::~Session() {
+  if (!thread_) return;
+  if (thread_->worker.joinable()) {
+    (void)stop();
+    if (thread_->live && !thread_->live->relays().maybeClosed().empty()) (void)release();
+    Thread* t = thread_.get();
+    struct Close {
+      static Task<Result<void>> run(Thread* thread) {
+        if (thread->live) thread->live->close();
+        co_return Result<void>{};
+      }
+    };
+    t->spawn([t]() -> Task<Result<void>> { return Close::run(t); }).wait();
+    t->ending = true;
+    t->worker.join();
+  }
+}
+
+const description::Rack* Session::rack() const { return rack_ ? &*rack_ : nullptr; }
+
+Result<void> Session::open() {
+  description::Diagnostics diagnostics;
+  rack_ = description::loadRack(options_.rackFile, description::diskReader(), diagnostics);
+  if (!rack_) return fail(ErrorCode::bad_file, diagnostics.render(false));
+  thread_ = std::make_unique<Thread>(*rack_);
+  Thread& t = *thread_;
+  transport::Opener opener;
+  rack::LiveRackOptions liveOptions;
+  if (!options_.replayFile.empty()) {
+    auto trace = transport::loadTrace(options_.replayFile);
+    if (!trace) return std::unexpected(std::move(trace.error()));
+    auto clock = std::make_unique<VirtualClock>(trace->start);
+    t.virtualClock = clock.get();
+    t.clock = std::move(clock);
+    opener = transport::replayOpener(std::move(*trace), options_.replayFile, *t.clock);
+    t.journal = std::make_unique<rack::MemoryJournal>();
+  } else {
+    t.clock = std::make_unique<RealClock>(t.context);
+    opener = transport::portOpener(*t.clock);
+    liveOptions.lockFolder = options_.lockFolder;
+    if (options_.stateFolder.empty()) {
+      t.journal = std::make_unique<rack::MemoryJournal>();
+    } else {
+      auto journal = rack::FileJournal::open(options_.stateFolder + "/" + rack_->name + ".relays");
+      if (!journal) return std::unexpected(std::move(journal.error()));
+      t.journal = std::move(*journal);
+    }
+  }
+  t.worker = std::thread([&t] { t.run(); });
+  struct Open {
+    static Task<Result<void>> run(Thread* thread, transport::Opener with, rack::LiveRackOptions options) {
+      auto live = co_await rack::LiveRack::open(thread->rack, with, *thread->clock, *thread->journal, options);
+      if (!live) co_return std::unexpected(std::move(live.error()));
+      thread->live = std::move(*live);
+      co_return Result<void>{};
+    }
+  };
+  Thread* pointer = &t;
+  return t.spawn([pointer, opener, liveOptions]() -> Task<Result<void>> { return Open::run(pointer, opener, liveOptions); }).get();
+}
+
+Result<void> Session::calibrate(std::function<void(const calibration::Progress&)> progress, std::string& recordJson) {
+  if (!thread_ || !thread_->live) return std::unexpected(notOpen());
+  if (thread_->running) return fail(ErrorCode::bad_use, "samples are being read", {}, "call stop first");
+  auto permit = rack::confirmLoadPath(*rack_, options_.isolated, "plug-in host");
+  if (!permit) return std::unexpected(std::move(permit.error()));
+
+  // Progress crosses over to the calling thread.
+  std::mutex mutex;
+  std::condition_variable changed;
+  std::deque<calibration::Progress> told;
+  calibration::Options wanted;
+  wanted.progress = [&](const calibration::Progress& p) {
+    const std::lock_guard lock(mutex);
+    told.push_back(p);
+    changed.notify_one();
+  };
+  const std::uint64_t seed = options_.seed != 0
+                                 ? options_.seed
+                                 : static_cast<std::uint64_t>(thread_->clock->now().time_since_epoch().count());
+  auto record = std::make_shared<Result<calibration::Record>>(fail(ErrorCode::cancelled, "it did not end"));
+  struct Run {
+    static Task<Result<void>> run(Thread* thread, rack::LoadPathPermit permit, std::uint64_t seed,
+                                  calibration::Options options, std::shared_ptr<Result<calibration::Record>> out) {
+      Random random(seed);
+      *out = co_await calibration::calibrate(*thread->live, permit, random, options);
+      co_return Result<void>{};
+    }
+  };
+  Thread* t = thread_.get();
+  auto done = t->spawn([t, permit = *permit, seed, wanted, record]() -> Task<Result<void>> {
+    return Run::run(t, permit, seed, wanted, record);
+  });
+  const auto tell = [&] {
+    std::deque<calibration::Progress> now;
+    {
+      const std::lock_guard lock(mutex);
+      now.swap(told);
+    }
+    for (const auto& p : now) {
+      if (progress) progress(p);
+    }
+  };
+  while (done.wait_for(std::chrono::milliseconds(5)) != std::future_status::ready) tell();
+  tell();
+  if (auto ended = done.get(); !ended) return ended;
+  if (!*record) return std::unexpected(std::move(record->error()));
+  recordJson = calibration::recordJson(**record);
+  return use(std::move(**record));
+}
+
+Result<void> Session::use(calibration::Record record) {
+  if (!thread_ || !thread_->live) return std::unexpected(notOpen());
+  if (thread_->running) return fail(ErrorCode::bad_use, "samples are being read", {}, "call stop first");
+  std::map<std::string, correction::LiveCorrection> corrections;
+  for (const auto& device : rack_->devices) {
+    if (!device.profile->inputs) continue;
+    auto correction = correction::LiveCorrection::of(*rack_, record, device.name);
+    if (!correction) return std::unexpected(std::move(correction.error()));
+    corrections.emplace(device.name, std::move(*correction));
+  }
+  record_ = std::move(record);
+  thread_->corrections = std::move(corrections);
+  return {};
+}
+
+Result<void> Session::start() {
+  if (!thread_ || !thread_->live) return std::unexpected(notOpen());
+  if (thread_->running) return fail(ErrorCode::bad_use, "samples are being read already");
+  Thread* t = thread_.get();
+  t->stopWanted = false;
+  {
+    const std::lock_guard lock(t->mutex);
+    t->queue.clear();
+    t->queuedFrames.clear();
+    t->dropped.clear();
+    t->acquisitionError.reset();
+  }
+  struct Acquire {
+    static Task<Result<void>> run(Thread* thread) {
+      rack::AcquisitionSink sink;
+      sink.block = [thread](const std::string& device, device::SampleBlock& block) { thread->push(device, block); };
+      const std::function<bool()> stop = [thread] { return thread->stopWanted.load(); };
+      auto done = co_await rack::acquire(*thread->live, sink, stop);
+      const std::lock_guard lock(thread->mutex);
+      if (!done) thread->acquisitionError = done.error();
+      thread->arrived.notify_all();
+      co_return done;
+    }
+  };
+  t->running = true;
+  t->acquisition = t->spawn([t]() -> Task<Result<void>> { return Acquire::run(t); });
+  return {};
+}
+
+Result<Session::Block*> Session::next(std::uint32_t timeout_ms) {
+  if (!thread_ || !thread_->live) return std::unexpected(notOpen());
+  if (!thread_->running) return fail(ErrorCode::bad_use, "no samples are being read", {}, "call start first");
+  if (current_ && current_->taken < current_->samples.frames()) return current_.get();
+  Thread& t = *thread_;
+  std::unique_lock lock(t.mutex);
+  t.arrived.wait_for(lock, std::chrono::milliseconds(timeout_ms),
+                     [&t] { return !t.queue.empty() || t.acquisitionError.has_value(); });
+  if (t.queue.empty()) {
+    if (t.acquisitionError) return std::unexpected(*t.acquisitionError);
+    return fail(ErrorCode::timeout, "no samples came in time");
+  }
+  current_ = std::move(t.queue.front());
+  t.queue.pop_front();
+  t.queuedFrames[current_->device] -= current_->samples.frames();
+  t.taken.notify_all();
+  return current_.get();
+}
+
+Result<void> Session::stop() {
+  if (!thread_ || !thread_->running) return {};
+  thread_->stopWanted = true;
+  thread_->taken.notify_all();
+  auto done = thread_->acquisition.get();
+  thread_->running = false;
+  current_.reset();
+  return done;
+}
+
+Result<void> Session::release() {
+  if (!thread_ || !thread_->live) return std::unexpected(notOpen());
+  struct Open {
+    static Task<Result<void>> run(Thread* thread) { co_return co_await thread->live->relays().openEvery(); }
+  };
+  Thread* t = thread_.get();
+  return t->spawn([t]() -> Task<Result<void>> { return Open::run(t); }).get();
+}
+
+}  // namespace shuntwright::plugin

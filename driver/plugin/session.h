@@ -1,0 +1,64 @@
+#pragma once
+
+#include <atomic>
+#include <condition_variable>
+#include <cstdint>
+#include <deque>
+#include <functional>
+#include <memory>
+#include <mutex>
+#include <optional>
+#include <string>
+#include <vector>
+
+#include "driver/calibration/calibrate.h"
+#include "driver/correction/live_correction.h"
+#include "driver/description/rack.h"
+#include "driver/device/sample_block.h"
+
+namespace shuntwright::plugin {
+
+struct SessionOptions {
+  bool isolated = false;
+  std::string rackFile, stateFolder, lockFolder, replayFile;
+  std::uint64_t seed = 0;
+};
+
+/// A rack on a thread of its own. Calls come from the host's thread and block; see shuntwright_plugin.h for what
+/// holds between them.
+class Session {
+ public:
+  /// Samples of one device, corrected.
+  struct Block {
+    std::string device;
+    device::SampleBlock samples;
+    std::vector<float> corrected;
+    std::uint64_t lost = 0;
+    std::size_t taken = 0;  ///< frames given to the host already
+  };
+
+  explicit Session(SessionOptions options);
+  ~Session();
+
+  Result<void> open();
+  const description::Rack* rack() const;
+  Result<void> calibrate(std::function<void(const calibration::Progress&)> progress, std::string& recordJson);
+  Result<void> use(calibration::Record record);
+  const calibration::Record* record() const { return record_ ? &*record_ : nullptr; }
+
+  Result<void> start();
+  /// The next block, or an error timeout. Valid until the next call.
+  Result<Block*> next(std::uint32_t timeout_ms);
+  Result<void> stop();
+  Result<void> release();
+
+ private:
+  struct Thread;
+  SessionOptions options_;
+  std::optional<description::Rack> rack_;
+  std::optional<calibration::Record> record_;
+  std::unique_ptr<Thread> thread_;
+  std::unique_ptr<Block> current_;
+};
+
+}  // namespace shuntwright::plugin
