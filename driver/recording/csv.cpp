@@ -11,11 +11,12 @@ namespace {
 
 constexpr std::uint64_t kRowsAtATime = 4096;
 
-void addNumber(std::string& line, double value) {
+/// The shortest text that reads back as the same number; nothing for what is missing.
+template <class Number>
+void addNumber(std::string& line, Number value) {
   if (!std::isfinite(value)) return;
   char text[40];
-  const auto end = std::to_chars(text, text + sizeof text, value, std::chars_format::general, 9).ptr;
-  line.append(text, end);
+  line.append(text, std::to_chars(text, text + sizeof text, value).ptr);
 }
 
 Result<std::size_t> chosen(const Reader& reader, const std::string& name) {
@@ -73,7 +74,7 @@ Result<void> writeCsv(const Reader& reader, const CsvOptions& options, std::ostr
       }
       for (std::size_t k = 0; options.raw && k < columns; ++k) {
         line += ',';
-        addNumber(line, 1e3 * rows->ratio[r * columns + k]);
+        addNumber(line, 1e3f * rows->ratio[r * columns + k]);
       }
       for (std::size_t k = 0; k < columns; ++k) line += "," + std::to_string(int{rows->flags[r * columns + k]});
       out << line << "\r\n";
