@@ -1,3 +1,4 @@
+// proves P-01
 #include <gtest/gtest.h>
 
 #include <cmath>

@@ -1,3 +1,4 @@
+// proves P-02
 #include <gtest/gtest.h>
 
 #include "driver/bridge/rational_map.h"

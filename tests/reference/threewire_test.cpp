@@ -1,3 +1,4 @@
+// proves P-02
 #include <gtest/gtest.h>
 
 #include <fstream>

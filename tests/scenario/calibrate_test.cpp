@@ -1,3 +1,4 @@
+// proves P-06
 #include "driver/calibration/calibrate.h"
 
 #include <gtest/gtest.h>

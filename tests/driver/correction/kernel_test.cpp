@@ -35,7 +35,8 @@ std::vector<Coefficients> someColumns(std::size_t count) {
   return columns;
 }
 
-TEST(Kernel, agreesWithDoublePrecisionToATenMillionthOfFullScale) {
+// Four single-precision operations round by at most 6e-8 of the value each; the values reach 12 500 microstrain.
+TEST(Kernel, agreesWithDoublePrecisionToFourRoundings) {
   for (const std::size_t inputs : {1u, 3u, 16u, 64u, 100u, 257u}) {
     const auto columns = someColumns(inputs);
     const Kernel kernel(columns);
@@ -48,7 +49,7 @@ TEST(Kernel, agreesWithDoublePrecisionToATenMillionthOfFullScale) {
     applyReference(columns, ratio.data(), reference.data(), frames);
     double worst = 0;
     for (std::size_t k = 0; k < out.size(); ++k) worst = std::max(worst, std::abs(out[k] - reference[k]));
-    EXPECT_LT(worst, 1.5e-7 * 8000) << inputs << " inputs; full scale is 8000 microstrain";
+    EXPECT_LT(worst, 4 * 6e-8 * 12500) << inputs << " inputs";
   }
 }
 

@@ -1,3 +1,4 @@
+// proves P-03
 #include "driver/description/rack.h"
 
 #include <gtest/gtest.h>

@@ -1,3 +1,4 @@
+// proves P-04
 #include "driver/protocol/line_splitter.h"
 
 #include <gtest/gtest.h>
