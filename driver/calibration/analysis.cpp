@@ -207,6 +207,7 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
         zero.deviation * std::sqrt(correlation / std::max(1, zero.samples)) / usable;
     scatter.resolution = resolution;
     scatter.returnSpread = worstReturn * volt_per_volt;
+    scatter.stability = rack.device(channel.device)->profile->inputs->zeroStability / usable;
     if (auto u = zeroUncertainty(rack, channel, result.zero / usable, scatter)) {
       result.zeroExpandedUncertainty = studentFactor(std::numeric_limits<double>::infinity()) * *u;
     }

@@ -130,6 +130,7 @@ Result<Strain> zeroUncertainty(const Rack& rack, const Channel& channel, Ratio z
   addRatio(scatter.standardUncertainty.in(volt_per_volt));
   addRatio(rectangular(0.5 * scatter.resolution.in(volt_per_volt)));
   addRatio(rectangular(scatter.returnSpread.in(volt_per_volt)));
+  addRatio(rectangular(scatter.stability.in(volt_per_volt)));
 
   // Leads that warm: the shift by itself, and together with each lead being off its stated value.
   const auto zeroShift = [&](const ChannelModel& model) {

@@ -30,6 +30,7 @@ struct ZeroScatter {
   units::Ratio standardUncertainty;  ///< of the mean zero reading
   units::Ratio resolution;
   units::Ratio returnSpread;         ///< largest |return - before| seen
+  units::Ratio stability;            ///< half-width by which the offset may wander until the test
 };
 Result<units::Strain> zeroUncertainty(const description::Rack& rack, const description::Channel& channel,
                                       units::Ratio zero, const ZeroScatter& scatter);

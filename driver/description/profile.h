@@ -89,6 +89,7 @@ struct Inputs {
   std::vector<std::string> missing;    ///< words sent in place of a value that is not there
   units::Ratio fullScale = 4.0 * units::millivolt_per_volt;
   units::Ratio resolution = 1e-6 * units::millivolt_per_volt;
+  units::Ratio zeroStability;          ///< half-width by which the offset may wander within a test
   units::Resistance inputResistance = 1.0 * units::gigaohm;
   std::vector<Toleranced> completions;           ///< quarter-bridge completion resistors on offer
   Toleranced halfBridge;                         ///< each of the two inner half-bridge resistors
