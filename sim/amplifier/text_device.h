@@ -39,6 +39,7 @@ class TextDevice final : public Device, private TextResponder {
   double perUnit_ = 1;       ///< V/V of one shown unit
   double digit_ = 1;         ///< resolution, in the shown unit
   int decimals_ = 5;
+  long long lastDigits_ = 1;  ///< resolution in units of the last decimal
   double fullScale_ = 1;     ///< shown unit
   std::string separator_ = ",";
   double rate_Hz_ = 10;
