@@ -34,17 +34,16 @@ ChannelModel modelOf(const Rack& rack, const Channel& channel) {
 
 namespace {
 
-/// The factor on one arm's resistance that makes the unstrained bridge show `zero`. Secant steps: the ratio
-/// is a smooth, monotonic function of one arm.
-Result<double> armFactor(bridge::Circuit circuit, std::size_t arm, Ratio zero) {
-  const Resistance nominal = circuit.arms[arm].resistance;
-  const auto miss = [&](double factor) -> Result<double> {
-    circuit.arms[arm].resistance = nominal * factor;
-    auto r = bridge::ratio(circuit, {});
+/// The x at which the bridge, changed by it, shows `zero`: secant steps, since the ratio is a smooth and monotonic
+/// function of one arm or of the strain. Gives up, with `trouble`, beyond `reach` of the start.
+template <class RatioAt>
+Result<double> solveForZero(RatioAt ratioAt, Ratio zero, double start, double step, double reach, const Error& trouble) {
+  const auto miss = [&](double x) -> Result<double> {
+    auto r = ratioAt(x);
     if (!r) return std::unexpected(std::move(r.error()));
     return (*r - zero).in(volt_per_volt);
   };
-  double a = 1, b = 1.001;
+  double a = start, b = start + step;
   auto fa = miss(a), fb = miss(b);
   for (int i = 0; i < 40; ++i) {
     if (!fa) return std::unexpected(fa.error());
@@ -54,37 +53,31 @@ Result<double> armFactor(bridge::Circuit circuit, std::size_t arm, Ratio zero) {
     a = b;
     fa = fb;
     b = c;
-    if (!(std::abs(b - 1) < 0.3)) {
-      return fail(ErrorCode::bad_use, "the zero reading is too far off for a resistor off nominal", {},
-                  "check the wiring; an open or shorted arm reads like this");
-    }
+    if (!(std::abs(b - start) < reach)) return std::unexpected(trouble);
     fb = miss(b);
   }
   return b;
 }
 
-Result<Strain> standingStrain(const bridge::Circuit& circuit, Ratio zero) {
-  double a = 0, b = 1e-4;
-  const auto miss = [&](double strainValue) -> Result<double> {
-    auto r = bridge::ratio(circuit, strainValue * strain);
-    if (!r) return std::unexpected(std::move(r.error()));
-    return (*r - zero).in(volt_per_volt);
+/// The factor on one arm's resistance that makes the unstrained bridge show `zero`.
+Result<double> armFactor(bridge::Circuit circuit, std::size_t arm, Ratio zero) {
+  const Resistance nominal = circuit.arms[arm].resistance;
+  const auto ratioAt = [&](double factor) {
+    circuit.arms[arm].resistance = nominal * factor;
+    return bridge::ratio(circuit, {});
   };
-  auto fa = miss(a), fb = miss(b);
-  for (int i = 0; i < 40; ++i) {
-    if (!fa) return std::unexpected(fa.error());
-    if (!fb) return std::unexpected(fb.error());
-    if (std::abs(*fb) < 1e-15 || *fa == *fb) break;
-    const double c = b - *fb * (b - a) / (*fb - *fa);
-    a = b;
-    fa = fb;
-    b = c;
-    if (!std::isfinite(b) || std::abs(b) > 2) {
-      return fail(ErrorCode::bad_use, "no standing strain explains the zero reading", {}, "check the wiring");
-    }
-    fb = miss(b);
-  }
-  return b * strain;
+  return solveForZero(ratioAt, zero, 1, 0.001, 0.3,
+                      Error(ErrorCode::bad_use, "the zero reading is too far off for a resistor off nominal", {},
+                            "check the wiring; an open or shorted arm reads like this"));
+}
+
+Result<Strain> standingStrain(const bridge::Circuit& circuit, Ratio zero) {
+  const auto ratioAt = [&](double strainValue) { return bridge::ratio(circuit, strainValue * strain); };
+  auto found = solveForZero(ratioAt, zero, 0, 1e-4, 2,
+                            Error(ErrorCode::bad_use, "no standing strain explains the zero reading", {},
+                                  "check the wiring"));
+  if (!found) return std::unexpected(std::move(found.error()));
+  return *found * strain;
 }
 
 }  // namespace

@@ -14,15 +14,13 @@
 #include <sstream>
 
 #include "driver/calibration/record_json.h"
+#include "tests/support/run_program.h"
 #include "tests/support/virtual_bench.h"
 
 namespace shuntwright {
 namespace {
 
-struct Ran {
-  int code = -1;
-  std::string out;
-};
+using test::Ran;
 
 class Processes : public ::testing::Test {
  protected:
@@ -76,15 +74,26 @@ class Processes : public ::testing::Test {
     FAIL() << "the simulator did not come up";
   }
 
-  static Ran run(const std::string& arguments) {
-    const std::string command = std::string(SHUNTWRIGHT_BIN_DIR) + "/shuntwright " + arguments + " < /dev/null";
-    Ran ran;
-    FILE* pipe = ::popen(command.c_str(), "r");
-    char buffer[4096];
-    while (const std::size_t got = std::fread(buffer, 1, sizeof buffer, pipe)) ran.out.append(buffer, got);
-    const int status = ::pclose(pipe);
-    ran.code = WIFEXITED(status) ? WEXITSTATUS(status) : -1;
-    return ran;
+  static Ran run(const std::string& arguments) { return test::runShuntwright(arguments); }
+
+  /// Starts a calibration in a process of its own and waits until its journal says that a relay is closed.
+  pid_t calibrateUntilARelayIsClosed(const std::string& rack) {
+    const pid_t child = ::fork();
+    if (child == 0) {
+      const std::string command = "exec " SHUNTWRIGHT_BIN_DIR "/shuntwright calibrate " + rack + " --isolated > " + folder_ +
+                                  "/out 2> " + folder_ + "/err < /dev/null";
+      ::execl("/bin/sh", "sh", "-c", command.c_str(), nullptr);
+      ::_exit(127);
+    }
+    for (int k = 0; k < 400; ++k) {
+      ::usleep(25000);
+      std::error_code ec;
+      for (const auto& entry : std::filesystem::directory_iterator(folder_ + "/state/shuntwright", ec)) {
+        if (entry.path().extension() == ".relays" && entry.file_size(ec) > 0) return child;
+      }
+    }
+    ADD_FAILURE() << "no relay closed";
+    return child;
   }
 
   std::string folder_;
@@ -139,23 +148,7 @@ TEST_F(Processes, interruptingACalibrationOpensItsRelays) {
   const std::string rack = serialRack();
   simulate(rack);
   for (const int signal : {SIGINT, SIGTERM}) {
-    const pid_t child = ::fork();
-    if (child == 0) {
-      const std::string command = "exec " SHUNTWRIGHT_BIN_DIR "/shuntwright calibrate " + rack + " --isolated > " + folder_ +
-                                  "/out 2> " + folder_ + "/err < /dev/null";
-      ::execl("/bin/sh", "sh", "-c", command.c_str(), nullptr);
-      ::_exit(127);
-    }
-    // Until its journal says that a relay is closed.
-    bool closed = false;
-    for (int k = 0; k < 400 && !closed; ++k) {
-      ::usleep(25000);
-      std::error_code ec;
-      for (const auto& entry : std::filesystem::directory_iterator(folder_ + "/state/shuntwright", ec)) {
-        closed = closed || (entry.path().extension() == ".relays" && entry.file_size(ec) > 0);
-      }
-    }
-    ASSERT_TRUE(closed);
+    const pid_t child = calibrateUntilARelayIsClosed(rack);
     ::kill(child, signal);
     int status = 0;
     ::waitpid(child, &status, 0);
@@ -171,21 +164,7 @@ TEST_F(Processes, interruptingACalibrationOpensItsRelays) {
 TEST_F(Processes, releaseOpensWhatAKilledProcessLeftClosed) {
   const std::string rack = serialRack();
   simulate(rack);
-  const pid_t child = ::fork();
-  if (child == 0) {
-    const std::string command = "exec " SHUNTWRIGHT_BIN_DIR "/shuntwright calibrate " + rack + " --isolated > /dev/null 2>&1 < /dev/null";
-    ::execl("/bin/sh", "sh", "-c", command.c_str(), nullptr);
-    ::_exit(127);
-  }
-  bool closed = false;
-  for (int k = 0; k < 400 && !closed; ++k) {
-    ::usleep(25000);
-    std::error_code ec;
-    for (const auto& entry : std::filesystem::directory_iterator(folder_ + "/state/shuntwright", ec)) {
-      closed = closed || (entry.path().extension() == ".relays" && entry.file_size(ec) > 0);
-    }
-  }
-  ASSERT_TRUE(closed);
+  const pid_t child = calibrateUntilARelayIsClosed(rack);
   ::kill(child, SIGKILL);
   ::waitpid(child, nullptr, 0);
   const Ran ran = run("release " + rack + " --json 2> /dev/null");

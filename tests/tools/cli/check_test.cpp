@@ -1,6 +1,5 @@
 // `shuntwright check` as a person or a script runs it.
 #include <gtest/gtest.h>
-#include <sys/wait.h>
 
 #include <boost/json/parse.hpp>
 #include <boost/json/value.hpp>
@@ -12,25 +11,15 @@
 #include <map>
 #include <sstream>
 
+#include "tests/support/run_program.h"
+
 namespace {
 
 namespace json = boost::json;
 
-struct Ran {
-  int code = -1;
-  std::string out;
-};
+using shuntwright::test::Ran;
 
-Ran run(const std::string& arguments) {
-  const std::string command = std::string(SHUNTWRIGHT_BIN_DIR) + "/shuntwright " + arguments + " < /dev/null";
-  Ran ran;
-  FILE* pipe = ::popen(command.c_str(), "r");
-  char buffer[4096];
-  while (const std::size_t got = std::fread(buffer, 1, sizeof buffer, pipe)) ran.out.append(buffer, got);
-  const int status = ::pclose(pipe);
-  ran.code = WIFEXITED(status) ? WEXITSTATUS(status) : -1;
-  return ran;
-}
+Ran run(const std::string& arguments) { return shuntwright::test::runShuntwright(arguments); }
 
 const std::string kRacks = std::string(SHUNTWRIGHT_SOURCE_DIR) + "/profiles/racks/";
 
