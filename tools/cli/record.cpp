@@ -11,6 +11,7 @@
 #include <boost/json/array.hpp>
 #include <boost/json/object.hpp>
 #include <boost/json/serialize.hpp>
+#include <functional>
 #include <istream>
 #include <ostream>
 
@@ -31,8 +32,8 @@ namespace json = boost::json;
 /// mark.
 class Keyboard : public std::enable_shared_from_this<Keyboard> {
  public:
-  Keyboard(asio::any_io_executor executor, RecordingSession& session, bool& quit)
-      : input_(executor, ::dup(STDIN_FILENO)), session_(session), quit_(quit) {}
+  Keyboard(asio::any_io_executor executor, RecordingSession& session, bool& quit, std::function<void()> typed)
+      : input_(executor, ::dup(STDIN_FILENO)), session_(session), quit_(quit), typed_(std::move(typed)) {}
 
   void listen() {
     asio::async_read_until(input_, buffer_, '\n', [self = shared_from_this()](boost::system::error_code ec, std::size_t) {
@@ -51,6 +52,7 @@ class Keyboard : public std::enable_shared_from_this<Keyboard> {
 
  private:
   void take(const std::string& line) {
+    typed_();
     if (line == "q") {
       quit_ = true;
     } else if (line == "e") {
@@ -66,6 +68,7 @@ class Keyboard : public std::enable_shared_from_this<Keyboard> {
   asio::streambuf buffer_;
   RecordingSession& session_;
   bool& quit_;
+  std::function<void()> typed_;
 };
 
 /// The live table: redrawn in place on a terminal, nothing in a pipe.
@@ -75,7 +78,8 @@ class LiveTable {
 
   void draw(const RecordingSession& session, double elapsed_s) {
     if (!console_.errIsTerminal) return;
-    std::string text = lines_ > 0 ? "\x1b[" + std::to_string(lines_) + "A" : "";
+    // Back to the table's top, and everything below it away.
+    std::string text = lines_ > 0 ? "\x1b[" + std::to_string(lines_) + "A\x1b[J" : "";
     lines_ = 0;
     const auto line = [&](const std::string& what) {
       text += what + "\x1b[K\n";
@@ -106,6 +110,9 @@ class LiveTable {
     if (!row.empty()) line(row);
     console_.err << text << std::flush;
   }
+
+  /// Somebody has typed a line: the terminal is one line further down.
+  void typed() { ++lines_; }
 
  private:
   const Console& console_;
@@ -162,12 +169,12 @@ class Record final : public Command {
     if (!session) co_return std::unexpected(std::move(session.error()));
     auto executor = co_await asio::this_coro::executor;
     bool quit = false;
+    LiveTable table(job->console);
     std::shared_ptr<Keyboard> keyboard;
     if (job->console.interactive) {
-      keyboard = std::make_shared<Keyboard>(executor, **session, quit);
+      keyboard = std::make_shared<Keyboard>(executor, **session, quit, [&table] { table.typed(); });
       keyboard->listen();
     }
-    LiveTable table(job->console);
     const Instant start = clock.now();
     Instant nextDraw = start;
     const std::function<bool()> stop = [&] {
