@@ -8,7 +8,9 @@ namespace shuntwright::sim {
 using namespace units;
 
 namespace {
-constexpr Nanoseconds kTick = std::chrono::milliseconds(100);
+// How often the circuit is solved anew: under a moving load ten times a second, else only the leads' temperature
+// moves, over minutes.
+constexpr Nanoseconds kLoadTick = std::chrono::milliseconds(100), kIdleTick = std::chrono::seconds(1);
 }
 
 BridgeInput::BridgeInput(TrueChannel channel, const Specimen& specimen, const LoadClock& clock,
@@ -44,7 +46,9 @@ void BridgeInput::refresh(Instant now) {
   input_ = trueRatioAt(now);
   drift_ = imperfections_.drift.in(volt_per_volt) *
            std::sin(2 * std::numbers::pi * seconds(now - clock_->start) / driftPeriod_s_ + driftPhase_);
-  nextRefresh_ = now + kTick;
+  const bool loaded = clock_->loadStart != Instant::max();
+  nextRefresh_ = now + (loaded ? kLoadTick : kIdleTick);
+  if (clock_->loadStart > now) nextRefresh_ = std::min(nextRefresh_, clock_->loadStart);
   if (!started_) {
     started_ = true;
     filtered_ = input_;

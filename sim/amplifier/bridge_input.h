@@ -19,7 +19,7 @@ struct LoadClock {
 
 /// One amplifier input with a channel on it: circuit, filter, span, offset, noise, converter.
 ///
-/// The circuit is solved only when something changed: a contact, or every 100 ms the strain and the leads'
+/// The circuit is solved only when something changed: a contact, or from time to time the strain and the leads'
 /// temperature; between that the ratio stands and the filter runs on analytically.
 class BridgeInput {
  public:

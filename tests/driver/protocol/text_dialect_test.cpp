@@ -134,11 +134,11 @@ TEST_F(Dialect, DamagedLinesAreNeverTaken) {
   }
 }
 
-TEST_F(Dialect, ATranscriptGivesTheSameHoweverItIsCut) {
+TEST_F(Dialect, AConversationGivesTheSameHoweverItIsCut) {
   const Request request = closeRequest(3);
-  const std::string transcript = sum("D1 1,2,3") + "\r\n" + sum("CLOSED 03") + "\r\n" + "noise\r\n" +
+  const std::string conversation = sum("D1 1,2,3") + "\r\n" + sum("CLOSED 03") + "\r\n" + "noise\r\n" +
                                  sum("D3 4,5,6") + "\r\n" + sum("ERR 1 no") + "\r\n";
-  test::everySplit(transcript, [&](const std::vector<std::string>& pieces) {
+  test::everySplit(conversation, [&](const std::vector<std::string>& pieces) {
     LineSplitter splitter = dialect->splitter();
     std::vector<Kind> kinds;
     std::vector<float> first;
