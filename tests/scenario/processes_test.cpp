@@ -1,3 +1,4 @@
+// proves P-07
 // The simulator in one process, the program in another: through the real serial code (pseudo terminals) and TCP.
 #include <gtest/gtest.h>
 #include <sys/wait.h>

@@ -1,3 +1,4 @@
+// proves P-03
 #include <gtest/gtest.h>
 
 #include "tests/driver/description/sample.h"

@@ -1,3 +1,4 @@
+// proves P-03
 #include "driver/description/toml_reader.h"
 
 #include <gtest/gtest.h>

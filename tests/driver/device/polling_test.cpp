@@ -1,3 +1,4 @@
+// proves P-05
 #include <cmath>
 
 #include "scripted_device.h"

@@ -1,3 +1,4 @@
+// proves P-05
 #include "scripted_device.h"
 
 namespace shuntwright::test {

@@ -1,3 +1,4 @@
+// proves P-04
 #include "driver/protocol/text_dialect.h"
 
 #include <gtest/gtest.h>

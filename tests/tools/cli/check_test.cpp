@@ -1,3 +1,4 @@
+// proves P-03
 // `shuntwright check` as a person or a script runs it.
 #include <gtest/gtest.h>
 
