@@ -76,6 +76,17 @@ TextDevice::TextDevice(std::shared_ptr<const description::Profile> profile, std:
   if (!described->rates.empty()) rate_Hz_ = described->rates.front().in(hertz);
 }
 
+void TextDevice::connected(Instant now) {
+  if (relays_) relays_->advance(now);
+  // A stream that nobody heard ran on: its numbers tell what was missed.
+  if (streaming_ && frameDue() < now) {
+    const auto unheard = static_cast<std::uint64_t>(seconds(now - frameDue()) * rate_Hz_);
+    frame_ += unheard;
+    counter_ += unheard;
+  }
+  forget(now);
+}
+
 void TextDevice::feed(ByteView bytes, Instant now) {
   advance(now);
   feedBytes(bytes, now);
@@ -84,20 +95,16 @@ void TextDevice::feed(ByteView bytes, Instant now) {
 
 void TextDevice::advance(Instant now) {
   if (relays_) relays_->advance(now);
-  while (streaming_) {
-    const Instant due = streamStart_ + fromSeconds(static_cast<double>(frame_) / rate_Hz_);
-    if (due > now) break;
-    streamFrame(due);
-  }
+  while (streaming_ && frameDue() <= now) streamFrame(frameDue());
   release(now);
 }
 
+Instant TextDevice::frameDue() const { return streamStart_ + fromSeconds(static_cast<double>(frame_) / rate_Hz_); }
+
 Instant TextDevice::nextEvent() const {
-  Instant earliest = nextAnswer();
+  Instant earliest = std::min(nextAnswer(), nextUnplugging());
   if (relays_) earliest = std::min(earliest, relays_->next());
-  if (streaming_) {
-    earliest = std::min(earliest, streamStart_ + fromSeconds(static_cast<double>(frame_) / rate_Hz_));
-  }
+  if (streaming_) earliest = std::min(earliest, frameDue());
   return earliest;
 }
 
@@ -157,6 +164,13 @@ bool TextDevice::handleInputs(std::string_view line, Instant now) {
   }
   if (d.setExcitation) {
     if (auto fields = asks("set excitation", *d.setExcitation, line)) {
+      const double wanted = decimalIn(*fields, "excitation");
+      const bool offered = std::any_of(d.excitations.begin(), d.excitations.end(),
+                                       [&](Voltage v) { return std::abs(v.in(volt) - wanted) < 1e-9; });
+      if (!offered) {
+        refuse(4, "no such excitation", now);
+        return true;
+      }
       answer(*d.setExcitation, *fields, now);
       return true;
     }

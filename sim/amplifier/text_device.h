@@ -20,10 +20,12 @@ class TextDevice final : public Device, private TextResponder {
              std::unique_ptr<RelayBoard> relays, DeviceFaults faults, Nanoseconds answerDelay, Instant start,
              Random random, std::string serialNumber);
 
+  void connected(Instant now) override;
   void feed(ByteView bytes, Instant now) override;
   void advance(Instant now) override;
   Bytes take() override { return takeBytes(); }
   Instant nextEvent() const override;
+  std::optional<Instant> absentUntil(Instant now) const override { return unpluggedUntil(now); }
 
   RelayBoard* relays() { return relays_.get(); }
 
@@ -32,6 +34,7 @@ class TextDevice final : public Device, private TextResponder {
   bool handleInputs(std::string_view line, Instant now);
   bool handleRelays(std::string_view line, Instant now);
   void addValue(std::string& text, std::size_t input, Instant now);
+  Instant frameDue() const;
   void streamFrame(Instant when);
 
   std::vector<BridgeInput*> inputs_;

@@ -28,18 +28,21 @@ struct Imperfections {
 
 /// Something that a device does wrong from a certain request on.
 struct DeviceFault {
-  enum class Kind { mute, garbage, half_answer, error_answer };
+  enum class Kind { mute, garbage, half_answer, error_answer, late };
   Kind kind = Kind::mute;
   std::string request;   ///< "identify", "read", "stream start", "stream stop", "set rate", "set excitation",
                          ///< "close", "open", "open all", "state"; empty: any
   int from = 1;          ///< first request of that name that it hits
   int count = 1 << 30;   ///< how many
+  Nanoseconds delay{0};  ///< of a late answer
 };
 
 struct DeviceFaults {
   std::vector<DeviceFault> requests;
   double lostFrames = 0;                 ///< probability that a streamed frame is dropped (its counter counts on)
   std::optional<Nanoseconds> silentAfter;  ///< since the start: nothing more is sent or heard
+  std::optional<Nanoseconds> unpluggedAfter;  ///< since the start: its connection ends; relays stay as they are
+  std::optional<Nanoseconds> unpluggedFor;    ///< then it can be reached again; empty: never
 };
 
 struct ChannelFaults {
@@ -54,15 +57,17 @@ struct ChannelFaults {
 struct GaugePlace {
   units::Length alongBeam;     ///< from the left support
   units::Length fibre;         ///< distance from the neutral axis, positive towards the tension side
-  double angle_deg = 0;        ///< to the beam's axis
+  double angle_deg = 0;        ///< from the beam's axis (left to right) towards the tension side
+  bool web = false;            ///< on the web, which alone carries the shear force
 };
 
 /// A simply supported beam with one load at mid-span.
 struct Beam {
   units::Length span = 12.0 * units::metre;
-  double modulus_GPa = 210;
+  units::Stress modulus = 210.0 * units::gigapascal;
   double secondMoment_m4 = 4.6e-4;
   double poisson = 0.3;
+  units::Area webArea = 6800.0 * units::square_millimetre;
 };
 
 struct Scenario {

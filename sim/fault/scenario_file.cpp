@@ -16,11 +16,13 @@ namespace {
 /// Reads the parts of a scenario; mistakes go to the diagnostics.
 class ScenarioReader {
  public:
-  ScenarioReader(const Rack& rack, Diagnostics& diagnostics) : rack_(rack), diagnostics_(diagnostics) {}
+  ScenarioReader(const Rack& rack, Diagnostics& diagnostics, Scenario base)
+      : rack_(rack), diagnostics_(diagnostics), scenario_(std::move(base)) {}
 
   Scenario read(const TomlNode& root) {
     TableReader table(root, "the scenario", diagnostics_);
     if (const auto* t = table.table("imperfections")) imperfections(*t);
+    if (const auto* t = table.table("beam")) beam(*t);
     if (const auto* t = table.table("load")) load(*t);
     for (const auto* t : table.tables("gauge")) gauge(*t);
     for (const auto* t : table.tables("fault")) fault(*t);
@@ -47,10 +49,28 @@ class ScenarioReader {
     t.finish();
   }
 
+  void beam(const TomlNode& node) {
+    TableReader t(node, "[beam]", diagnostics_);
+    auto& b = scenario_.beam;
+    t.take("span", b.span, {"1 mm", "1000 m"});
+    t.take("modulus", b.modulus, {"1 MPa", "10000 GPa"});
+    t.take("second_moment_m4", b.secondMoment_m4, {"1e-12", "1e3"});
+    t.take("poisson", b.poisson, {"0", "0.5"});
+    t.take("web_area", b.webArea, {"1 mm2", ""});
+    t.finish();
+  }
+
   void load(const TomlNode& node) {
     TableReader t(node, "[load]", diagnostics_);
     t.take("largest", scenario_.maxLoad);
-    t.takeList("levels", scenario_.levels, {"0", "1"});
+    std::vector<double> levels;
+    if (t.takeList("levels", levels, {"0", "1"})) {
+      if (levels.empty()) {
+        diagnostics_.error(t.entry("levels")->value.place, "\"levels\" is empty", "give at least one part of the largest load");
+      } else {
+        scenario_.levels = std::move(levels);
+      }
+    }
     t.take("ramp", scenario_.ramp, {"0.1 s", "1 h"});
     t.take("hold", scenario_.hold, {"0.1 s", "1 h"});
     t.finish();
@@ -64,6 +84,7 @@ class ScenarioReader {
     t.need("along", place.alongBeam);
     t.need("fibre", place.fibre);
     t.take("angle", place.angle_deg, {"-180", "180"});
+    t.choose("on", place.web, {{"flange", false}, {"web", true}});
     t.finish();
     scenario_.places[channel] = place;
   }
@@ -84,9 +105,13 @@ class ScenarioReader {
       ref.device = text.substr(0, slash);
       const auto parsed = std::from_chars(text.data() + slash + 1, end, ref.relay);
       const auto* device = rack_.device(ref.device);
-      if (parsed.ptr == end && device && device->profile->relays) return ref;
+      if (parsed.ptr == end && device && device->profile->relays) {
+        const auto& relays = *device->profile->relays;
+        if (ref.relay >= relays.first && ref.relay < relays.first + relays.count) return ref;
+      }
     }
-    unknown(t, key, text);
+    const auto* entry = t.entry(key);
+    diagnostics_.error(entry->value.place, "the rack has no relay \"" + text + "\"", "write it like \"relays1/3\"");
     return std::nullopt;
   }
 
@@ -112,16 +137,20 @@ class ScenarioReader {
 
   enum class What {
     relay_dead, relay_welded, relays_swapped, wrong_shunt, noisy, open_lead, saturated, no_zero_return,
-    mute, garbage, half_answer, error_answer, lost_frames, silent
+    mute, garbage, half_answer, error_answer, late, lost_frames, silent, unplugged
   };
 
   void request(TableReader& t, DeviceFault::Kind kind) {
     DeviceFaults* faults = device(t);
     DeviceFault one;
     one.kind = kind;
-    t.take("request", one.request);
+    t.choose("request", one.request,
+             {{"identify", "identify"}, {"read", "read"}, {"stream start", "stream start"}, {"stream stop", "stream stop"},
+              {"set rate", "set rate"}, {"set excitation", "set excitation"}, {"close", "close"}, {"open", "open"},
+              {"open all", "open all"}, {"state", "state"}});
     t.take("from", one.from, {"1", ""});
     t.take("count", one.count, {"1", ""});
+    if (kind == DeviceFault::Kind::late) t.need("delay", one.delay, {"0 s", "1 h"});
     if (faults) faults->requests.push_back(one);
   }
 
@@ -141,8 +170,10 @@ class ScenarioReader {
                                  {"garbage", What::garbage},
                                  {"half answer", What::half_answer},
                                  {"error answer", What::error_answer},
+                                 {"late", What::late},
                                  {"lost frames", What::lost_frames},
-                                 {"silent", What::silent}});
+                                 {"silent", What::silent},
+                                 {"unplugged", What::unplugged}});
     if (!known) {
       if (!t.has("what")) t.neededEntry("what", "what = \"relay dead\"");
       return;
@@ -178,13 +209,21 @@ class ScenarioReader {
       case What::garbage: request(t, DeviceFault::Kind::garbage); break;
       case What::half_answer: request(t, DeviceFault::Kind::half_answer); break;
       case What::error_answer: request(t, DeviceFault::Kind::error_answer); break;
+      case What::late: request(t, DeviceFault::Kind::late); break;
       case What::lost_frames:
         if (auto* d = device(t)) t.need("part", d->lostFrames, {"0", "1"});
         break;
       case What::silent:
         if (auto* d = device(t)) {
           Nanoseconds after{0};
-          if (t.need("after", after)) d->silentAfter = after;
+          if (t.need("after", after, {"0 s", ""})) d->silentAfter = after;
+        }
+        break;
+      case What::unplugged:
+        if (auto* d = device(t)) {
+          Nanoseconds after{0};
+          if (t.need("after", after, {"0 s", ""})) d->unpluggedAfter = after;
+          t.take("lasting", d->unpluggedFor, {"0 s", ""});
         }
         break;
     }
@@ -198,10 +237,11 @@ class ScenarioReader {
 
 }  // namespace
 
-Scenario parseScenario(std::string_view text, const std::string& file, const Rack& rack, Diagnostics& diagnostics) {
+Scenario parseScenario(std::string_view text, const std::string& file, const Rack& rack, Diagnostics& diagnostics,
+                       Scenario base) {
   auto root = description::parseToml(text, file, diagnostics);
-  if (!root) return {};
-  return ScenarioReader(rack, diagnostics).read(*root);
+  if (!root) return base;
+  return ScenarioReader(rack, diagnostics, std::move(base)).read(*root);
 }
 
 }  // namespace shuntwright::sim

@@ -13,13 +13,42 @@ void NodeCircuit::hold(std::size_t node, double volts) {
 
 void NodeCircuit::connect(std::size_t a, std::size_t b, double ohms) {
   if (a == b) return;
+  if (ohms <= 0) {
+    used_[a] = used_[b] = true;
+    const std::size_t from = root(a), to = root(b);
+    if (from != to) joined_[from] = to + 1;
+    anyJoined_ = true;
+    return;
+  }
   const double g = 1 / std::max(ohms, 1e-5);
   conductance_[a][b] += g;
   conductance_[b][a] += g;
   used_[a] = used_[b] = true;
 }
 
+std::size_t NodeCircuit::root(std::size_t node) const {
+  while (joined_[node] != 0) node = joined_[node] - 1;
+  return node;
+}
+
+NodeCircuit NodeCircuit::merged() const {
+  NodeCircuit whole;
+  for (std::size_t a = 0; a < kNodes; ++a) {
+    if (held_[a]) whole.hold(root(a), volts_[a]);
+    whole.used_[root(a)] = whole.used_[root(a)] || used_[a];
+    for (std::size_t b = 0; b < kNodes; ++b) {
+      if (root(a) != root(b)) whole.conductance_[root(a)][root(b)] += conductance_[a][b];
+    }
+  }
+  return whole;
+}
+
 std::array<double, NodeCircuit::kNodes> NodeCircuit::solve() const {
+  if (anyJoined_) {
+    auto volts = merged().solve();
+    for (std::size_t k = 0; k < kNodes; ++k) volts[k] = volts[root(k)];
+    return volts;
+  }
   std::array<std::size_t, kNodes> unknown{};
   std::size_t n = 0;
   for (std::size_t k = 0; k < kNodes; ++k) {

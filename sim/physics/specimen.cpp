@@ -26,10 +26,16 @@ double beamStrain(const Beam& beam, const GaugePlace& place, Force load) {
   const double length_m = beam.span.in(metre);
   const double x_m = std::clamp(place.alongBeam.in(metre), 0.0, length_m);
   const double moment_Nm = load.in(newton) / 2 * std::min(x_m, length_m - x_m);
-  const double axial = moment_Nm * place.fibre.in(metre) / (beam.modulus_GPa * 1e9 * beam.secondMoment_m4);
+  const double axial = moment_Nm * place.fibre.in(metre) / (beam.modulus.in(pascal) * beam.secondMoment_m4);
   const double angle = place.angle_deg * std::numbers::pi / 180;
   const double cosine = std::cos(angle), sine = std::sin(angle);
-  return axial * (cosine * cosine - beam.poisson * sine * sine);
+  double shear = 0;
+  if (place.web) {
+    const double force_N = (x_m < length_m / 2 ? 0.5 : x_m > length_m / 2 ? -0.5 : 0) * load.in(newton);
+    const double shearModulus_Pa = beam.modulus.in(pascal) / (2 * (1 + beam.poisson));
+    shear = force_N / (shearModulus_Pa * beam.webArea.in(square_metre));
+  }
+  return axial * (cosine * cosine - beam.poisson * sine * sine) + shear * sine * cosine;
 }
 
 Specimen::Specimen(const description::Rack& rack, const Scenario& scenario, Random random) : scenario_(scenario) {

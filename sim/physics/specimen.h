@@ -12,9 +12,10 @@ namespace shuntwright::sim {
 /// The load at a time since the load test began: straight ramps between held levels, 0 before and after.
 double loadPart(const Scenario& scenario, double seconds);  ///< of the largest load, 0 to 1
 
-/// Strain along the beam's axis of a simply supported beam with a load F at mid-span, by bending theory:
-/// M(x) = F x / 2 for x <= L/2 (mirrored beyond), e = M c / (E I); at an angle a to the axis, with the
-/// transverse strain -nu e: e(a) = e (cos^2 a - nu sin^2 a).
+/// Strain of a simply supported beam with a load F at mid-span, by bending theory: M(x) = F x / 2 for x <= L/2
+/// (mirrored beyond), e = M c / (E I), transverse strain -nu e. On the web the shear force V = F/2 (reversed beyond
+/// mid-span) adds the mean shear strain g = V / (G A_web), G = E / (2 (1 + nu)). At an angle a to the axis, by the
+/// transformation of plane strain: e(a) = e cos^2 a - nu e sin^2 a + g sin a cos a.
 double beamStrain(const Beam& beam, const GaugePlace& place, units::Force load);
 
 /// What a channel's gauge sees: strain, or the fraction of a transducer's rated value.

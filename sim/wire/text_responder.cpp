@@ -12,11 +12,12 @@ TextResponder::TextResponder(std::shared_ptr<const description::Profile> profile
       faults_(std::move(faults)),
       answerDelay_(answerDelay),
       start_(start),
+      told_(start),
       random_(random),
       serialNumber_(std::move(serialNumber)) {}
 
 void TextResponder::feedBytes(ByteView bytes, Instant now) {
-  if (silent(now)) return;
+  if (silent(now) || unpluggedUntil(now)) return;
   input_.append(textOf(bytes));
   const std::string& end = profile_->protocol.requestEnd;
   std::size_t cut;
@@ -69,6 +70,7 @@ const DeviceFault* TextResponder::faultNow() {
 void TextResponder::answer(const Exchange& exchange, const FieldTexts& fields, Instant now) {
   if (!exchange.answer) return;
   std::string line = sealed(profile_->protocol.checksum, writeLine(*exchange.answer, fields));
+  Instant due = now + answerDelay_;
   if (const DeviceFault* fault = faultNow()) {
     switch (fault->kind) {
       case DeviceFault::Kind::mute: return;
@@ -77,9 +79,10 @@ void TextResponder::answer(const Exchange& exchange, const FieldTexts& fields, I
         waiting_.push_back({now + answerDelay_, line.substr(0, line.size() / 2)});
         return;
       case DeviceFault::Kind::error_answer: refuse(7, "fault", now); return;
+      case DeviceFault::Kind::late: due += fault->delay; break;
     }
   }
-  send(std::move(line), now + answerDelay_);
+  send(std::move(line), due);
 }
 
 void TextResponder::refuse(int code, const std::string& text, Instant now) {
@@ -97,16 +100,37 @@ void TextResponder::send(std::string line, Instant when) {
 
 void TextResponder::volunteer(std::string_view line, Instant now) {
   release(now);
-  if (silent(now)) return;
+  if (silent(now) || unpluggedUntil(now)) return;
   append(output_, bytesOf(line));
   append(output_, bytesOf(profile_->protocol.answerEnd));
 }
 
 void TextResponder::release(Instant now) {
+  told_ = std::max(told_, now);
+  if (unpluggedUntil(now)) forget(now);
   while (!waiting_.empty() && waiting_.front().due <= now) {
     if (!silent(now)) append(output_, bytesOf(waiting_.front().bytes));
     waiting_.pop_front();
   }
+}
+
+void TextResponder::forget(Instant now) {
+  told_ = std::max(told_, now);
+  input_.clear();
+  output_.clear();
+  waiting_.clear();
+}
+
+std::optional<Instant> TextResponder::unpluggedUntil(Instant now) const {
+  if (!faults_.unpluggedAfter || now < start_ + *faults_.unpluggedAfter) return std::nullopt;
+  if (!faults_.unpluggedFor) return Instant::max();
+  const Instant back = start_ + *faults_.unpluggedAfter + *faults_.unpluggedFor;
+  return now < back ? std::optional(back) : std::nullopt;
+}
+
+Instant TextResponder::nextUnplugging() const {
+  if (!faults_.unpluggedAfter || start_ + *faults_.unpluggedAfter <= told_) return Instant::max();
+  return start_ + *faults_.unpluggedAfter;
 }
 
 Bytes TextResponder::takeBytes() { return std::exchange(output_, {}); }

@@ -38,6 +38,9 @@ class TextResponder {
   /// A line that nobody asked for: samples of a stream. Not delayed.
   void volunteer(std::string_view line, Instant now);
   bool silent(Instant now) const { return faults_.silentAfter && now - start_ >= *faults_.silentAfter; }
+  std::optional<Instant> unpluggedUntil(Instant now) const;
+  Instant nextUnplugging() const;  ///< Instant::max(): none to come
+  void forget(Instant now);        ///< half a request, answers not yet sent
 
   const description::Profile& profile() const { return *profile_; }
   Random& random() { return random_; }
@@ -54,6 +57,7 @@ class TextResponder {
   DeviceFaults faults_;
   Nanoseconds answerDelay_;
   Instant start_;
+  Instant told_;  ///< the latest time it was told of
   Random random_;
   std::string serialNumber_;
   std::string input_;

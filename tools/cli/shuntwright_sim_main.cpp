@@ -20,7 +20,7 @@ namespace {
 using namespace shuntwright;
 
 struct Options {
-  std::string rack, scenario, ptyFolder;
+  std::string rack, scenario, faults, ptyFolder;
   std::uint64_t seed = 1;
   double speed = 1, loadAfter_s = -1;
   int portBase = 0;
@@ -52,12 +52,13 @@ int run(const Options& options) {
   description::Diagnostics diagnostics;
   auto rack = description::loadRack(options.rack, description::diskReader(), diagnostics);
   sim::Scenario scenario;
-  if (!options.scenario.empty()) {
-    const auto text = description::diskReader()(options.scenario);
+  for (const auto& file : {options.scenario, options.faults}) {
+    if (file.empty()) continue;
+    const auto text = description::diskReader()(file);
     if (!text) {
-      diagnostics.error(Place{options.scenario}, "the file cannot be read", "check the path");
+      diagnostics.error(Place{file}, "the file cannot be read", "check the path");
     } else if (rack) {
-      scenario = sim::parseScenario(*text, options.scenario, *rack, diagnostics);
+      scenario = sim::parseScenario(*text, file, *rack, diagnostics, std::move(scenario));
     }
   }
   if (!diagnostics.problems().empty()) console.err << diagnostics.render(console.colour && console.errIsTerminal);
@@ -68,7 +69,11 @@ int run(const Options& options) {
   simhost::ScaledClock clock(real, options.speed);
   sim::Bench bench(*rack, scenario, options.seed, clock.now());
   if (options.loadAfter_s >= 0) bench.startLoad(clock.now() + fromSeconds(options.loadAfter_s));
-  if (!options.ptyFolder.empty()) std::filesystem::create_directories(options.ptyFolder);
+  if (!options.ptyFolder.empty()) {
+    std::error_code ec;
+    std::filesystem::create_directories(options.ptyFolder, ec);
+    if (ec) return console.fail(Error{ErrorCode::io, "cannot make the folder: " + ec.message(), options.ptyFolder});
+  }
   simhost::Hosting hosting(context, bench, clock);
   auto served = serveAll(hosting, *rack, options);
   if (!served) return console.fail(served.error());
@@ -104,11 +109,14 @@ int main(int argc, char** argv) {
   Options options;
   app.add_option("RACK", options.rack, "The rack (TOML)")->required();
   app.add_option("--seed", options.seed, "Seed of the simulated truth");
-  app.add_option("--scenario,--faults", options.scenario, "Imperfections, specimen and faults (TOML)");
+  app.add_option("--scenario", options.scenario, "Imperfections, specimen, load programme and faults (TOML)");
+  app.add_option("--faults", options.faults, "A second such file, laid over the scenario");
   app.add_option("--speed", options.speed, "How many times faster than real time")->check(CLI::PositiveNumber);
-  app.add_option("--start-load-after", options.loadAfter_s, "Start the load programme this many seconds from now");
+  app.add_option("--start-load-after", options.loadAfter_s, "Start the load programme this many seconds from now")
+      ->check(CLI::NonNegativeNumber);
   app.add_option("--pty", options.ptyFolder, "Serve on pseudo terminals, linked in this folder by device name");
-  app.add_option("--port-base", options.portBase, "Serve on TCP ports from this one on instead of the rack's");
+  app.add_option("--port-base", options.portBase, "Serve on TCP ports from this one on instead of the rack's")
+      ->check(CLI::Range(1, 65000));
   app.add_flag("--json", options.json, "Print the ports as one JSON document");
   try {
     app.parse(argc, argv);

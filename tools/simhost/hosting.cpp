@@ -1,21 +1,18 @@
 #include "tools/simhost/hosting.h"
 
-#include <fcntl.h>
-#include <stdlib.h>
-#include <termios.h>
-#include <unistd.h>
-
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/awaitable.hpp>
 #include <boost/asio/co_spawn.hpp>
 #include <boost/asio/detached.hpp>
 #include <boost/asio/ip/tcp.hpp>
 #include <boost/asio/posix/stream_descriptor.hpp>
+#include <boost/asio/redirect_error.hpp>
 #include <boost/asio/use_awaitable.hpp>
-#include <cerrno>
-#include <cstring>
+#include <algorithm>
+#include <map>
 
 #include "driver/transport/asio_stream.h"
+#include "tools/simhost/pty_link.h"
 #include "tools/simhost/serve.h"
 
 namespace shuntwright::simhost {
@@ -28,25 +25,29 @@ struct Hosting::State {
   asio::io_context& context;
   sim::Bench& bench;
   Clock& clock;
-  std::vector<int> kept;           ///< slave ends, so that a client that leaves is no end of file for the master
-  std::vector<std::string> links;
+  std::map<std::string, std::unique_ptr<PtyLink>> ptys;  ///< by device
 };
 
 Hosting::Hosting(asio::io_context& context, sim::Bench& bench, Clock& clock)
-    : state_(std::make_unique<State>(context, bench, clock)) {}
+    : state_(std::make_shared<State>(context, bench, clock)) {}
 
-Hosting::~Hosting() {
-  for (const int slave : state_->kept) ::close(slave);
-  for (const auto& link : state_->links) ::unlink(link.c_str());
-}
+Hosting::~Hosting() { state_->ptys.clear(); }
 
 namespace {
 
+// What stands between two tries after an error of the system (no file descriptors left, say).
+constexpr Nanoseconds kRetry = std::chrono::seconds(1);
+
 Task<void> acceptAll(std::shared_ptr<tcp::acceptor> acceptor, sim::Device* device, Clock* clock, std::string name) {
   for (;;) {
-    tcp::socket socket = co_await acceptor->async_accept(asio::use_awaitable);
-    boost::system::error_code ignored;
-    socket.set_option(tcp::no_delay(true), ignored);
+    tcp::socket socket(acceptor->get_executor());
+    boost::system::error_code ec;
+    co_await acceptor->async_accept(socket, asio::redirect_error(asio::use_awaitable, ec));
+    if (ec) {
+      co_await waitFor(*clock, kRetry);
+      continue;
+    }
+    socket.set_option(tcp::no_delay(true), ec);
     std::shared_ptr<transport::Stream> stream =
         std::make_shared<transport::AsioStream<tcp::socket>>(*clock, name, std::move(socket));
     co_await serve(stream, *device, *clock);
@@ -76,32 +77,34 @@ Result<Served> Hosting::onTcp(const std::string& device, int port) {
   return Served{device, name};
 }
 
-Result<Served> Hosting::onPty(const std::string& device, const std::string& link) {
-  const auto wrong = [&](const char* what) {
-    return fail(ErrorCode::io, std::string(what) + ": " + std::strerror(errno), link, "check the folder");
-  };
-  const int master = ::posix_openpt(O_RDWR | O_NOCTTY | O_CLOEXEC);
-  if (master < 0 || ::grantpt(master) != 0 || ::unlockpt(master) != 0) return wrong("cannot make a pseudo terminal");
-  char slaveName[128];
-  if (::ptsname_r(master, slaveName, sizeof slaveName) != 0) return wrong("cannot make a pseudo terminal");
-  const int slave = ::open(slaveName, O_RDWR | O_NOCTTY | O_CLOEXEC);
-  if (slave < 0) return wrong("cannot open the pseudo terminal");
-  termios settings{};
-  ::tcgetattr(slave, &settings);
-  ::cfmakeraw(&settings);
-  ::tcsetattr(slave, TCSANOW, &settings);
-  ::unlink(link.c_str());
-  if (::symlink(slaveName, link.c_str()) != 0) return wrong("cannot link the pseudo terminal");
-  state_->kept.push_back(slave);
-  state_->links.push_back(link);
+/// Serves one device on its pseudo terminal; when its plug is pulled the terminal goes, and a new one comes with it.
+Task<void> Hosting::servePty(std::shared_ptr<State> state, std::string device, std::string link) {
+  sim::Device& simulated = state->bench.device(device);
+  for (;;) {
+    auto& pty = state->ptys[device];
+    if (!pty) {
+      auto made = PtyLink::make(link);
+      if (!made) co_return;
+      pty = std::move(*made);
+    }
+    std::shared_ptr<transport::Stream> stream = std::make_shared<transport::AsioStream<asio::posix::stream_descriptor>>(
+        state->clock, "pty:" + link, asio::posix::stream_descriptor(state->context, pty->takeMaster()));
+    co_await serve(stream, simulated, state->clock);
+    stream->close();
+    pty.reset();
+    const Instant now = state->clock.now(), back = simulated.absentUntil(now).value_or(now + kRetry);
+    if (back == Instant::max()) co_return;
+    co_await waitUntil(state->clock, back);
+  }
+}
 
-  asio::posix::stream_descriptor descriptor(state_->context, master);
-  std::shared_ptr<transport::Stream> stream = std::make_shared<transport::AsioStream<asio::posix::stream_descriptor>>(
-      state_->clock, "pty:" + link, std::move(descriptor));
-  sim::Device* one = &state_->bench.device(device);
-  Clock* clock = &state_->clock;
+Result<Served> Hosting::onPty(const std::string& device, const std::string& link) {
+  auto pty = PtyLink::make(link);
+  if (!pty) return std::unexpected(std::move(pty.error()));
+  state_->ptys[device] = std::move(*pty);
   asio::co_spawn(
-      state_->context, [stream, one, clock]() -> Task<void> { return serve(stream, *one, *clock); }, asio::detached);
+      state_->context,
+      [state = state_, device, link]() -> Task<void> { return servePty(state, device, link); }, asio::detached);
   return Served{device, "serial:" + link};
 }
 

@@ -7,6 +7,7 @@
 
 #include "driver/core/clock.h"
 #include "driver/core/error.h"
+#include "driver/core/task.h"
 #include "driver/description/rack.h"
 #include "sim/amplifier/bench.h"
 
@@ -27,12 +28,14 @@ class Hosting {
 
   /// Listens on a TCP port of the loopback interface; 0 takes a free one. Errors: io.
   Result<Served> onTcp(const std::string& device, int port);
-  /// Makes a pseudo terminal and, at `link`, a symbolic link to it. Errors: io.
+  /// Makes a pseudo terminal and, at `link`, a symbolic link to it; the link goes when this goes. Errors: io, also
+  /// when anything but an earlier simulator's link stands there.
   Result<Served> onPty(const std::string& device, const std::string& link);
 
  private:
   struct State;
-  std::unique_ptr<State> state_;
+  static Task<void> servePty(std::shared_ptr<State> state, std::string device, std::string link);
+  std::shared_ptr<State> state_;
 };
 
 }  // namespace shuntwright::simhost

@@ -1,5 +1,6 @@
 #include "tools/simhost/serve.h"
 
+#include <algorithm>
 #include <array>
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/awaitable.hpp>
@@ -13,13 +14,25 @@ namespace shuntwright::simhost {
 
 namespace asio = boost::asio;
 
+namespace {
+// A device whose client reads nothing for so long has lost what it had to say.
+constexpr Nanoseconds kPatience = std::chrono::seconds(10);
+}  // namespace
+
 Task<void> serve(std::shared_ptr<transport::Stream> stream, sim::Device& device, Clock& clock) {
   std::array<std::byte, 4096> buffer;
+  device.connected(clock.now());
   for (;;) {
     const Bytes out = device.take();
     if (!out.empty()) {
+      const Instant began = clock.now();
       auto sent = co_await stream->write(out, Instant::max());
       if (!sent) co_return;
+      if (clock.now() - began > kPatience) device.connected(clock.now());
+    }
+    if (device.absentUntil(clock.now())) {
+      stream->close();
+      co_return;
     }
     auto got = co_await stream->read(buffer, device.nextEvent());
     if (got) {
@@ -38,6 +51,9 @@ transport::Opener memoryOpener(sim::Bench& bench, Clock& clock) {
     struct Open {
       static Task<Result<std::unique_ptr<transport::Stream>>> run(sim::Bench* bench, Clock* clock, std::string name) {
         auto executor = co_await asio::this_coro::executor;
+        if (bench->device(name).absentUntil(clock->now())) {
+          co_return fail(ErrorCode::io, "nothing is connected there", "simulated:" + name, "plug the device in");
+        }
         transport::StreamPair ends = transport::memoryPair(*clock, "simulated:" + name);
         std::shared_ptr<transport::Stream> far = std::move(ends.second);
         sim::Device* device = &bench->device(name);
@@ -55,7 +71,9 @@ Instant ScaledClock::now() const {
 }
 
 Clock::Ticket ScaledClock::at(Instant when, std::function<void()> callback) {
-  return real_.at(start_ + fromSeconds(seconds(when - start_) / speed_), std::move(callback));
+  // Slowed down, what is centuries away has no place in 64 bits of nanoseconds.
+  constexpr double kLongest_s = 1e9;
+  return real_.at(start_ + fromSeconds(std::min(seconds(when - start_) / speed_, kLongest_s)), std::move(callback));
 }
 
 }  // namespace shuntwright::simhost

@@ -10,8 +10,8 @@
 
 namespace shuntwright::simhost {
 
-/// Joins a simulated device to a stream until the other end goes: bytes in, bytes out, and its own events in
-/// between. Over a memory pair, a TCP connection or a pty alike. Device and clock must outlive it.
+/// Joins a simulated device to a stream until the other end goes, or the device's plug is pulled: bytes in, bytes
+/// out, and its own events in between. Over a memory pair, a TCP connection or a pty alike. Device and clock must outlive it.
 Task<void> serve(std::shared_ptr<transport::Stream> stream, sim::Device& device, Clock& clock);
 
 /// Opens every device of a rack as a simulated one in memory. Bench and clock must outlive the streams.

@@ -5,8 +5,6 @@
 
 #include <cmath>
 
-#include "sim/physics/specimen.h"
-
 namespace shuntwright::sim {
 namespace {
 
@@ -46,35 +44,35 @@ TEST(NodeCircuit, everyShuntPosition) {
   EXPECT_NEAR(threeWire(120, 10, 59880, P, M), -0.500500501, 5e-10);
 }
 
-// Simply supported beam, load F at mid-span: the largest moment is F L / 4 (bending theory).
-TEST(Beam, momentAtMidSpanIsFLOver4) {
-  Beam beam;
-  const double load_N = 100e3, fibre_m = 0.3;
-  const double expected = load_N * 12 / 4 * fibre_m / (beam.modulus_GPa * 1e9 * beam.secondMoment_m4);
-  GaugePlace place{6.0 * units::metre, fibre_m * units::metre, 0};
-  EXPECT_NEAR(beamStrain(beam, place, load_N * units::newton), expected, 1e-15);
-  place.angle_deg = 90;
-  EXPECT_NEAR(beamStrain(beam, place, load_N * units::newton), -0.3 * expected, 1e-15);
-  place = {0.0 * units::metre, fibre_m * units::metre, 0};
-  EXPECT_EQ(beamStrain(beam, place, load_N * units::newton), 0);
+// Two equal dividers joined by 0 ohm at their middles: one node, exactly; and a loop of 0 ohm does no harm.
+TEST(NodeCircuit, zeroOhmMakesOneNode) {
+  NodeCircuit c;
+  c.connect(D, B, 0);
+  c.connect(B, A, 0);
+  c.connect(A, D, 0);
+  c.hold(P, 1);
+  c.hold(N, 0);
+  c.connect(P, D, 300);
+  c.connect(A, N, 100);
+  const auto v = c.solve();
+  EXPECT_DOUBLE_EQ(v[D], 0.25);
+  EXPECT_EQ(v[B], v[D]);
+  EXPECT_EQ(v[A], v[D]);
 }
 
-// Strain transformation of a uniaxial field: e45 = (e0 + e90) / 2 for principal axes along and across.
-TEST(Beam, rosetteOnThePrincipalAxes) {
-  const Beam beam;
-  const auto at = [&](double angle) {
-    return beamStrain(beam, {3.0 * units::metre, 0.25 * units::metre, angle}, 50.0 * units::kilonewton);
-  };
-  EXPECT_NEAR(at(45), (at(0) + at(90)) / 2, 1e-18);
-}
-
-TEST(LoadProgramme, rampsAndHolds) {
-  const Scenario s;
-  EXPECT_EQ(loadPart(s, -1), 0);
-  EXPECT_NEAR(loadPart(s, 2), 0.1, 1e-12);
-  EXPECT_EQ(loadPart(s, 5), 0.2);
-  EXPECT_EQ(loadPart(s, 45), 1.0);
-  EXPECT_EQ(loadPart(s, 1000), 0);
+// An unbalanced bridge with a resistor between its middles: Kirchhoff's current law at both.
+TEST(NodeCircuit, currentsAtEveryNodeAddUpToNothing) {
+  NodeCircuit c;
+  c.hold(P, 10);
+  c.hold(N, 0);
+  c.connect(P, A, 1);
+  c.connect(A, N, 2);
+  c.connect(P, B, 3);
+  c.connect(B, N, 4);
+  c.connect(A, B, 5);
+  const auto v = c.solve();
+  EXPECT_NEAR((10 - v[A]) / 1 - v[A] / 2 - (v[A] - v[B]) / 5, 0, 1e-14);
+  EXPECT_NEAR((10 - v[B]) / 3 - v[B] / 4 + (v[A] - v[B]) / 5, 0, 1e-14);
 }
 
 }  // namespace
