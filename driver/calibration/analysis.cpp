@@ -10,6 +10,10 @@
 namespace shuntwright::calibration {
 
 using namespace units;
+using metrology::Component;
+using metrology::coverageHalfWidth;
+using metrology::Shape;
+using metrology::studentFactor;
 using description::Channel;
 using description::Rack;
 

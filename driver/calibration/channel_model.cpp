@@ -9,6 +9,7 @@
 namespace shuntwright::calibration {
 
 using namespace units;
+using metrology::Shape;
 using description::Channel;
 using description::Rack;
 using description::Terminal;

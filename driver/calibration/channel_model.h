@@ -6,7 +6,7 @@
 #include <vector>
 
 #include "driver/bridge/circuit.h"
-#include "driver/calibration/coverage.h"
+#include "driver/metrology/coverage.h"
 #include "driver/core/error.h"
 #include "driver/description/rack.h"
 
@@ -52,7 +52,7 @@ struct UncertainInput {
   std::string quantity;
   double value = 0;
   std::string unit;
-  Shape shape = Shape::rectangular;
+  metrology::Shape shape = metrology::Shape::rectangular;
   double standardUncertainty = 0;  ///< in `unit`
   double degreesOfFreedom = std::numeric_limits<double>::infinity();
   std::function<void(ChannelModel&, double delta)> shift;  ///< moves it by delta, in `unit`

@@ -7,6 +7,11 @@
 namespace shuntwright::calibration {
 
 using namespace units;
+using metrology::Component;
+using metrology::coverageHalfWidth;
+using metrology::Shape;
+using metrology::studentFactor;
+using metrology::WeightedDegrees;
 using description::Channel;
 using description::Rack;
 using description::Unbalance;
@@ -49,7 +54,7 @@ void conclude(Budget& budget) {
     degrees.push_back({u, line.degreesOfFreedom});
   }
   budget.standardUncertainty_percent = std::sqrt(variance);
-  budget.effectiveDegreesOfFreedom = effectiveDegrees(degrees);
+  budget.effectiveDegreesOfFreedom = metrology::effectiveDegrees(degrees);
   const double student = studentFactor(budget.effectiveDegreesOfFreedom) / studentFactor(kInfinity);
   budget.expandedUncertainty_percent = coverageHalfWidth(components) * student;
   budget.coverageFactor = budget.standardUncertainty_percent > 0

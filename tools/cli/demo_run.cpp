@@ -11,7 +11,6 @@
 #include <limits>
 #include <map>
 
-#include "driver/calibration/coverage.h"
 #include "driver/description/wiring.h"
 #include "driver/rack/live_rack.h"
 #include "driver/recording/load_steps.h"

@@ -2,9 +2,12 @@
 
 #include <span>
 
-namespace shuntwright::calibration {
+#include "driver/metrology/distribution.h"
 
-enum class Shape { normal, rectangular };
+namespace shuntwright::metrology {
+
+/// The coverage probability that is stated unless another is asked for.
+inline constexpr double kCoverage = 0.9545;
 
 /// One contribution to a sum: its standard uncertainty (any unit, the same for all) and its shape.
 struct Component {
@@ -12,12 +15,10 @@ struct Component {
   double standardUncertainty = 0;
 };
 
-inline constexpr double kCoverage = 0.9545;
-
-/// Half-width of the symmetric interval that holds `probability` of a sum of independent, centred normal
-/// and rectangular contributions. The distribution function is convolved numerically (JCGM 101 case of a
-/// linear model, without drawing random numbers), so that a budget with one dominant rectangular input is
-/// not given the factor 2 of a normal one. Accurate to 1e-3 of itself. 0 for no contributions.
+/// Half-width of the symmetric interval that holds `probability` of a sum of independent, centred
+/// contributions. The distribution function is convolved numerically (JCGM 101 case of a linear model,
+/// without drawing random numbers), so that a budget with one dominant rectangular input is not given the
+/// factor 2 of a normal one. Accurate to 1e-3 of itself. 0 for no contributions.
 double coverageHalfWidth(std::span<const Component> components, double probability = kCoverage);
 
 /// Student's factor for two-sided `probability` and effective degrees of freedom (>= 1, infinity allowed).
@@ -30,4 +31,4 @@ struct WeightedDegrees {
 };
 double effectiveDegrees(std::span<const WeightedDegrees> contributions);
 
-}  // namespace shuntwright::calibration
+}  // namespace shuntwright::metrology

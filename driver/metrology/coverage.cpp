@@ -1,20 +1,20 @@
-#include "driver/calibration/coverage.h"
+#include "driver/metrology/coverage.h"
 
 #include <algorithm>
 #include <boost/math/distributions/normal.hpp>
 #include <boost/math/distributions/students_t.hpp>
 #include <cmath>
-#include <limits>
 #include <numbers>
 #include <vector>
 
-namespace shuntwright::calibration {
+namespace shuntwright::metrology {
 namespace {
 
 /// A distribution function on a regular grid, 0 to its left and 1 to its right.
 class GridDistribution {
  public:
-  GridDistribution(double limit, std::size_t points) : low_(-limit), step_(2 * limit / static_cast<double>(points - 1)), f_(points) {}
+  GridDistribution(double limit, std::size_t points)
+      : low_(-limit), step_(2 * limit / static_cast<double>(points - 1)), f_(points) {}
 
   double x(std::size_t i) const { return low_ + step_ * static_cast<double>(i); }
 
@@ -26,7 +26,8 @@ class GridDistribution {
   /// Adds an independent rectangular contribution: F(x) becomes its mean over [x - a, x + a].
   void convolveRectangular(double a) {
     std::vector<double> integral(f_.size(), 0.0);
-    for (std::size_t i = 1; i < f_.size(); ++i) integral[i] = integral[i - 1] + 0.5 * (f_[i - 1] + f_[i]) * step_;
+    for (std::size_t i = 1; i < f_.size(); ++i)
+      integral[i] = integral[i - 1] + 0.5 * (f_[i - 1] + f_[i]) * step_;
     const auto at = [&](double where) {
       const double position = (where - low_) / step_;
       if (position <= 0) return 0.0;
@@ -39,6 +40,17 @@ class GridDistribution {
     };
     std::vector<double> next(f_.size());
     for (std::size_t i = 0; i < f_.size(); ++i) next[i] = (at(x(i) + a) - at(x(i) - a)) / (2 * a);
+    f_ = std::move(next);
+  }
+
+  /// Adds an independent U-shaped contribution: F(x) becomes its mean over x - a cos(angle).
+  void convolveArcsine(double a) {
+    constexpr int kAngles = 200;
+    std::vector<double> next(f_.size(), 0.0);
+    for (int k = 0; k < kAngles; ++k) {
+      const double shift = a * std::cos(std::numbers::pi * (k + 0.5) / kAngles);
+      for (std::size_t i = 0; i < f_.size(); ++i) next[i] += at(x(i) - shift) / kAngles;
+    }
     f_ = std::move(next);
   }
 
@@ -56,46 +68,71 @@ class GridDistribution {
   std::vector<double> f_;
 };
 
+/// A bounded contribution that the grid resolves.
+struct Bounded {
+  Shape shape;
+  double halfWidth;
+  double variance() const { return halfWidth * halfWidth / (shape == Shape::arcsine ? 2 : 3); }
+};
+
 }  // namespace
 
 double coverageHalfWidth(std::span<const Component> components, double probability) {
   double variance = 0;
-  std::vector<double> halfWidths;
+  std::vector<Bounded> bounded;
   for (const auto& c : components) {
     if (c.standardUncertainty <= 0) continue;
-    if (c.shape == Shape::normal) {
-      variance += c.standardUncertainty * c.standardUncertainty;
-    } else {
-      halfWidths.push_back(c.standardUncertainty * std::numbers::sqrt3);
+    const double a = Distribution{c.shape, 0, c.standardUncertainty, kInfinity}.halfWidth();
+    switch (c.shape) {
+      case Shape::normal:
+        variance += c.standardUncertainty * c.standardUncertainty;
+        break;
+      case Shape::triangular:
+        bounded.insert(bounded.end(), 2, Bounded{Shape::rectangular, a / 2});
+        break;
+      default:
+        bounded.push_back({c.shape, a});
     }
   }
-  std::sort(halfWidths.begin(), halfWidths.end(), std::greater<>());
+  std::sort(bounded.begin(), bounded.end(),
+            [](auto& one, auto& other) { return one.halfWidth > other.halfWidth; });
   constexpr std::size_t kPoints = 2001;
   const auto gridLimit = [&] {
     double sum = 6.5 * std::sqrt(variance);
-    for (const double a : halfWidths) sum += a;
+    for (const auto& b : bounded) sum += b.halfWidth;
     return sum;
   };
-  // Rectangles narrower than a few grid steps act as normal contributions.
-  while (!halfWidths.empty() && halfWidths.back() < 4 * (2 * gridLimit() / kPoints) &&
-         (halfWidths.size() > 1 || variance > 0)) {
-    variance += halfWidths.back() * halfWidths.back() / 3;
-    halfWidths.pop_back();
+  // Bounded contributions narrower than a few grid steps act as normal ones.
+  while (!bounded.empty() && bounded.back().halfWidth < 4 * (2 * gridLimit() / kPoints) &&
+         (bounded.size() > 1 || variance > 0)) {
+    variance += bounded.back().variance();
+    bounded.pop_back();
   }
   const double limit = gridLimit();
   if (limit == 0) return 0;
   GridDistribution distribution(limit, kPoints);
   std::size_t used = 0;
   const double sigma = std::sqrt(variance);
-  if (sigma > 2 * (2 * limit / kPoints) || halfWidths.empty()) {
+  if (sigma > 2 * (2 * limit / kPoints) || bounded.empty()) {
     distribution.fill([&](double v) { return 0.5 * std::erfc(-v / (sigma * std::numbers::sqrt2)); });
   } else {
-    if (variance > 0) halfWidths.front() = std::sqrt(halfWidths.front() * halfWidths.front() + 3 * variance);
-    const double a = halfWidths.front();
-    distribution.fill([&](double v) { return std::clamp((v + a) / (2 * a), 0.0, 1.0); });
+    // What is left of the normal part is too narrow for the grid: it widens the widest contribution.
+    const Bounded& widest = bounded.front();
+    const double a = widest.halfWidth * std::sqrt(1 + variance / widest.variance());
+    distribution.fill([&](double v) {
+      const double t = std::clamp(v / a, -1.0, 1.0);
+      return widest.shape == Shape::arcsine ? 0.5 + std::asin(t) / std::numbers::pi : 0.5 * (1 + t);
+    });
     used = 1;
   }
-  for (std::size_t i = used; i < halfWidths.size(); ++i) distribution.convolveRectangular(halfWidths[i]);
+  for (std::size_t i = used; i < bounded.size(); ++i) {
+    const Bounded& b = bounded[i];
+    if (b.shape == Shape::arcsine) {
+      distribution.convolveArcsine(b.halfWidth);
+    } else {
+      distribution.convolveRectangular(b.halfWidth);
+    }
+  }
 
   double low = 0, high = limit;
   for (int i = 0; i < 60; ++i) {
@@ -120,7 +157,7 @@ double effectiveDegrees(std::span<const WeightedDegrees> contributions) {
     variance += v;
     if (std::isfinite(c.degreesOfFreedom) && c.degreesOfFreedom > 0) sum += v * v / c.degreesOfFreedom;
   }
-  return sum > 0 ? variance * variance / sum : std::numeric_limits<double>::infinity();
+  return sum > 0 ? variance * variance / sum : kInfinity;
 }
 
-}  // namespace shuntwright::calibration
+}  // namespace shuntwright::metrology
