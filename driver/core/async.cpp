@@ -4,6 +4,7 @@
 #include <boost/asio/any_completion_handler.hpp>
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/associated_cancellation_slot.hpp>
+#include <boost/asio/associated_executor.hpp>
 #include <boost/asio/awaitable.hpp>
 #include <boost/asio/bind_cancellation_slot.hpp>
 #include <boost/asio/cancellation_signal.hpp>
@@ -22,6 +23,7 @@ using boost::system::error_code;
 struct Event::Waiter {
   asio::any_completion_handler<void(error_code, bool)> handler;
   asio::any_io_executor executor;
+  std::weak_ptr<Waiters> waiters;
   Clock* clock = nullptr;
   std::weak_ptr<const void> clockAlive;
   Clock::Ticket ticket = 0;
@@ -29,60 +31,54 @@ struct Event::Waiter {
   void finish(error_code ec, bool notified) {
     if (!handler) return;
     if (ticket != 0 && !clockAlive.expired()) clock->cancel(ticket);
-    asio::post(executor, [h = std::make_shared<decltype(handler)>(std::exchange(handler, nullptr)), ec,
-                          notified] { std::move (*h)(ec, notified); });
+    asio::post(executor, [h = std::exchange(handler, nullptr), ec, notified]() mutable {
+      std::move(h)(ec, notified);
+    });
+  }
+
+  /// Ends the wait from outside the notifications: by cancellation or at its deadline.
+  void give(error_code ec) {
+    if (const auto list = waiters.lock()) {
+      std::erase_if(*list, [this](const auto& one) { return one.get() == this; });
+    }
+    finish(ec, false);
   }
 };
 
-Event::Event() : waiters_(std::make_shared<std::list<std::shared_ptr<Waiter>>>()) {}
+Event::Event() : waiters_(std::make_shared<Waiters>()) {}
 
 Event::~Event() {
   const auto left = std::exchange(*waiters_, {});
   for (const auto& waiter : left) waiter->finish(asio::error::operation_aborted, false);
 }
 
-namespace {
-
-using Waiters = std::list<std::shared_ptr<Event::Waiter>>;
-
-/// Ends one wait from outside the notifications: by cancellation or at its deadline.
-void endWait(const std::weak_ptr<Waiters>& waiters, const std::weak_ptr<Event::Waiter>& waiter,
-             error_code ec) {
-  const auto pending = waiter.lock();
-  if (!pending) return;
-  if (const auto list = waiters.lock()) list->remove(pending);
-  pending->finish(ec, false);
-}
-
-Task<bool> waitOn(std::shared_ptr<Waiters> waiters, Clock* clock, Instant deadline) {
-  auto executor = co_await asio::this_coro::executor;
-  auto initiate = [waiters, executor, clock, deadline](auto handler) {
-    auto waiter = std::make_shared<Event::Waiter>();
-    waiter->executor = executor;
+Task<bool> Event::waitOn(const std::shared_ptr<Waiters>& waiters, Clock* clock, Instant deadline) {
+  auto initiate = [waiters, clock, deadline](auto handler) {
+    auto waiter = std::make_shared<Waiter>();
+    waiter->executor = asio::get_associated_executor(handler);
+    waiter->waiters = waiters;
     auto slot = asio::get_associated_cancellation_slot(handler);
     // Asio 1.81's move assignment copies; swap does not.
     decltype(waiter->handler)(std::move(handler)).swap(waiter->handler);
     waiters->push_back(waiter);
-    const std::weak_ptr<Waiters> list = waiters;
-    const std::weak_ptr<Event::Waiter> weak = waiter;
+    const std::weak_ptr<Waiter> weak = waiter;
     if (slot.is_connected()) {
-      slot.assign([list, weak](asio::cancellation_type type) {
-        if (type != asio::cancellation_type::none) endWait(list, weak, asio::error::operation_aborted);
+      slot.assign([weak](asio::cancellation_type type) {
+        if (type == asio::cancellation_type::none) return;
+        if (const auto pending = weak.lock()) pending->give(asio::error::operation_aborted);
       });
     }
     if (clock && deadline != Instant::max()) {
       waiter->clock = clock;
       waiter->clockAlive = clock->alive();
-      waiter->ticket = clock->at(deadline, [list, weak] { endWait(list, weak, {}); });
+      waiter->ticket = clock->at(deadline, [weak] {
+        if (const auto pending = weak.lock()) pending->give({});
+      });
     }
   };
-  // Named first: g++ 12 destroys captures twice when the lambda stands inside the co_await expression.
-  auto waiting = asio::async_initiate<const asio::use_awaitable_t<>&, void(error_code, bool)>(
-      initiate, asio::use_awaitable);
-  co_return co_await std::move(waiting);
+  return asio::async_initiate<const asio::use_awaitable_t<>&, void(error_code, bool)>(std::move(initiate),
+                                                                                      asio::use_awaitable);
 }
-
-}  // namespace
 
 Task<void> Event::wait() {
   co_await waitOn(waiters_, nullptr, Instant::max());

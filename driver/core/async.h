@@ -3,7 +3,6 @@
 #include <cstdint>
 #include <deque>
 #include <functional>
-#include <list>
 #include <memory>
 #include <vector>
 
@@ -26,10 +25,12 @@ class Event {
   Task<bool> wait(Clock& clock, Instant deadline);
   void notifyAll();
 
-  struct Waiter;
-
  private:
-  std::shared_ptr<std::list<std::shared_ptr<Waiter>>> waiters_;
+  struct Waiter;
+  using Waiters = std::vector<std::shared_ptr<Waiter>>;
+  static Task<bool> waitOn(const std::shared_ptr<Waiters>& waiters, Clock* clock, Instant deadline);
+
+  std::shared_ptr<Waiters> waiters_;
 };
 
 /// Gives a resource to one coroutine at a time, first come first served.

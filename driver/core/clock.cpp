@@ -1,5 +1,6 @@
 #include "driver/core/clock.h"
 
+#include <algorithm>
 #include <boost/asio/any_completion_handler.hpp>
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/associated_cancellation_slot.hpp>
@@ -122,36 +123,74 @@ void RealClock::cancel(Ticket ticket) {
 
 VirtualClock::~VirtualClock() {
   // What the callbacks own may cancel other tickets while it is destroyed.
-  deadlines_.clear();
-  const auto abandoned = std::exchange(queue_, {});
+  heap_.clear();
+  const auto abandoned = std::exchange(slots_, {});
+}
+
+bool VirtualClock::later(const Waiting& a, const Waiting& b) {
+  return a.deadline != b.deadline ? a.deadline > b.deadline : a.order > b.order;
+}
+
+VirtualClock::Slot* VirtualClock::slotOf(Ticket ticket) {
+  const auto index = static_cast<std::uint32_t>(ticket);
+  if (index >= slots_.size() || slots_[index].uses != ticket >> 32 || !slots_[index].callback) return nullptr;
+  return &slots_[index];
+}
+
+std::function<void()> VirtualClock::release(Slot& slot, Ticket ticket) {
+  free_.push_back(static_cast<std::uint32_t>(ticket));
+  return std::exchange(slot.callback, nullptr);
 }
 
 Clock::Ticket VirtualClock::at(Instant when, std::function<void()> callback) {
-  const Ticket ticket = ++last_;
-  const Instant deadline = when < now_ ? now_ : when;
-  queue_.emplace(Key{deadline, ticket}, std::move(callback));
-  deadlines_.emplace(ticket, deadline);
+  if (free_.empty()) {
+    free_.push_back(static_cast<std::uint32_t>(slots_.size()));
+    slots_.emplace_back();
+  }
+  const std::uint32_t index = free_.back();
+  free_.pop_back();
+  Slot& slot = slots_[index];
+  slot.callback = std::move(callback);
+  const Ticket ticket = (Ticket{++slot.uses} << 32) | index;
+  heap_.push_back({std::max(when, now_), asked_++, ticket});
+  std::push_heap(heap_.begin(), heap_.end(), later);
   return ticket;
 }
 
 void VirtualClock::cancel(Ticket ticket) {
-  const auto found = deadlines_.find(ticket);
-  if (found == deadlines_.end()) return;
-  queue_.erase(Key{found->second, ticket});
-  deadlines_.erase(found);
+  Slot* slot = slotOf(ticket);
+  if (!slot) return;
+  // Destroyed last: what it owns may come back here.
+  const auto cancelled = release(*slot, ticket);
+  dropStale();
+}
+
+void VirtualClock::dropStale() {
+  while (!heap_.empty() && !slotOf(heap_.front().ticket)) {
+    std::pop_heap(heap_.begin(), heap_.end(), later);
+    heap_.pop_back();
+  }
+  constexpr std::size_t kFew = 64;
+  const std::size_t alive = slots_.size() - free_.size();
+  if (heap_.size() < kFew || heap_.size() < 2 * alive) return;
+  std::erase_if(heap_, [this](const Waiting& one) { return !slotOf(one.ticket); });
+  std::make_heap(heap_.begin(), heap_.end(), later);
 }
 
 bool VirtualClock::advance() {
-  if (queue_.empty()) return false;
-  auto first = queue_.extract(queue_.begin());
-  now_ = first.key().first;
-  deadlines_.erase(first.key().second);
-  first.mapped()();
+  if (heap_.empty()) return false;
+  std::pop_heap(heap_.begin(), heap_.end(), later);
+  const Waiting first = heap_.back();
+  heap_.pop_back();
+  now_ = first.deadline;
+  const auto callback = release(*slotOf(first.ticket), first.ticket);
+  dropStale();
+  callback();
   return true;
 }
 
 Instant VirtualClock::next() const {
-  return queue_.empty() ? Instant::max() : queue_.begin()->first.first;
+  return heap_.empty() ? Instant::max() : heap_.front().deadline;
 }
 
 void runVirtual(asio::io_context& context, VirtualClock& clock, const std::function<bool()>& done) {

@@ -3,10 +3,10 @@
 #include <chrono>
 #include <cstdint>
 #include <functional>
-#include <map>
 #include <memory>
 #include <string>
 #include <utility>
+#include <vector>
 
 #include "driver/core/task.h"
 
@@ -89,11 +89,27 @@ class VirtualClock final : public Clock {
   Instant next() const;
 
  private:
-  using Key = std::pair<Instant, Ticket>;
+  /// One callback in the heap. A ticket is a slot and how often that slot was used before, so that a stale one is
+  /// seen at a glance; what was cancelled leaves the heap when it comes to the top, or when most of it is stale.
+  struct Waiting {
+    Instant deadline;
+    std::uint64_t order = 0;
+    Ticket ticket = 0;
+  };
+  struct Slot {
+    std::function<void()> callback;
+    std::uint32_t uses = 0;
+  };
+  static bool later(const Waiting& a, const Waiting& b);
+  Slot* slotOf(Ticket ticket);
+  std::function<void()> release(Slot& slot, Ticket ticket);
+  void dropStale();
+
   Instant now_;
-  Ticket last_ = 0;
-  std::map<Key, std::function<void()>> queue_;
-  std::map<Ticket, Instant> deadlines_;
+  std::uint64_t asked_ = 0;
+  std::vector<Waiting> heap_;
+  std::vector<Slot> slots_;
+  std::vector<std::uint32_t> free_;
 };
 
 /// Runs the context in virtual time until nothing is ready and nothing waits, or `done` says so.

@@ -224,8 +224,6 @@ Task<Result<Connection::Times>> Connection::ask(const description::Exchange& exc
   auto request = dialect_.request(exchange, values);
   if (!request)
     co_return std::unexpected(std::move(request.error()).wrap("the request cannot be made", where()));
-  const std::string place = where() + ", request " + quoted(request->text);
-
   auto turn = co_await turn_.lock();
   const int tries = 1 + std::max(0, profile().protocol.retries);
   for (int k = 1;; ++k) {
@@ -235,7 +233,7 @@ Task<Result<Connection::Times>> Connection::ask(const description::Exchange& exc
     const bool again = error.code == ErrorCode::timeout || error.code == ErrorCode::bad_answer;
     if (again && k < tries && !failure_) continue;
     if (again && tries > 1) error.message += " (tried " + std::to_string(k) + " times)";
-    error.where = place;
+    error.where = where() + ", request " + quoted(request->text);
     co_return std::unexpected(std::move(error));
   }
 }

@@ -26,20 +26,20 @@ struct Pipe {
 class MemoryStream final : public Stream {
  public:
   MemoryStream(Clock& clock, std::string name, std::shared_ptr<Pipe> in, std::shared_ptr<Pipe> out)
-      : clock_(clock), name_(std::move(name)), in_(std::move(in)), out_(std::move(out)) {}
+      : clock_(clock), name_(std::make_shared<const std::string>(std::move(name))), in_(std::move(in)), out_(std::move(out)) {}
   ~MemoryStream() override { close(); }
 
   Task<Result<std::size_t>> read(std::span<std::byte> into, Instant deadline) override {
     const auto in = in_;
     const auto own = closed_;
-    const std::string where = name_;
+    const auto where = name_;
     for (;;) {
-      if (*own) co_return fail(ErrorCode::io, "the connection was closed", where);
+      if (*own) co_return fail(ErrorCode::io, "the connection was closed", *where);
       if (in->taken < in->bytes.size()) break;
-      if (in->closed) co_return fail(ErrorCode::io, "the other end closed the connection", where);
+      if (in->closed) co_return fail(ErrorCode::io, "the other end closed the connection", *where);
       const bool woken = co_await in->changed.wait(clock_, deadline);
       if (!woken && !*own && in->taken == in->bytes.size() && !in->closed) {
-        co_return fail(ErrorCode::timeout, "nothing came in time", where);
+        co_return fail(ErrorCode::timeout, "nothing came in time", *where);
       }
     }
     const std::size_t count = std::min(into.size(), in->bytes.size() - in->taken);
@@ -53,8 +53,8 @@ class MemoryStream final : public Stream {
   }
 
   Task<Result<void>> write(ByteView bytes, Instant) override {
-    if (*closed_) co_return fail(ErrorCode::io, "the connection was closed", name_);
-    if (out_->closed) co_return fail(ErrorCode::io, "the other end closed the connection", name_);
+    if (*closed_) co_return fail(ErrorCode::io, "the connection was closed", *name_);
+    if (out_->closed) co_return fail(ErrorCode::io, "the other end closed the connection", *name_);
     append(out_->bytes, bytes);
     out_->changed.notifyAll();
     co_return Result<void>{};
@@ -67,11 +67,11 @@ class MemoryStream final : public Stream {
     out_->close();
   }
 
-  std::string name() const override { return name_; }
+  std::string name() const override { return *name_; }
 
  private:
   Clock& clock_;
-  std::string name_;
+  std::shared_ptr<const std::string> name_;  ///< outlives a read that the stream does not
   std::shared_ptr<Pipe> in_;
   std::shared_ptr<Pipe> out_;
   std::shared_ptr<bool> closed_ = std::make_shared<bool>(false);

@@ -39,6 +39,7 @@ void Bench::State::contact(const RelayRef& relay, bool closed, Instant when) {
   events.push_back({when, relay, closed});
   const auto found = wiring.find(relay);
   if (found == wiring.end()) return;
+  for (auto& [name, device] : devices) device->sampleBefore(when);
   const auto& described = *rack.device(relay.device)->profile->relays;
   for (const auto& [input, shunt] : found->second) {
     input->touch(when);
@@ -104,7 +105,7 @@ Bench::Bench(const description::Rack& rack, const Scenario& scenario, std::uint6
     const auto faults = s.scenario.devices.contains(described.name) ? s.scenario.devices.at(described.name) : DeviceFaults{};
     const std::string serial = described.serialNumber.empty() ? "SIM-" + described.name : described.serialNumber;
     s.devices[described.name] = std::make_unique<TextDevice>(profile, std::move(inputs), std::move(relays), faults,
-                                                             s.scenario.imperfections.answerDelay, start,
+                                                             s.scenario.imperfections, start,
                                                              s.random.fork(stream++), serial);
   }
 }

@@ -10,7 +10,16 @@ using namespace units;
 namespace {
 // How often the circuit is solved anew: under a moving load ten times a second, else only the leads' temperature
 // moves, over minutes.
-constexpr Nanoseconds kLoadTick = std::chrono::milliseconds(100), kIdleTick = std::chrono::seconds(1);
+constexpr Nanoseconds kLoadTick = std::chrono::milliseconds(100), kIdleTick = std::chrono::seconds(5);
+}  // namespace
+
+LoadClock::Phase LoadClock::mains(Instant when) const {
+  if (when != known_) {
+    const double angle = 2 * std::numbers::pi * 50 * seconds(when - start);
+    phase_ = {std::sin(angle), std::cos(angle)};
+    known_ = when;
+  }
+  return phase_;
 }
 
 BridgeInput::BridgeInput(TrueChannel channel, const Specimen& specimen, const LoadClock& clock,
@@ -29,6 +38,8 @@ BridgeInput::BridgeInput(TrueChannel channel, const Specimen& specimen, const Lo
       mainsPhase_(random_.uniform(0, 2 * std::numbers::pi)),
       // A real filter is not quite the one of the data sheet.
       timeConstant_s_(seconds(inputs.filterTimeConstant) * random_.uniform(0.9, 1.05)),
+      mainsSine_(imperfections.mains.in(volt_per_volt) * std::cos(mainsPhase_)),
+      mainsCosine_(imperfections.mains.in(volt_per_volt) * std::sin(mainsPhase_)),
       last_(clock.start),
       nextRefresh_(clock.start) {}
 
@@ -58,11 +69,14 @@ void BridgeInput::refresh(Instant now) {
 
 void BridgeInput::touch(Instant when) {
   if (!started_) refresh(when);
-  const double passed_s = seconds(when - last_);
-  if (passed_s > 0) {
-    filtered_ = timeConstant_s_ > 0 ? input_ + (filtered_ - input_) * std::exp(-passed_s / timeConstant_s_) : input_;
-    last_ = when;
+  const Nanoseconds passed = when - last_;
+  if (passed <= Nanoseconds(0)) return;
+  if (passed != lastStep_) {
+    lastStep_ = passed;
+    remains_ = timeConstant_s_ > 0 ? std::exp(-seconds(passed) / timeConstant_s_) : 0;
   }
+  filtered_ = input_ + (filtered_ - input_) * remains_;
+  last_ = when;
 }
 
 void BridgeInput::contactChanged(Instant when, bool closed) {
@@ -74,9 +88,8 @@ double BridgeInput::sample(Instant now) {
   touch(now);
   if (now >= nextRefresh_) refresh(now);
   const double noise = imperfections_.noise.in(volt_per_volt) * faults_.noiseScale * random_.normal();
-  const double mains = imperfections_.mains.in(volt_per_volt) *
-                       std::sin(2 * std::numbers::pi * 50 * seconds(now - clock_->start) + mainsPhase_);
-  return span_ * filtered_ + offset_ + drift_ + noise + mains;
+  const auto [sine, cosine] = clock_->mains(now);
+  return span_ * filtered_ + offset_ + drift_ + noise + mainsSine_ * sine + mainsCosine_ * cosine;
 }
 
 }  // namespace shuntwright::sim

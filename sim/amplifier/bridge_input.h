@@ -11,10 +11,21 @@
 
 namespace shuntwright::sim {
 
-/// When the load test began, if it has; shared by all inputs of a bench.
-struct LoadClock {
+/// What all inputs of a bench share: when it began, when the load test did, and the mains' phase.
+class LoadClock {
+ public:
   Instant start;
   Instant loadStart = Instant::max();
+
+  struct Phase {
+    double sine = 0, cosine = 1;
+  };
+  /// Of 50 Hz; inputs sampled together ask for the same time.
+  Phase mains(Instant when) const;
+
+ private:
+  mutable Instant known_ = Instant::min();
+  mutable Phase phase_;
 };
 
 /// One amplifier input with a channel on it: circuit, filter, span, offset, noise, converter.
@@ -51,6 +62,9 @@ class BridgeInput {
   ChannelFaults faults_;
   Random random_;
   double span_, offset_, driftPhase_, driftPeriod_s_, mainsPhase_, timeConstant_s_;
+  double mainsSine_, mainsCosine_;  ///< V/V
+  Nanoseconds lastStep_{0};         ///< between two samples, and what remains of a difference after it
+  double remains_ = 1;
   double input_ = 0;     ///< ratio at the terminals
   double filtered_ = 0;  ///< behind the filter
   double left_ = 0;      ///< strain left behind by closings (no zero return)

@@ -29,18 +29,18 @@ double decimalIn(const FieldTexts& fields, std::string_view name) {
 
 /// value x 10^-decimals in plain decimals; far cheaper than formatting a double.
 void addFixed(std::string& text, long long value, int decimals) {
-  char digits[40];
-  char* const end = digits + sizeof digits;
-  char* at = end;
-  const bool negative = value < 0;
-  auto left = static_cast<unsigned long long>(negative ? -value : value);
-  for (int k = 0; k < decimals || left > 0 || k == decimals; ++k) {
-    if (k == decimals && decimals > 0) *--at = '.';
-    *--at = static_cast<char>('0' + left % 10);
-    left /= 10;
-  }
-  if (negative) *--at = '-';
-  text.append(at, end);
+  char buffer[24];
+  const char* const digits = buffer;
+  const char* const end = std::to_chars(buffer, buffer + sizeof buffer, value < 0 ? -value : value).ptr;
+  if (value < 0) text += '-';
+  const auto count = static_cast<int>(end - digits);
+  const char* const point = end - std::min(count, decimals);
+  if (point == digits) text += '0';
+  text.append(digits, point);
+  if (decimals == 0) return;
+  text += '.';
+  text.append(static_cast<std::size_t>(std::max(0, decimals - count)), '0');
+  text.append(point, end);
 }
 
 std::string listSeparator(const description::Inputs& inputs) {
@@ -58,11 +58,13 @@ std::string listSeparator(const description::Inputs& inputs) {
 }  // namespace
 
 TextDevice::TextDevice(std::shared_ptr<const description::Profile> profile, std::vector<BridgeInput*> inputs,
-                       std::unique_ptr<RelayBoard> relays, DeviceFaults faults, Nanoseconds answerDelay, Instant start,
-                       Random random, std::string serialNumber)
-    : TextResponder(std::move(profile), std::move(faults), answerDelay, start, random, std::move(serialNumber)),
+                       std::unique_ptr<RelayBoard> relays, DeviceFaults faults, const Imperfections& imperfections,
+                       Instant start, Random random, std::string serialNumber)
+    : TextResponder(std::move(profile), std::move(faults), imperfections.answerDelay, start, random,
+                    std::move(serialNumber)),
       inputs_(std::move(inputs)),
-      relays_(std::move(relays)) {
+      relays_(std::move(relays)),
+      sendEvery_(imperfections.sendEvery) {
   const auto& described = TextResponder::profile().inputs;
   if (!described) return;
   perUnit_ = described->gives == ValueUnit::volt_per_volt         ? 1
@@ -73,7 +75,12 @@ TextDevice::TextDevice(std::shared_ptr<const description::Profile> profile, std:
   lastDigits_ = std::llround(digit_ * std::pow(10.0, decimals_));
   fullScale_ = described->fullScale.in(volt_per_volt) / perUnit_;
   separator_ = listSeparator(*described);
-  if (!described->rates.empty()) rate_Hz_ = described->rates.front().in(hertz);
+  setRate(described->rates.empty() ? rate_Hz_ : described->rates.front().in(hertz));
+}
+
+void TextDevice::setRate(double rate_Hz) {
+  rate_Hz_ = rate_Hz;
+  packet_ = std::max<std::uint64_t>(1, static_cast<std::uint64_t>(seconds(sendEvery_) * rate_Hz));
 }
 
 void TextDevice::connected(Instant now) {
@@ -99,12 +106,19 @@ void TextDevice::advance(Instant now) {
   release(now);
 }
 
-Instant TextDevice::frameDue() const { return streamStart_ + fromSeconds(static_cast<double>(frame_) / rate_Hz_); }
+void TextDevice::sampleBefore(Instant when) {
+  while (streaming_ && frameDue() < when) streamFrame(frameDue());
+}
+
+Instant TextDevice::frameDue(std::uint64_t ahead) const {
+  return streamStart_ + fromSeconds(static_cast<double>(frame_ + ahead) / rate_Hz_);
+}
 
 Instant TextDevice::nextEvent() const {
   Instant earliest = std::min(nextAnswer(), nextUnplugging());
   if (relays_) earliest = std::min(earliest, relays_->next());
-  if (streaming_) earliest = std::min(earliest, frameDue());
+  // A packet goes when its last frame is there.
+  if (streaming_) earliest = std::min(earliest, frameDue(packet_ - 1 - frame_ % packet_));
   return earliest;
 }
 
@@ -157,7 +171,7 @@ bool TextDevice::handleInputs(std::string_view line, Instant now) {
         refuse(4, streaming_ ? "streaming" : "no such rate", now);
         return true;
       }
-      rate_Hz_ = wanted;
+      setRate(wanted);
       answer(*d.setRate, *fields, now);
       return true;
     }

@@ -17,14 +17,16 @@ class TextDevice final : public Device, private TextResponder {
   /// @param inputs  one an input of the profile, null where nothing is connected; outlive this
   /// @param relays  null when the profile has none
   TextDevice(std::shared_ptr<const description::Profile> profile, std::vector<BridgeInput*> inputs,
-             std::unique_ptr<RelayBoard> relays, DeviceFaults faults, Nanoseconds answerDelay, Instant start,
-             Random random, std::string serialNumber);
+             std::unique_ptr<RelayBoard> relays, DeviceFaults faults, const Imperfections& imperfections,
+             Instant start, Random random, std::string serialNumber);
 
   void connected(Instant now) override;
   void feed(ByteView bytes, Instant now) override;
   void advance(Instant now) override;
   Bytes take() override { return takeBytes(); }
   Instant nextEvent() const override;
+  /// Takes the samples of a stream that are due before `when`: something that they see is about to change.
+  void sampleBefore(Instant when);
   std::optional<Instant> absentUntil(Instant now) const override { return unpluggedUntil(now); }
 
   RelayBoard* relays() { return relays_.get(); }
@@ -34,7 +36,8 @@ class TextDevice final : public Device, private TextResponder {
   bool handleInputs(std::string_view line, Instant now);
   bool handleRelays(std::string_view line, Instant now);
   void addValue(std::string& text, std::size_t input, Instant now);
-  Instant frameDue() const;
+  void setRate(double rate_Hz);
+  Instant frameDue(std::uint64_t ahead = 0) const;
   void streamFrame(Instant when);
 
   std::vector<BridgeInput*> inputs_;
@@ -46,6 +49,8 @@ class TextDevice final : public Device, private TextResponder {
   double fullScale_ = 1;     ///< shown unit
   std::string separator_ = ",";
   double rate_Hz_ = 10;
+  Nanoseconds sendEvery_;
+  std::uint64_t packet_ = 1;  ///< frames sent at once
   bool streaming_ = false;
   Instant streamStart_;
   std::uint64_t frame_ = 0;  ///< since the stream began

@@ -24,6 +24,7 @@ struct Imperfections {
   units::Ratio noise = 0.2e-3 * units::millivolt_per_volt;       ///< white, standard deviation of a sample
   units::Ratio mains = 0.1e-3 * units::millivolt_per_volt;       ///< 50 Hz amplitude
   Nanoseconds answerDelay = std::chrono::milliseconds(1);
+  Nanoseconds sendEvery = std::chrono::milliseconds(50);  ///< streamed frames go out this often, several at once
 };
 
 /// Something that a device does wrong from a certain request on.

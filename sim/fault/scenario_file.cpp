@@ -46,6 +46,7 @@ class ScenarioReader {
     t.take("noise", i.noise);
     t.take("mains", i.mains);
     t.take("answer_delay", i.answerDelay, {"0 s", "10 s"});
+    t.take("send_every", i.sendEvery, {"0 s", "1 s"});
     t.finish();
   }
 

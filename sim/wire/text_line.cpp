@@ -94,8 +94,8 @@ std::string digits(const Checksum& checksum, std::string_view line) {
       width = 4;
       break;
   }
-  char text[16];
-  std::snprintf(text, sizeof text, "%0*X", width, value);
+  std::string text(static_cast<std::size_t>(width), '0');
+  for (int k = width; k-- > 0; value >>= 4) text[static_cast<std::size_t>(k)] = "0123456789ABCDEF"[value & 15];
   return text;
 }
 

@@ -159,17 +159,16 @@ TEST(Interrupted, relaysAreOpenWhereverTheCalibrationIsCancelled) {
     ASSERT_FALSE(whole.calibrateCancelledAfter(static_cast<std::size_t>(-1)).has_value());
     total = whole.stepsTaken();
   }
-  ASSERT_GT(total, 500u);
+  ASSERT_GT(total, 300u);
   std::size_t cancelled = 0;
-  // Every step of the first shunt, then every 7th: a prime, so that all kinds of waits are met.
-  for (std::size_t at = 0; at < total; at += at < 400 ? 1 : 7) {
+  for (std::size_t at = 0; at < total; ++at) {
     VirtualBench world(shippedRack("small_bench.toml"));
     const auto thrown = world.calibrateCancelledAfter(at);
     if (thrown) ++cancelled;
     ASSERT_TRUE(world.bench->closedRelays().empty()) << "cancelled at step " << at;
     ASSERT_TRUE(world.journal.unresolved().empty()) << "cancelled at step " << at;
   }
-  EXPECT_GT(cancelled, total / 8);
+  EXPECT_GT(cancelled, total / 2);
 }
 
 }  // namespace

@@ -53,6 +53,7 @@ drift = "2 uV/V"
 noise = "3 uV/V"
 mains = "4 uV/V"
 answer_delay = "7 ms"
+send_every = "30 ms"
 [beam]
 span = "8 m"
 modulus = "70 GPa"
@@ -76,6 +77,7 @@ hold = "2 s"
   EXPECT_DOUBLE_EQ(i.noise.in(microvolt_per_volt), 3);
   EXPECT_DOUBLE_EQ(i.mains.in(microvolt_per_volt), 4);
   EXPECT_EQ(i.answerDelay, 7ms);
+  EXPECT_EQ(i.sendEvery, 30ms);
   EXPECT_DOUBLE_EQ(s.beam.span.in(metre), 8);
   EXPECT_DOUBLE_EQ(s.beam.modulus.in(gigapascal), 70);
   EXPECT_DOUBLE_EQ(s.beam.secondMoment_m4, 1e-4);
