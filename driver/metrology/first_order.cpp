@@ -8,20 +8,20 @@ namespace {
 
 using Outputs = std::vector<double>;
 
-/// The function at the means, moved by whole standard uncertainties in up to two inputs.
+/// The function at the means, moved by so many standard uncertainties in up to two inputs.
 class Evaluator {
  public:
   explicit Evaluator(const Model& model) : model_(model) {
     for (const auto& in : model.inputs) x_.push_back(in.distribution.mean);
   }
 
-  Result<Outputs> at(std::size_t i, int stepsOfI, std::size_t j, int stepsOfJ) {
+  Result<Outputs> at(std::size_t i, double stepsOfI, std::size_t j, double stepsOfJ) {
     std::vector<double> x = x_;
     x[i] += stepsOfI * u(i);
     x[j] += stepsOfJ * u(j);
     return call(x);
   }
-  Result<Outputs> at(std::size_t i, int steps) { return at(i, steps, i, 0); }
+  Result<Outputs> at(std::size_t i, double steps) { return at(i, steps, i, 0); }
   Result<Outputs> atMeans() { return call(x_); }
   double u(std::size_t i) const { return model_.inputs[i].distribution.standardUncertainty; }
 
@@ -36,55 +36,55 @@ class Evaluator {
   std::vector<double> x_;
 };
 
-/// Differences per standard uncertainty of every input, a row an output: f_i u_i.
-struct Differences {
-  Outputs values;
-  Matrix first;                   ///< f_i u_i
-  std::vector<Outputs> up, down;  ///< values one standard uncertainty up and down
-};
-
-Result<Differences> centralDifferences(Evaluator& function, const Model& model) {
-  const std::size_t n = model.inputs.size();
-  Differences d;
-  auto values = function.atMeans();
-  if (!values) return std::unexpected(std::move(values.error()));
-  d.values = std::move(*values);
-  d.first = Matrix(model.outputs, n);
-  d.up.assign(n, d.values);
-  d.down.assign(n, d.values);
-  for (std::size_t i = 0; i < n; ++i) {
-    if (function.u(i) == 0) continue;
-    for (const int side : {1, -1}) {
-      auto moved = function.at(i, side);
-      if (!moved) {
-        return std::unexpected(
-            std::move(moved.error())
-                .wrap("input \"" + model.inputs[i].quantity + "\" moved by its standard uncertainty"));
-      }
-      (side > 0 ? d.up : d.down)[i] = std::move(*moved);
-    }
-    for (std::size_t k = 0; k < model.outputs; ++k) d.first(k, i) = (d.up[i][k] - d.down[i][k]) / 2;
-  }
-  return d;
+Error at(Error error, const Model& model, std::size_t input) {
+  return std::move(error).wrap("input \"" + model.inputs[input].quantity + "\" moved about its value");
 }
 
-/// Variance of the second-order terms for each output. Takes the cubic part out of the first differences,
-/// which would otherwise count it a second time.
-Result<Outputs> secondOrder(Evaluator& function, const Model& model, Differences& d) {
+/// f_i u_i, a row an output: central differences at one standard uncertainty.
+Result<Matrix> centralDifferences(Evaluator& function, const Model& model) {
+  Matrix first(model.outputs, model.inputs.size());
+  for (std::size_t i = 0; i < first.columns; ++i) {
+    if (function.u(i) == 0) continue;
+    auto up = function.at(i, 1);
+    if (!up) return std::unexpected(at(std::move(up.error()), model, i));
+    auto down = function.at(i, -1);
+    if (!down) return std::unexpected(at(std::move(down.error()), model, i));
+    for (std::size_t k = 0; k < first.rows; ++k) first(k, i) = ((*up)[k] - (*down)[k]) / 2;
+  }
+  return first;
+}
+
+/// First derivatives as f_i u_i, free of the cubic part, and the variance of the second-order terms.
+struct SecondOrder {
+  Matrix first;
+  Outputs variance;
+};
+
+/// Derivatives of second and third order from differences at a tenth of the standard uncertainties: a whole
+/// one is too coarse for them, and far less loses digits.
+Result<SecondOrder> secondOrder(Evaluator& function, const Model& model, const Outputs& values) {
+  constexpr double h = 0.1;
   const std::size_t n = model.inputs.size();
-  Outputs variance(model.outputs, 0.0);
+  SecondOrder d{Matrix(model.outputs, n), Outputs(model.outputs, 0.0)};
+  std::vector<Outputs> up(n, values), down(n, values);
   for (std::size_t i = 0; i < n; ++i) {
     if (function.u(i) == 0) continue;
-    auto up = function.at(i, 2);
-    if (!up) return std::unexpected(std::move(up.error()));
-    auto down = function.at(i, -2);
-    if (!down) return std::unexpected(std::move(down.error()));
-    for (std::size_t k = 0; k < model.outputs; ++k) {
-      const double second = d.up[i][k] - 2 * d.values[k] + d.down[i][k];
-      const double third = ((*up)[k] - (*down)[k]) / 2 - (d.up[i][k] - d.down[i][k]);
-      d.first(k, i) -= third / 6;
-      variance[k] += second * second / 2 + d.first(k, i) * third;
+    Outputs moved[4];
+    const double steps[] = {2 * h, h, -h, -2 * h};
+    for (std::size_t s = 0; s < 4; ++s) {
+      auto value = function.at(i, steps[s]);
+      if (!value) return std::unexpected(at(std::move(value.error()), model, i));
+      moved[s] = std::move(*value);
     }
+    for (std::size_t k = 0; k < model.outputs; ++k) {
+      const double wide = moved[0][k] - moved[3][k], narrow = moved[1][k] - moved[2][k];
+      d.first(k, i) = (8 * narrow - wide) / (12 * h);
+      const double second = (moved[1][k] - 2 * values[k] + moved[2][k]) / (h * h);
+      const double third = (wide / 2 - narrow) / (h * h * h);
+      d.variance[k] += second * second / 2 + d.first(k, i) * third;
+    }
+    up[i] = std::move(moved[1]);
+    down[i] = std::move(moved[2]);
   }
   for (std::size_t i = 0; i < n; ++i) {
     for (std::size_t j = i + 1; j < n; ++j) {
@@ -92,21 +92,21 @@ Result<Outputs> secondOrder(Evaluator& function, const Model& model, Differences
       Outputs corner[2][2];
       for (const int a : {0, 1}) {
         for (const int b : {0, 1}) {
-          auto value = function.at(i, a == 0 ? 1 : -1, j, b == 0 ? 1 : -1);
-          if (!value) return std::unexpected(std::move(value.error()));
+          auto value = function.at(i, a == 0 ? h : -h, j, b == 0 ? h : -h);
+          if (!value) return std::unexpected(at(std::move(value.error()), model, i));
           corner[a][b] = std::move(*value);
         }
       }
       for (std::size_t k = 0; k < model.outputs; ++k) {
         const double pp = corner[0][0][k], pm = corner[0][1][k], mp = corner[1][0][k], mm = corner[1][1][k];
-        const double mixed = (pp - pm - mp + mm) / 4;
-        const double ijj = (pp + pm - mp - mm) / 2 - (d.up[i][k] - d.down[i][k]);
-        const double jii = (pp + mp - pm - mm) / 2 - (d.up[j][k] - d.down[j][k]);
-        variance[k] += mixed * mixed + d.first(k, i) * ijj + d.first(k, j) * jii;
+        const double mixed = (pp - pm - mp + mm) / (4 * h * h);
+        const double ijj = ((pp + pm - mp - mm) / 2 - (up[i][k] - down[i][k])) / (h * h * h);
+        const double jii = ((pp + mp - pm - mm) / 2 - (up[j][k] - down[j][k])) / (h * h * h);
+        d.variance[k] += mixed * mixed + d.first(k, i) * ijj + d.first(k, j) * jii;
       }
     }
   }
-  return variance;
+  return d;
 }
 
 /// The variance that a group of inputs, correlated with each other, brings to an output.
@@ -138,37 +138,34 @@ double Estimate::expandedUncertainty(double probability) const {
 Result<FirstOrderResult> firstOrder(const Model& model, const FirstOrderOptions& options) {
   if (auto sound = check(model); !sound) return std::unexpected(std::move(sound.error()));
   const std::size_t n = model.inputs.size();
+  const auto& given = options.sensitivities;
+  if (given && (given->rows != model.outputs || given->columns != n)) {
+    return fail(ErrorCode::bad_use, "the sensitivities given need a row an output and a column an input");
+  }
+  if (options.secondOrder && !model.correlations.empty()) {
+    return fail(ErrorCode::bad_use, "second-order terms are known for independent inputs only", {},
+                "propagate by Monte Carlo");
+  }
   Evaluator function(model);
-  Differences d;
-  if (options.sensitivities) {
-    if (options.sensitivities->rows != model.outputs || options.sensitivities->columns != n) {
-      return fail(ErrorCode::bad_use, "the sensitivities given need a row an output and a column an input");
-    }
-    auto values = function.atMeans();
-    if (!values) return std::unexpected(std::move(values.error()));
-    d.values = std::move(*values);
-    d.first = *options.sensitivities;
-    for (std::size_t k = 0; k < model.outputs; ++k) {
-      for (std::size_t i = 0; i < n; ++i) d.first(k, i) *= function.u(i);
-    }
-  }
-  if (!options.sensitivities || options.secondOrder) {
-    auto differences = centralDifferences(function, model);
-    if (!differences) return std::unexpected(std::move(differences.error()));
-    if (options.sensitivities) differences->first = d.first;
-    d = std::move(*differences);
-  }
+  auto values = function.atMeans();
+  if (!values) return std::unexpected(std::move(values.error()));
+  Matrix first;  // f_i u_i
   Outputs second(model.outputs, 0.0);
   if (options.secondOrder) {
-    if (!model.correlations.empty()) {
-      return fail(ErrorCode::bad_use, "second-order terms are known for independent inputs only", {},
-                  "propagate by Monte Carlo");
+    auto terms = secondOrder(function, model, *values);
+    if (!terms) return std::unexpected(std::move(terms.error()));
+    first = std::move(terms->first);
+    second = std::move(terms->variance);
+  } else if (!given) {
+    auto differences = centralDifferences(function, model);
+    if (!differences) return std::unexpected(std::move(differences.error()));
+    first = std::move(*differences);
+  }
+  if (given) {
+    first = *given;
+    for (std::size_t k = 0; k < model.outputs; ++k) {
+      for (std::size_t i = 0; i < n; ++i) first(k, i) *= function.u(i);
     }
-    const Matrix given = d.first;
-    auto variance = secondOrder(function, model, d);
-    if (!variance) return std::unexpected(std::move(variance.error()));
-    second = std::move(*variance);
-    if (options.sensitivities) d.first = given;
   }
 
   const Matrix r = correlationMatrix(model);
@@ -179,24 +176,23 @@ Result<FirstOrderResult> firstOrder(const Model& model, const FirstOrderOptions&
     for (std::size_t l = 0; l < model.outputs; ++l) {
       for (const auto& group : groups) {
         for (const auto i : group) {
-          for (const auto j : group) result.covariance(k, l) += d.first(k, i) * d.first(l, j) * r(i, j);
+          for (const auto j : group) result.covariance(k, l) += first(k, i) * first(l, j) * r(i, j);
         }
       }
     }
     result.covariance(k, k) = std::max(0.0, result.covariance(k, k) + second[k]);
     Estimate e;
-    e.value = d.values[k];
+    e.value = (*values)[k];
     e.standardUncertainty = std::sqrt(result.covariance(k, k));
     e.secondOrderVariance = second[k];
     for (std::size_t i = 0; i < n; ++i) {
       const double u = function.u(i);
-      const double measured = u > 0 ? d.first(k, i) / u : 0;
-      e.contributions.push_back(
-          {options.sensitivities ? (*options.sensitivities)(k, i) : measured, std::abs(d.first(k, i))});
+      const double measured = u > 0 ? first(k, i) / u : 0;
+      e.contributions.push_back({given ? (*given)(k, i) : measured, std::abs(first(k, i))});
     }
     std::vector<WeightedDegrees> weighted;
     for (const auto& group : groups) {
-      weighted.push_back({std::sqrt(groupVariance(group, r, d.first, k)), fewestDegrees(group, model)});
+      weighted.push_back({std::sqrt(groupVariance(group, r, first, k)), fewestDegrees(group, model)});
     }
     if (second[k] > 0) weighted.push_back({std::sqrt(second[k]), kInfinity});
     e.degreesOfFreedom = effectiveDegrees(weighted);

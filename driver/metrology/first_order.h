@@ -29,12 +29,12 @@ struct Estimate {
 
 struct FirstOrderResult {
   std::vector<Estimate> outputs;
-  Matrix covariance;  ///< of the outputs (GUM H.2.3, JCGM 102 6.2)
+  Matrix covariance;  ///< of the outputs (GUM H.2.3, JCGM 102)
 };
 
 struct FirstOrderOptions {
   /// Exact sensitivities, a row an output. Without them: central differences at one standard uncertainty
-  /// (GUM 5.1.3, note 2).
+  /// (GUM 5.1.3, note 2), or of a tenth where second-order terms are wanted.
   std::optional<Matrix> sensitivities;
   /// Adds the terms of GUM 5.1.2, note: sum over i, j of (f_ij^2 / 2 + f_i f_ijj) u_i^2 u_j^2. They hold for
   /// independent inputs, and where i = j for normal ones.
