@@ -25,19 +25,6 @@ std::vector<Ratio> stepsOf(const ShuntReadings& readings) {
   return steps;
 }
 
-namespace {
-
-template <class Get>
-double meanOf(const std::vector<Window>& windows, Get get) {
-  double sum = 0;
-  for (const auto& w : windows) sum += get(w);
-  return windows.empty() ? 0 : sum / static_cast<double>(windows.size());
-}
-
-double valueOf(Ratio r) { return r.in(volt_per_volt); }
-
-/// By how much the variance of a mean exceeds that of independent samples, when an input filter of time
-/// constant tau makes neighbours alike: (1 + rho) / (1 - rho), rho = exp(-T / tau).
 double correlationFactor(const Rack& rack, const Channel& channel) {
   const auto& device = *rack.device(channel.device);
   const double tau_s = seconds(device.profile->inputs->filterTimeConstant);
@@ -51,6 +38,33 @@ double correlationFactor(const Rack& rack, const Channel& channel) {
   const double rho = std::exp(-1 / (rate_Hz * tau_s));
   return (1 + rho) / (1 - rho);
 }
+
+bool isAbsolute(const Channel& channel) { return channel.transducer && channel.shunts.empty(); }
+
+Result<void> correct(const Channel& channel, const ChannelModel& model, double span, Ratio zero,
+                     ChannelResult& result) {
+  const Strain range = channel.transducer ? 1.2 * strain : 20000.0 * microstrain;
+  auto point = isAbsolute(channel) ? Result<WorkingPoint>(WorkingPoint{model.inTest, {}})
+                        : explain(model.inTest, zero / span, model.cause);
+  if (!point) return std::unexpected(std::move(point.error()));
+  auto fitted = bridge::mapOf(point->circuit, point->standing, range);
+  if (!fitted) return std::unexpected(std::move(fitted.error()));
+  result.worstMapError = fitted->worstError;
+  result.correction = fitted->map.afterAmplifier(span, 0);
+  if (!isAbsolute(channel)) result.correction = result.correction.zeroedAt(zero.in(volt_per_volt));
+  return {};
+}
+
+namespace {
+
+template <class Get>
+double meanOf(const std::vector<Window>& windows, Get get) {
+  double sum = 0;
+  for (const auto& w : windows) sum += get(w);
+  return windows.empty() ? 0 : sum / static_cast<double>(windows.size());
+}
+
+double valueOf(Ratio r) { return r.in(volt_per_volt); }
 
 /// Figures of one shunt, and the standard uncertainty of its mean step.
 struct StepFigures {
@@ -127,23 +141,6 @@ void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& re
   }
   result.leadResistance = sum / static_cast<double>(channel.leads.size()) * ohm;
   result.leadUncertainty = worst * ohm;
-}
-
-/// The correction for a span and a zero reading; the nominal one when the zero cannot be explained.
-Result<void> correct(const Channel& channel, const ChannelModel& model, double span, Ratio zero,
-                     ChannelResult& result) {
-  const Strain range = channel.transducer ? 1.2 * strain : 20000.0 * microstrain;
-  const bool absolute = channel.transducer && channel.shunts.empty();
-  auto point = absolute ? Result<WorkingPoint>(WorkingPoint{model.inTest, {}})
-                        : explain(model.inTest, zero / span, model.cause);
-  if (!point) return std::unexpected(std::move(point.error()));
-  auto fitted = bridge::mapOf(point->circuit, point->standing, range);
-  if (!fitted) return std::unexpected(std::move(fitted.error()));
-  result.worstMapError = fitted->worstError;
-  result.correction = fitted->map.afterAmplifier(span, 0);
-  // A sensor that is never calibrated and not zeroed keeps its absolute scale (a thermometer).
-  if (!absolute) result.correction = result.correction.zeroedAt(valueOf(zero));
-  return {};
 }
 
 }  // namespace

@@ -3,6 +3,7 @@
 #include <optional>
 #include <vector>
 
+#include "driver/calibration/channel_model.h"
 #include "driver/calibration/record.h"
 #include "driver/calibration/window.h"
 #include "driver/core/error.h"
@@ -27,6 +28,17 @@ struct ChannelReadings {
 
 /// Steps with linear drift removed: each closed window against the mean of the open ones beside it (A-B-A).
 std::vector<units::Ratio> stepsOf(const ShuntReadings& readings);
+
+/// By how much the variance of a mean exceeds that of independent samples, when an input filter of time
+/// constant tau makes neighbours alike: (1 + rho) / (1 - rho), rho = exp(-T / tau).
+double correlationFactor(const description::Rack& rack, const description::Channel& channel);
+
+/// A sensor that is neither calibrated nor zeroed keeps its absolute scale (a thermometer).
+bool isAbsolute(const description::Channel& channel);
+
+/// Sets the correction for a span and a zero reading. Errors: as explain() and bridge::mapOf().
+Result<void> correct(const description::Channel& channel, const ChannelModel& model, double span, units::Ratio zero,
+                     ChannelResult& result);
 
 /// Turns a channel's readings into its correction, budget and verdict. Never fails as a whole: what cannot be
 /// worked out is a finding and a failed verdict, and the correction is then the nominal one.

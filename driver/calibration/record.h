@@ -82,6 +82,7 @@ struct Record {
   std::vector<ChannelResult> channels;
   int windows = 0;       ///< readings taken
   Nanoseconds duration{0};
+  std::optional<Instant> zeroed;  ///< the zeros in it were taken anew then; nothing: with the calibration
   std::vector<std::string> relaysMaybeClosed;  ///< that would not open; must be empty
 
   bool passed() const;   ///< no channel failed and no relay is left closed

@@ -108,6 +108,8 @@ std::string recordJson(const Record& record) {
   o["channels"] = std::move(channels);
   o["windows"] = record.windows;
   o["duration_s"] = number(seconds(record.duration));
+  o["zeroed"] = record.zeroed ? json::value(rfc3339(*record.zeroed)) : json::value(nullptr);
+  o["zeroed_unix_ns"] = record.zeroed ? json::value(record.zeroed->time_since_epoch().count()) : json::value(nullptr);
   json::array relays;
   for (const auto& relay : record.relaysMaybeClosed) relays.push_back(json::value(relay));
   o["relays_maybe_closed"] = std::move(relays);
@@ -217,6 +219,9 @@ Result<Record> parseRecordJson(std::string_view text, const std::string& where) 
     for (const auto& c : o.at("channels").as_array()) record.channels.push_back(channelFrom(c.as_object()));
     record.windows = o.at("windows").to_number<int>();
     record.duration = fromSeconds(get(o, "duration_s"));
+    if (const auto& zeroed = o.at("zeroed_unix_ns"); !zeroed.is_null()) {
+      record.zeroed = Instant(Nanoseconds(zeroed.to_number<std::int64_t>()));
+    }
     for (const auto& r : o.at("relays_maybe_closed").as_array()) {
       record.relaysMaybeClosed.emplace_back(std::string(r.as_string()));
     }

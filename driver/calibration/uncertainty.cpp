@@ -147,7 +147,8 @@ Result<Strain> zeroUncertainty(const Rack& rack, const Channel& channel, Ratio z
   for (const auto& warming : inputs) {
     if (warming.quantity != "lead temperature, change until the test") continue;
     ChannelModel warm = nominal;
-    warming.shift(warm, warming.standardUncertainty);
+    const double change = scatter.leadsShare * warming.standardUncertainty;
+    warming.shift(warm, change);
     const double alone = zeroShift(warm);
     addRatio(alone);
     for (const auto& lead : inputs) {
@@ -157,7 +158,7 @@ Result<Strain> zeroUncertainty(const Rack& rack, const Channel& channel, Ratio z
       // A longer lead warms by more ohms.
       const double longer = lead.value > 0 ? 1 + lead.standardUncertainty / lead.value : 1;
       ChannelModel bothWarm = both;
-      warming.shift(bothWarm, warming.standardUncertainty);
+      warming.shift(bothWarm, change);
       for (std::size_t t = 0; t < both.inTest.leads.size(); ++t) {
         const auto warmedBy = bothWarm.inTest.leads[t] - both.inTest.leads[t];
         const bool own = both.atCalibration.leads[t] != nominal.atCalibration.leads[t];

@@ -31,6 +31,7 @@ struct ZeroScatter {
   units::Ratio resolution;
   units::Ratio returnSpread;         ///< largest |return - before| seen
   units::Ratio stability;            ///< half-width by which the offset may wander until the test
+  double leadsShare = 1;             ///< how much of the leads' stated change of temperature happens until then
 };
 Result<units::Strain> zeroUncertainty(const description::Rack& rack, const description::Channel& channel,
                                       units::Ratio zero, const ZeroScatter& scatter);

@@ -1,5 +1,6 @@
 #include "driver/calibration/window.h"
 
+#include <algorithm>
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/awaitable.hpp>
 #include <cmath>
@@ -7,48 +8,46 @@
 
 namespace shuntwright::calibration {
 
-namespace {
-
-/// Straight-line fit by running sums about the first sample, so that nothing is stored or cancelled away.
-class LineFit {
- public:
-  void add(double x, double y) {
-    if (n_ == 0) origin_ = y;
-    y -= origin_;
-    ++n_;
-    const double dx = x - meanX_;
-    meanX_ += dx / n_;
-    sxx_ += dx * (x - meanX_);
-    const double dy = y - meanY_;
-    meanY_ += dy / n_;
-    syy_ += dy * (y - meanY_);
-    sxy_ += dx * (y - meanY_);
+void WindowBuilder::add(Instant when, float ratio, std::uint8_t flags) {
+  if (seen() == 0) window_.start = when;
+  window_.end = when;
+  if (flags & device::kSaturated) {
+    ++window_.saturated;
+    return;
   }
-  double mean() const { return origin_ + meanY_; }
-  double slope() const { return sxx_ > 0 ? sxy_ / sxx_ : 0; }
-  double residualDeviation() const {
-    if (n_ < 3) return 0;
-    const double residual = syy_ - (sxx_ > 0 ? sxy_ * sxy_ / sxx_ : 0);
-    return std::sqrt(std::max(0.0, residual) / (n_ - 2));
+  if ((flags & device::kMissing) || !std::isfinite(ratio)) {
+    ++window_.missing;
+    return;
   }
+  if (window_.samples == 0) origin_ = ratio;
+  const double n = ++window_.samples;
+  const double x = seconds(when - window_.start), y = ratio - origin_;
+  const double dx = x - meanX_, dy = y - meanY_;
+  meanX_ += dx / n;
+  meanY_ += dy / n;
+  sxx_ += dx * (x - meanX_);
+  syy_ += dy * (y - meanY_);
+  sxy_ += dx * (y - meanY_);
+}
 
- private:
-  int n_ = 0;
-  double origin_ = 0, meanX_ = 0, meanY_ = 0, sxx_ = 0, syy_ = 0, sxy_ = 0;
-};
-
-}  // namespace
+Window WindowBuilder::window() const {
+  Window out = window_;
+  const double slope = sxx_ > 0 ? sxy_ / sxx_ : 0;
+  const double residual = std::max(0.0, syy_ - slope * sxy_);
+  out.mean = (origin_ + meanY_) * units::volt_per_volt;
+  out.deviation = (out.samples < 3 ? 0 : std::sqrt(residual / (out.samples - 2))) * units::volt_per_volt;
+  out.drift = slope * seconds(out.end - out.start) * units::volt_per_volt;
+  return out;
+}
 
 WindowReader::WindowReader(device::Device& amplifier, Clock& clock, units::Frequency rate)
     : amplifier_(amplifier), clock_(clock), rate_(rate) {}
 
 Task<Result<Window>> WindowReader::take(std::size_t input, Instant notBefore, int count) {
-  Window window;
-  LineFit fit;
+  WindowBuilder window;
   const double due_s = count / rate_.in(units::hertz);
   const Instant deadline = std::max(notBefore, clock_.now()) + fromSeconds(3 * due_s + 2);
-  int seen = 0;
-  while (seen < count) {
+  while (window.seen() < count) {
     if (next_ >= block_.frames()) {
       auto more = co_await amplifier_.next(deadline);
       if (!more) co_return std::unexpected(std::move(more.error()));
@@ -58,23 +57,9 @@ Task<Result<Window>> WindowReader::take(std::size_t input, Instant notBefore, in
     }
     const std::size_t frame = next_++;
     if (block_.time[frame] < notBefore) continue;
-    if (seen == 0) window.start = block_.time[frame];
-    window.end = block_.time[frame];
-    ++seen;
-    const auto flags = block_.flagsAt(frame, input);
-    if (flags & device::kSaturated) {
-      ++window.saturated;
-    } else if ((flags & device::kMissing) || !std::isfinite(block_.at(frame, input))) {
-      ++window.missing;
-    } else {
-      ++window.samples;
-      fit.add(seconds(block_.time[frame] - window.start), block_.at(frame, input));
-    }
+    window.add(block_.time[frame], block_.at(frame, input), block_.flagsAt(frame, input));
   }
-  window.mean = fit.mean() * units::volt_per_volt;
-  window.deviation = fit.residualDeviation() * units::volt_per_volt;
-  window.drift = fit.slope() * seconds(window.end - window.start) * units::volt_per_volt;
-  co_return window;
+  co_return window.window();
 }
 
 }  // namespace shuntwright::calibration

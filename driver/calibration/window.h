@@ -1,6 +1,7 @@
 #pragma once
 
 #include <cstddef>
+#include <cstdint>
 
 #include "driver/core/clock.h"
 #include "driver/core/error.h"
@@ -23,14 +24,26 @@ struct Window {
   bool usable() const { return samples >= 2 && saturated == 0; }
 };
 
+/// Gathers one input's samples into a window. Samples that are saturated or missing are counted and left out.
+class WindowBuilder {
+ public:
+  void add(Instant when, float ratio, std::uint8_t flags);
+  int seen() const { return window_.samples + window_.saturated + window_.missing; }
+  Window window() const;
+
+ private:
+  Window window_;
+  // A straight line by running sums about the first sample, so that nothing is stored or cancelled away.
+  double origin_ = 0, meanX_ = 0, meanY_ = 0, sxx_ = 0, syy_ = 0, sxy_ = 0;
+};
+
 /// Takes windows from an amplifier that is acquiring. What comes before a window's start is dropped.
 class WindowReader {
  public:
   WindowReader(device::Device& amplifier, Clock& clock, units::Frequency rate);
 
-  /// The mean of the first `count` samples of one input taken at or after `notBefore`. Samples that are
-  /// saturated or missing are counted and left out of the mean. Errors: timeout when they do not come
-  /// within three times their due time and two seconds, or the device's.
+  /// The mean of the first `count` samples of one input taken at or after `notBefore`. Errors: timeout when they
+  /// do not come within three times their due time and two seconds, or the device's.
   Task<Result<Window>> take(std::size_t input, Instant notBefore, int count);
 
  private:

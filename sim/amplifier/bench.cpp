@@ -57,10 +57,11 @@ Bench::Bench(const description::Rack& rack, const Scenario& scenario, std::uint6
     : state_(std::make_unique<State>(rack, scenario, Random(seed), start)) {
   State& s = *state_;
   s.contactRandom = s.random.fork(2);
+  const Hall hall = Hall::drawn(s.random.fork(3));
   std::uint64_t stream = 100;
   for (const auto& channel : rack.channels) {
     const auto faults = s.scenario.channels.contains(channel.name) ? s.scenario.channels.at(channel.name) : ChannelFaults{};
-    TrueChannel truth(rack, channel, s.scenario.imperfections, faults, s.random.fork(stream++));
+    TrueChannel truth(rack, channel, s.scenario.imperfections, faults, s.random.fork(stream++), hall);
     s.inputs[channel.name] = std::make_unique<BridgeInput>(
         std::move(truth), s.specimen, s.clock, *rack.device(channel.device)->profile->inputs, s.scenario.imperfections,
         faults, s.random.fork(stream++));

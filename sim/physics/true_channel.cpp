@@ -25,12 +25,21 @@ static_assert(2 * description::kTerminals == NodeCircuit::kNodes);
 
 bool quarter(CircuitKind kind) { return kind == CircuitKind::quarter_2_wire || kind == CircuitKind::quarter_3_wire; }
 
+constexpr double kWorstCrimp_ohm = 0.02;
+
 double off(Random& random, double value, double tolerance) { return value * (1 + random.uniform(-tolerance, tolerance)); }
 
 }  // namespace
 
+Hall Hall::drawn(Random random) {
+  Hall hall;
+  hall.start = 0.4 * random.normal();
+  hall.warming = random.uniform();
+  return hall;
+}
+
 TrueChannel::TrueChannel(const description::Rack& rack, const description::Channel& channel,
-                         const Imperfections& imperfections, const ChannelFaults& faults, Random random)
+                         const Imperfections& imperfections, const ChannelFaults& faults, Random random, Hall hall)
     : channel_(&channel) {
   const auto& inputs = *rack.device(channel.device)->profile->inputs;
   inputResistance_ohm_ = inputs.inputResistance.in(ohm);
@@ -72,19 +81,21 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
       }
     }
   }
-  double wander_K = 0;
+  // Each wire off a drum of its own, and ended in a crimp, which only adds.
+  double tolerance_K = 0;
   for (const auto& [terminal, lead] : channel.leads) {
     leads_[static_cast<std::size_t>(terminal)] =
-        off(random, lead.resistance.in(ohm), imperfections.leads * lead.tolerance.in(one));
-    wander_K = std::max(wander_K, lead.temperatureTolerance.in(kelvin));
+        off(random, lead.resistance.in(ohm), imperfections.leads * lead.tolerance.in(one)) +
+        imperfections.leads * random.uniform(0, kWorstCrimp_ohm);
+    tolerance_K = std::max(tolerance_K, lead.temperatureTolerance.in(kelvin));
   }
   if (faults.openLead) {
     const auto opened = channel.leads.contains(Terminal::sig_plus) ? Terminal::sig_plus : channel.leads.begin()->first;
     leads_[static_cast<std::size_t>(opened)] = 1e9;
   }
   if (imperfections.leadsWarm) {
-    warmStart_K_ = random.uniform(-wander_K, wander_K);
-    warmEnd_K_ = warmStart_K_ + random.uniform(-wander_K, wander_K);
+    warmStart_K_ = tolerance_K * std::clamp(hall.start + 0.2 * random.uniform(-1, 1), -1.0, 1.0);
+    warmEnd_K_ = warmStart_K_ + tolerance_K * hall.warming * random.uniform(0.3, 1);
     warmTime_s_ = random.uniform(300, 1200);
   }
   for (const auto& shunt : channel.shunts) {

@@ -17,11 +17,19 @@ struct TrueShunt {
   double contact_ohm = 0;
 };
 
+/// The air that all leads of a bench hang in, against what the rack states: both in parts of the leads' stated
+/// tolerance. Air has weather, so the start is normal, and a working day only warms.
+struct Hall {
+  double start = 0;    ///< off the stated temperature when the bench began
+  double warming = 0;  ///< by how much more it will be in the end
+  static Hall drawn(Random random);
+};
+
 /// One channel's circuit as it really is, drawn from a random source about what rack and profile state.
 class TrueChannel {
  public:
   TrueChannel(const description::Rack& rack, const description::Channel& channel, const Imperfections& imperfections,
-              const ChannelFaults& faults, Random random);
+              const ChannelFaults& faults, Random random, Hall hall = {});
 
   const description::Channel& described() const { return *channel_; }
   std::vector<TrueShunt>& shunts() { return shunts_; }
@@ -34,8 +42,8 @@ class TrueChannel {
   /// @param leadsWarmer_K  by how much the leads are warmer than the rack states
   double ratio(double strain, double leadsWarmer_K) const;
 
-  /// By how much the leads are warmer than stated, at a time since the start: they begin anywhere within the
-  /// stated tolerance and settle exponentially up to as much away from there.
+  /// By how much the leads are warmer than stated, at a time since the start: they follow the hall exponentially,
+  /// each cable with a share and a lag of its own.
   double leadWarming_K(double seconds) const;
 
  private:

@@ -11,6 +11,7 @@
 #include <limits>
 #include <map>
 
+#include "driver/calibration/zero.h"
 #include "driver/description/wiring.h"
 #include "driver/rack/live_rack.h"
 #include "driver/recording/load_steps.h"
@@ -28,6 +29,8 @@ bool DemoChannel::insideUncertainty() const {
 }
 
 namespace {
+
+constexpr Nanoseconds kZeroTime = std::chrono::seconds(2);
 
 struct Mean {
   double sum = 0, square = 0;
@@ -83,6 +86,11 @@ struct Work {
     run.calibration = std::move(*record);
     // People clear the hall and the weights are brought; meanwhile the leads go on warming.
     co_await waitFor(clock, std::chrono::minutes(30));
+    // The last thing before the load: the zero again.
+    auto zeros = co_await calibration::takeZeros(**live, kZeroTime);
+    if (!zeros) co_return std::unexpected(std::move(zeros.error()));
+    const Nanoseconds programme = fromSeconds(holdsOf(scenario).back().end_s) + std::chrono::seconds(2);
+    run.zeroFindings = calibration::rezero(run.calibration, rack, *zeros, clock.now(), programme);
     auto recorded = co_await loadTest(**live);
     if (!recorded) co_return recorded;
     run.relaysOpen = bench->closedRelays().empty();

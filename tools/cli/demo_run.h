@@ -36,7 +36,8 @@ struct DemoOptions {
 };
 
 struct DemoRun {
-  calibration::Record calibration;
+  calibration::Record calibration;  ///< with the zeros taken anew before the load
+  std::vector<calibration::Finding> zeroFindings;
   std::vector<DemoChannel> channels;  ///< those with shunts
   std::uint64_t rows = 0, lost = 0;
   double simulated_s = 0;

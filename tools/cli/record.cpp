@@ -16,6 +16,7 @@
 #include <ostream>
 
 #include "driver/calibration/record_json.h"
+#include "driver/calibration/zero.h"
 #include "driver/recording/load_steps.h"
 #include "tools/cli/bench_session.h"
 #include "tools/cli/command.h"
@@ -129,6 +130,8 @@ class Record final : public Command {
     app.add_option("--out", out_, "The recording (HDF5); never overwritten")->required();
     app.add_option("--calibration", calibration_, "A calibration record (JSON); the rack's latest when left out");
     app.add_option("--duration", duration_s_, "Stop after this many seconds");
+    app.add_flag("--zero", zero_, "Takes the zero anew first: the specimen carries no load now");
+    app.add_option("--zero-seconds", zero_s_, "For how long the zero is read")->check(CLI::Range(0.1, 600.0));
     app.add_flag("--isolated", isolated_, "Confirms that the load path is isolated while relays are opened and rates set");
   }
 
@@ -146,7 +149,7 @@ class Record final : public Command {
     if (!record->passed()) console.err << "note: calibration " << record->id << " did not pass for every channel\n";
     auto permit = askForPermit(console, *rack, isolated_);
     if (!permit) return console.fail(permit.error());
-    Job job{console, *rack, *record, *permit, out_, duration_s_};
+    Job job{console, *rack, *record, *permit, out_, duration_s_, zero_ ? zero_s_ : 0};
     return runOnBench(console, *rack, bench_, true, [&job](SessionContext context) -> Task<Result<int>> {
       return work(context, &job);
     });
@@ -156,15 +159,20 @@ class Record final : public Command {
   struct Job {
     const Console& console;
     const description::Rack& rack;
-    const calibration::Record& record;
+    calibration::Record& record;
     rack::LoadPathPermit permit;
     std::string out;
     double duration_s;
+    double zero_s;  ///< 0: the calibration's zeros stay
   };
 
   static Task<Result<int>> work(SessionContext context, Job* job) {
     if (auto ready = co_await context.live.prepare(job->permit); !ready) co_return std::unexpected(std::move(ready.error()));
     Clock& clock = context.live.clock();
+    if (job->zero_s > 0) {
+      auto zeroed = co_await takeZerosAnew(context, job);
+      if (!zeroed) co_return std::unexpected(std::move(zeroed.error()));
+    }
     auto session = RecordingSession::begin(job->rack, job->record, job->out, clock);
     if (!session) co_return std::unexpected(std::move(session.error()));
     auto executor = co_await asio::this_coro::executor;
@@ -192,6 +200,19 @@ class Record final : public Command {
     if (auto finished = (*session)->finish(); !finished) co_return std::unexpected(std::move(finished.error()));
     report(job->console, **session, job->record.id);
     co_return kPassed;
+  }
+
+  static Task<Result<void>> takeZerosAnew(SessionContext context, Job* job) {
+    auto zeros = co_await calibration::takeZeros(context.live, fromSeconds(job->zero_s));
+    if (!zeros) co_return std::unexpected(std::move(zeros.error()));
+    // How long it has to hold; an hour when nobody says.
+    const auto holds = fromSeconds(job->duration_s > 0 ? job->duration_s : 3600);
+    for (const auto& finding :
+         calibration::rezero(job->record, job->rack, *zeros, context.live.clock().now(), holds)) {
+      job->console.err << "note: " << finding.message << (finding.evidence.empty() ? "" : " (" + finding.evidence + ")")
+                       << '\n';
+    }
+    co_return Result<void>{};
   }
 
   static void report(const Console& console, const RecordingSession& session, const std::string& calibration) {
@@ -222,7 +243,8 @@ class Record final : public Command {
   BenchOptions bench_;
   std::string out_, calibration_;
   double duration_s_ = 0;
-  bool isolated_ = false;
+  double zero_s_ = 2;
+  bool isolated_ = false, zero_ = false;
 };
 
 }  // namespace

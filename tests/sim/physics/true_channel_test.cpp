@@ -184,16 +184,19 @@ TEST(TrueChannel, whatIsDrawnStaysInsideWhatIsStated) {
   one.rack.resistors["RC"].tolerance = 0.1 * percent;
   one.rack.resistors["RC"].temperatureCoefficient = 10.0 * ppm_per_kelvin;
   one.rack.resistors["RC"].temperatureSpan = 5.0 * kelvin;
-  double lowest = 1e9, highest = 0, warmest = 0, unbalance = 0;
+  double lowest = 1e9, highest = 0, warmest = 0, coldest = 0, unbalance = 0;
   for (std::uint64_t seed = 1; seed <= 400; ++seed) {
-    const auto truth = one.build(Imperfections(), {}, seed);
+    const Hall hall = Hall::drawn(Random(seed));
+    const TrueChannel truth(one.rack, one.channel, Imperfections(), {}, Random(seed), hall);
     EXPECT_NEAR(truth.gauge_ohm(), 120, 0.36 + 1e-12);
     EXPECT_NEAR(truth.gaugeFactor(), 2, 0.02 + 1e-12);
     EXPECT_NEAR(truth.shunts()[0].resistor_ohm / 59880, 1, 1.0501e-3);
     lowest = std::min(lowest, truth.gauge_ohm());
     highest = std::max(highest, truth.gauge_ohm());
-    EXPECT_NE(truth.leadWarming_K(0), truth.leadWarming_K(1200)) << "leads warm up during the run";
-    warmest = std::max(warmest, std::abs(truth.leadWarming_K(3600)));
+    EXPECT_LT(truth.leadWarming_K(0), truth.leadWarming_K(1200)) << "leads warm up during the run";
+    EXPECT_LE(std::abs(truth.leadWarming_K(0)), 5) << "the stated tolerance";
+    warmest = std::max(warmest, truth.leadWarming_K(3600));
+    coldest = std::min(coldest, truth.leadWarming_K(0));
     unbalance = std::max(unbalance, std::abs(truth.ratio(0, 0)));
   }
   // Rectangular: 400 draws come near both ends.
@@ -201,6 +204,7 @@ TEST(TrueChannel, whatIsDrawnStaysInsideWhatIsStated) {
   EXPECT_GT(highest, 120.32);
   EXPECT_GT(warmest, 5);
   EXPECT_LE(warmest, 10);
+  EXPECT_LT(coldest, -3);
   EXPECT_GT(unbalance, 0.5e-3) << "completions off nominal and unequal leads";
 }
 
