@@ -8,6 +8,7 @@
 #include <vector>
 
 #include "driver/metrology/first_order.h"
+#include "driver/metrology/least_squares.h"
 
 namespace shuntwright::metrology {
 namespace {
@@ -104,6 +105,49 @@ TEST(GumH2, resistanceReactanceAndImpedanceWithTheirCorrelations) {
   EXPECT_NEAR(r(0, 1), -0.58843, 1e-5);  // recomputed
   EXPECT_NEAR(r(0, 2), -0.48526, 1e-5);
   EXPECT_NEAR(r(1, 2), 0.99251, 1e-5);
+}
+
+// H.3, table H.6: correction of a thermometer by a straight line about 20 degC (data and results quoted; s
+// from memory; full digits recomputed).
+TEST(GumH3, calibrationLineOfAThermometer) {
+  const std::vector<double> t{21.521, 22.012, 22.512, 23.003, 23.507, 23.999,
+                              24.513, 25.002, 25.503, 26.010, 26.511};
+  const std::vector<double> b{-.171, -.169, -.166, -.159, -.164, -.165, -.156, -.157, -.159, -.161, -.160};
+  std::vector<double> off;
+  for (const double value : t) off.push_back(value - 20);
+  const auto fit = fitLinear(straightLine(off), b);
+  ASSERT_TRUE(fit) << fit.error().text();
+  EXPECT_NEAR(fit->parameters[0], -0.1712, 5e-5);
+  EXPECT_NEAR(fit->parameters[1], 0.00218, 5e-6);
+  EXPECT_NEAR(fit->standardUncertainty(0), 0.0029, 5e-5);
+  EXPECT_NEAR(fit->standardUncertainty(1), 0.00067, 5e-6);
+  EXPECT_NEAR(fit->correlation(0, 1), -0.930, 5e-4);
+  EXPECT_NEAR(fit->residualDeviation(), 0.0035, 5e-5);
+  EXPECT_NEAR(fit->parameters[0], -0.171203790131, 1e-12);
+  EXPECT_NEAR(fit->parameters[1], 0.00218269773989, 1e-14);
+  EXPECT_NEAR(fit->standardUncertainty(0), 0.00287759783516, 1e-14);
+  EXPECT_NEAR(fit->standardUncertainty(1), 0.000667938773228, 1e-15);
+  EXPECT_NEAR(fit->correlation(0, 1), -0.930429603093, 1e-12);
+
+  // The correction at 30 degC, from the fit itself and from intercept and slope as correlated inputs.
+  const double row[] = {1, 10};
+  const FittedValue at30 = fit->at(row);
+  EXPECT_NEAR(at30.value, -0.1494, 5e-5);
+  EXPECT_NEAR(at30.standardUncertainty, 0.0041, 5e-5);
+  Model model;
+  for (const std::size_t k : {0, 1}) {
+    model.inputs.push_back(
+        {k == 0 ? "y1" : "y2", "", normal(fit->parameters[k], fit->standardUncertainty(k), 9)});
+  }
+  model.correlations = {{0, 1, fit->correlation(0, 1)}};
+  model.function = [](std::span<const double> x, std::span<double> y) -> Result<void> {
+    y[0] = x[0] + 10 * x[1];
+    return {};
+  };
+  const Estimate e = propagated(model).outputs.front();
+  EXPECT_NEAR(e.value, -0.149376812732, 1e-12);
+  EXPECT_NEAR(e.standardUncertainty, 0.00413859575285, 1e-13);
+  EXPECT_NEAR(e.degreesOfFreedom, 9, 1e-9);
 }
 
 // 5.2.2, example: ten resistors of 1000 ohm compared with one standard (u 100 mohm) and put in series have
