@@ -3,6 +3,8 @@
 #include <cmath>
 #include <cstdio>
 
+#include "driver/rack/heating.h"
+
 namespace shuntwright::rack {
 
 using namespace units;
@@ -57,6 +59,7 @@ std::vector<ChannelPrediction> predict(const description::Rack& rack, descriptio
     }
     out.push_back(std::move(prediction));
   }
+  warnOfHeating(rack, diagnostics);
   return out;
 }
 

@@ -22,7 +22,7 @@ struct ChannelPrediction {
 
 /// What each shunt of each channel is predicted to do, from the circuits as wired. Adds what no reader of files
 /// can see: a shunt that does nothing, and a lead loss that is to go into the span although the step of the
-/// shunt does not carry it.
+/// shunt does not carry it, and excitation that heats a gauge too much.
 std::vector<ChannelPrediction> predict(const description::Rack& rack, description::Diagnostics& diagnostics);
 
 }  // namespace shuntwright::rack
