@@ -189,12 +189,12 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
   }
   const Ratio resolution = rack.device(channel.device)->profile->inputs->resolution;
   if (!trouble && !measured.empty()) {
-    ReadingScatter scatter;
-    scatter.stepRelative = squares > 0 ? std::sqrt(weighted) / squares : 0;
-    scatter.stepDegrees = std::max(1.0, degreesSum);
-    scatter.resolution = resolution;
-    scatter.smallestStep = smallest * volt_per_volt;
-    auto budget = scaleBudget(rack, channel, result.zero / usable, measured, scatter);
+    ScaleReadings scale{result.zero / usable, measured, {}};
+    scale.scatter.stepRelative = squares > 0 ? std::sqrt(weighted) / squares : 0;
+    scale.scatter.stepDegrees = std::max(1.0, degreesSum);
+    scale.scatter.resolution = resolution;
+    scale.scatter.smallestStep = smallest * volt_per_volt;
+    auto budget = scaleBudget(rack, channel, scale);
     if (budget) {
       result.budget = std::move(*budget);
     } else {

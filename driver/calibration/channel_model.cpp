@@ -2,14 +2,13 @@
 
 #include <array>
 #include <cmath>
-#include <numbers>
 
+#include "driver/metrology/least_squares.h"
 #include "driver/units/copper.h"
 
 namespace shuntwright::calibration {
 
 using namespace units;
-using metrology::Shape;
 using description::Channel;
 using description::Rack;
 using description::Terminal;
@@ -139,32 +138,19 @@ Result<ScalePrediction> predictScale(const ChannelModel& model, Ratio zero) {
 }
 
 double spanOf(const std::vector<Ratio>& measured, const std::vector<Ratio>& predicted) {
-  double product = 0, square = 0;
-  for (std::size_t k = 0; k < measured.size(); ++k) {
-    const double m = measured[k].in(millivolt_per_volt), p = predicted[k].in(millivolt_per_volt);
-    product += m * p;
-    square += p * p;
-  }
-  return square > 0 ? product / square : 1;
+  std::vector<double> x, y;
+  for (const auto r : predicted) x.push_back(r.in(volt_per_volt));
+  for (const auto r : measured) y.push_back(r.in(volt_per_volt));
+  const auto fit = metrology::fitLinear(metrology::throughOrigin(x), y);
+  return fit ? fit->parameters.front() : 1;
 }
 
 // ---------------------------------------------------------------- what is not known exactly
 
 namespace {
 
-constexpr double kRectangular = std::numbers::sqrt3;
-
-UncertainInput input(std::string quantity, double value, std::string unit, double standardUncertainty,
-                     std::function<void(ChannelModel&, double)> shift, Shape shape = Shape::rectangular) {
-  UncertainInput out;
-  out.quantity = std::move(quantity);
-  out.value = value;
-  out.unit = std::move(unit);
-  out.standardUncertainty = standardUncertainty;
-  out.shape = shape;
-  out.shift = std::move(shift);
-  return out;
-}
+using metrology::normal;
+using metrology::rectangular;
 
 void shiftArm(ChannelModel& model, std::size_t arm, double delta_ohm) {
   model.atCalibration.arms[arm].resistance += delta_ohm * ohm;
@@ -183,20 +169,20 @@ void addArms(const Rack& rack, const Channel& channel, const ChannelModel& model
       const auto& nominal = rack.gaugeOf(channel).resistance;
       if (channel.measuredResistance && arm == 0) {
         const double u = value * channel.measuredResistance->tolerance.in(one) / 2;  // expanded, k = 2
-        out.push_back(input("gauge resistance" + number + ", measured", value, "ohm", u, shift, Shape::normal));
+        out.push_back({{"gauge resistance" + number + ", measured", "ohm", normal(value, u)}, shift});
       } else {
-        const double u = value * nominal.tolerance.in(one) / kRectangular;
-        out.push_back(input("gauge resistance" + number, value, "ohm", u, shift));
+        out.push_back(
+            {{"gauge resistance" + number, "ohm", rectangular(value, value * nominal.tolerance.in(one))}, shift});
       }
     } else if (arm == 1 || (arm == 3 && channel.circuit == description::CircuitKind::half_opposite)) {
       double tolerance = 0;
       for (const auto& offered : inputs.completions) {
         if (channel.completion && offered.value == *channel.completion) tolerance = offered.tolerance.in(one);
       }
-      out.push_back(input("completion resistor" + number, value, "ohm", value * tolerance / kRectangular, shift));
+      out.push_back({{"completion resistor" + number, "ohm", rectangular(value, value * tolerance)}, shift});
     } else {
-      const double u = value * inputs.halfBridge.tolerance.in(one) / kRectangular;
-      out.push_back(input("half-bridge resistor" + number, value, "ohm", u, shift));
+      const double tolerance = inputs.halfBridge.tolerance.in(one);
+      out.push_back({{"half-bridge resistor" + number, "ohm", rectangular(value, value * tolerance)}, shift});
     }
   }
 }
@@ -206,34 +192,36 @@ void addLeads(const Channel& channel, std::vector<UncertainInput>& out) {
   for (const auto& [terminal, lead] : channel.leads) {
     const double value = lead.resistance.in(ohm);
     const auto at = terminal;
-    out.push_back(input("lead " + std::string(description::name(terminal)), value, "ohm",
-                        value * lead.tolerance.in(one) / kRectangular, [at](ChannelModel& m, double delta) {
-                          m.atCalibration.lead(at) += delta * ohm;
-                          m.inTest.lead(at) += delta * ohm;
-                        }));
+    out.push_back({{"lead " + std::string(description::name(terminal)), "ohm",
+                    rectangular(value, value * lead.tolerance.in(one))},
+                   [at](ChannelModel& m, double delta) {
+                     m.atCalibration.lead(at) += delta * ohm;
+                     m.inTest.lead(at) += delta * ohm;
+                   }});
     temperatureTolerance_K = std::max(temperatureTolerance_K, lead.temperatureTolerance.in(kelvin));
     temperature_C = lead.temperature.celsius();
   }
   if (channel.leads.empty() || temperatureTolerance_K <= 0) return;
-  std::map<Terminal, double> ohmPerKelvin;
+  // A share of whatever the lead's resistance turns out to be: a longer one warms by more ohms.
+  std::map<Terminal, double> relativePerKelvin;
   for (const auto& [terminal, lead] : channel.leads) {
     const Temperature warmer = lead.temperature + 1.0 * kelvin;
-    ohmPerKelvin[terminal] = (copperAt(lead.resistance, lead.temperature, warmer) - lead.resistance).in(ohm);
+    relativePerKelvin[terminal] = copperAt(1.0 * ohm, lead.temperature, warmer).in(ohm) - 1;
   }
-  const double u = temperatureTolerance_K / kRectangular;
-  out.push_back(input("lead temperature at calibration", temperature_C, "degC", u,
-                      [ohmPerKelvin](ChannelModel& m, double delta) {
-                        for (const auto& [terminal, slope] : ohmPerKelvin) {
-                          m.atCalibration.lead(terminal) += slope * delta * ohm;
-                          m.inTest.lead(terminal) += slope * delta * ohm;
-                        }
-                      }));
-  out.push_back(input("lead temperature, change until the test", 0, "K", u,
-                      [ohmPerKelvin](ChannelModel& m, double delta) {
-                        for (const auto& [terminal, slope] : ohmPerKelvin) {
-                          m.inTest.lead(terminal) += slope * delta * ohm;
-                        }
-                      }));
+  out.push_back({{"lead temperature at calibration", "degC", rectangular(temperature_C, temperatureTolerance_K)},
+                 [relativePerKelvin](ChannelModel& m, double delta) {
+                   for (const auto& [terminal, share] : relativePerKelvin) {
+                     for (auto* circuit : {&m.atCalibration, &m.inTest}) {
+                       circuit->lead(terminal) = circuit->lead(terminal) * (1 + share * delta);
+                     }
+                   }
+                 }});
+  out.push_back({{kLeadsWarming, "K", rectangular(0, temperatureTolerance_K)},
+                 [relativePerKelvin](ChannelModel& m, double delta) {
+                   for (const auto& [terminal, share] : relativePerKelvin) {
+                     m.inTest.lead(terminal) = m.inTest.lead(terminal) * (1 + share * delta);
+                   }
+                 }});
 }
 
 void addShunts(const Rack& rack, const Channel& channel, std::vector<UncertainInput>& out) {
@@ -246,26 +234,24 @@ void addShunts(const Rack& rack, const Channel& channel, std::vector<UncertainIn
     const auto shift = [indices](ChannelModel& m, double delta) {
       for (const auto k : indices) m.shunts[k].resistance += delta * ohm;
     };
+    const std::string quantity = "shunt resistor " + resistorName;
     if (resistor.expandedUncertainty.in(one) > 0) {
-      out.push_back(input("shunt resistor " + resistorName + ", certificate", value, "ohm",
-                          value * resistor.expandedUncertainty.in(one) / resistor.coverageFactor, shift,
-                          Shape::normal));
+      const double u = value * resistor.expandedUncertainty.in(one) / resistor.coverageFactor;
+      out.push_back({{quantity + ", certificate", "ohm", normal(value, u)}, shift});
     } else {
-      out.push_back(input("shunt resistor " + resistorName, value, "ohm",
-                          value * resistor.tolerance.in(one) / kRectangular, shift));
+      out.push_back({{quantity, "ohm", rectangular(value, value * resistor.tolerance.in(one))}, shift});
     }
     const double thermal = value * (resistor.temperatureCoefficient * resistor.temperatureSpan).in(one);
     if (thermal != 0) {
-      out.push_back(input("shunt resistor " + resistorName + ", temperature", 0, "ohm",
-                          std::abs(thermal) / kRectangular, shift));
+      out.push_back({{quantity + ", temperature", "ohm", rectangular(0, std::abs(thermal))}, shift});
     }
   }
   for (std::size_t k = 0; k < channel.shunts.size(); ++k) {
     const auto& relay = channel.shunts[k].relay;
     const auto& relays = *rack.device(relay.device)->profile->relays;
-    out.push_back(input("contact of relay " + relay.device + "/" + std::to_string(relay.relay),
-                        relays.contactResistance.in(ohm), "ohm", relays.contactTolerance.in(ohm) / kRectangular,
-                        [k](ChannelModel& m, double delta) { m.shunts[k].resistance += delta * ohm; }));
+    out.push_back({{"contact of relay " + relay.device + "/" + std::to_string(relay.relay), "ohm",
+                    rectangular(relays.contactResistance.in(ohm), relays.contactTolerance.in(ohm))},
+                   [k](ChannelModel& m, double delta) { m.shunts[k].resistance += delta * ohm; }});
   }
 }
 

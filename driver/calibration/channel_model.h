@@ -1,14 +1,13 @@
 #pragma once
 
 #include <functional>
-#include <limits>
 #include <string>
 #include <vector>
 
 #include "driver/bridge/circuit.h"
-#include "driver/metrology/coverage.h"
 #include "driver/core/error.h"
 #include "driver/description/rack.h"
+#include "driver/metrology/model.h"
 
 namespace shuntwright::calibration {
 
@@ -44,19 +43,19 @@ struct ScalePrediction {
 };
 Result<ScalePrediction> predictScale(const ChannelModel& model, units::Ratio zero);
 
-/// Amplifier's span from all shunts: least squares of measured against predicted steps through the origin.
+/// Amplifier's span from all shunts: least squares of measured against predicted steps through the origin. 1 when
+/// they cannot give one (no shunt, no predicted step).
 double spanOf(const std::vector<units::Ratio>& measured, const std::vector<units::Ratio>& predicted);
 
-/// One value that is not known exactly.
+/// One value that is not known exactly: what is known of it, and what moving it does to the model. Shifts are
+/// applied in the order in which inputsOf() lists them.
 struct UncertainInput {
-  std::string quantity;
-  double value = 0;
-  std::string unit;
-  metrology::Shape shape = metrology::Shape::rectangular;
-  double standardUncertainty = 0;  ///< in `unit`
-  double degreesOfFreedom = std::numeric_limits<double>::infinity();
-  std::function<void(ChannelModel&, double delta)> shift;  ///< moves it by delta, in `unit`
+  metrology::Input input;
+  std::function<void(ChannelModel&, double delta)> shift;  ///< moves it by delta, in the input's unit
 };
+
+/// The quantity by which the leads' temperature changes between calibration and test.
+inline constexpr const char* kLeadsWarming = "lead temperature, change until the test";
 
 /// Everything about the circuit and the shunts that is not known exactly: resistors by tolerance or
 /// certificate and temperature, relay contacts, gauges, completions, half bridge, each lead, and the leads'

@@ -1,25 +1,20 @@
 #include "driver/calibration/uncertainty.h"
 
 #include <cmath>
-#include <limits>
 #include <numbers>
+
+#include "driver/metrology/first_order.h"
 
 namespace shuntwright::calibration {
 
 using namespace units;
-using metrology::Component;
-using metrology::coverageHalfWidth;
-using metrology::Shape;
-using metrology::studentFactor;
-using metrology::WeightedDegrees;
 using description::Channel;
 using description::Rack;
 using description::Unbalance;
+using metrology::normal;
+using metrology::rectangular;
 
 namespace {
-
-constexpr double kInfinity = std::numeric_limits<double>::infinity();
-const char* word(Shape shape) { return shape == Shape::normal ? "normal" : "rectangular"; }
 
 /// ln of the correction's scale for given steps.
 Result<double> logScale(const ChannelModel& model, Ratio zero, const std::vector<Ratio>& measured) {
@@ -28,42 +23,9 @@ Result<double> logScale(const ChannelModel& model, Ratio zero, const std::vector
   return -std::log(std::abs(prediction->slope_per_strain * spanOf(measured, prediction->steps)));
 }
 
-/// A standard uncertainty from a rectangular half-width.
-double rectangular(double halfWidth) { return halfWidth / std::numbers::sqrt3; }
-
-BudgetLine relativeLine(std::string quantity, Shape shape, double standard_percent, double degrees = kInfinity) {
-  BudgetLine line;
-  line.quantity = std::move(quantity);
-  line.unit = "%";
-  line.distribution = word(shape);
-  line.standardUncertainty = standard_percent;
-  line.degreesOfFreedom = degrees;
-  line.sensitivity = 1;
-  line.contribution_percent = standard_percent;
-  return line;
-}
-
-void conclude(Budget& budget) {
-  std::vector<Component> components;
-  std::vector<WeightedDegrees> degrees;
-  double variance = 0;
-  for (const auto& line : budget.lines) {
-    const double u = line.contribution_percent;
-    variance += u * u;
-    components.push_back({line.distribution == "normal" ? Shape::normal : Shape::rectangular, u});
-    degrees.push_back({u, line.degreesOfFreedom});
-  }
-  budget.standardUncertainty_percent = std::sqrt(variance);
-  budget.effectiveDegreesOfFreedom = metrology::effectiveDegrees(degrees);
-  const double student = studentFactor(budget.effectiveDegreesOfFreedom) / studentFactor(kInfinity);
-  budget.expandedUncertainty_percent = coverageHalfWidth(components) * student;
-  budget.coverageFactor = budget.standardUncertainty_percent > 0
-                              ? budget.expandedUncertainty_percent / budget.standardUncertainty_percent
-                              : 2;
-}
-
 /// What it would cost if the unbalance had another cause than the one taken: half-width, relative.
-double costOfCause(const ChannelModel& model, Ratio zero, const std::vector<Ratio>& measured, double nominal) {
+double costOfCause(const ChannelModel& model, Ratio zero, const std::vector<Ratio>& measured,
+                   double nominal) {
   double worst = 0;
   for (const Unbalance cause : {Unbalance::standing_strain, Unbalance::completion}) {
     ChannelModel other = model;
@@ -73,101 +35,156 @@ double costOfCause(const ChannelModel& model, Ratio zero, const std::vector<Rati
   return worst;
 }
 
+/// The inputs of a measurement on one channel: first those that change the circuit, then those that add
+/// straight to the output, in its unit.
+class ChannelInputs {
+ public:
+  explicit ChannelInputs(ChannelModel nominal) : nominal_(std::move(nominal)) {}
+
+  void add(UncertainInput in) {
+    if (in.input.distribution.standardUncertainty <= 0) return;
+    inputs_.push_back(std::move(in.input));
+    shifts_.push_back(std::move(in.shift));
+  }
+  void addToOutput(const char* quantity, const char* unit, const metrology::Distribution& distribution) {
+    added_.push_back({quantity, unit, distribution});
+  }
+
+  /// @param output  of a changed circuit, without what adds straight to it.
+  metrology::Model model(std::function<Result<double>(const ChannelModel&)> output) && {
+    metrology::Model model;
+    model.inputs = inputs_;
+    model.inputs.insert(model.inputs.end(), added_.begin(), added_.end());
+    model.function = [nominal = std::move(nominal_), circuit = std::move(inputs_),
+                      shifts = std::move(shifts_), output = std::move(output)](
+                         std::span<const double> x, std::span<double> y) -> Result<void> {
+      ChannelModel shifted = nominal;
+      for (std::size_t i = 0; i < shifts.size(); ++i) shifts[i](shifted, x[i] - circuit[i].distribution.mean);
+      auto value = output(shifted);
+      if (!value) return std::unexpected(std::move(value.error()));
+      y[0] = *value;
+      for (std::size_t i = shifts.size(); i < x.size(); ++i) y[0] += x[i];
+      return {};
+    };
+    return model;
+  }
+
+ private:
+  ChannelModel nominal_;
+  std::vector<metrology::Input> inputs_, added_;
+  std::vector<std::function<void(ChannelModel&, double)>> shifts_;
+};
+
 }  // namespace
 
-Result<Budget> scaleBudget(const Rack& rack, const Channel& channel, Ratio zero, const std::vector<Ratio>& measured,
-                           const ReadingScatter& scatter) {
-  const ChannelModel model = modelWithLeads(rack, channel);
-  auto nominal = logScale(model, zero, measured);
+Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, const ScaleReadings& readings) {
+  const auto& [zero, measured, scatter] = readings;
+  const ChannelModel nominalModel = modelWithLeads(rack, channel);
+  auto nominal = logScale(nominalModel, zero, measured);
   if (!nominal) return std::unexpected(std::move(nominal.error()));
-  Budget budget;
-  for (const auto& in : inputsOf(rack, channel)) {
-    if (in.standardUncertainty <= 0) continue;
-    double scale[2];
-    for (const int side : {0, 1}) {
-      ChannelModel shifted = model;
-      in.shift(shifted, (side == 0 ? -1 : 1) * in.standardUncertainty);
-      auto value = logScale(shifted, zero, measured);
-      if (!value) return std::unexpected(std::move(value.error()));
-      scale[side] = *value;
-    }
-    BudgetLine line;
-    line.quantity = in.quantity;
-    line.value = in.value;
-    line.unit = in.unit;
-    line.distribution = word(in.shape);
-    line.standardUncertainty = in.standardUncertainty;
-    line.degreesOfFreedom = in.degreesOfFreedom;
-    line.sensitivity = 100 * (scale[1] - scale[0]) / (2 * in.standardUncertainty);
-    line.contribution_percent = std::abs(line.sensitivity) * in.standardUncertainty;
-    budget.lines.push_back(std::move(line));
-  }
+  ChannelInputs inputs(nominalModel);
+  for (auto& in : inputsOf(rack, channel)) inputs.add(std::move(in));
+  const auto addRelative = [&](const char* quantity, const metrology::Distribution& inPercent) {
+    inputs.addToOutput(quantity, "%", inPercent);
+  };
   if (channel.leadLoss == description::LeadLoss::in_span) {
     // The correction is worked out with no leads: what is left of them is the part the steps do not carry.
     if (auto without = logScale(modelOf(rack, channel), zero, measured)) {
-      budget.lines.push_back(relativeLine("lead loss not carried by the steps", Shape::rectangular,
-                                          100 * rectangular(std::abs(*without - *nominal))));
+      addRelative("lead loss not carried by the steps", rectangular(0, 100 * std::abs(*without - *nominal)));
     }
   }
   if (channel.unbalance == Unbalance::unknown) {
-    budget.lines.push_back(relativeLine("cause of unbalance", Shape::rectangular,
-                                        100 * rectangular(costOfCause(model, zero, measured, *nominal))));
+    const double cost = costOfCause(nominalModel, zero, measured, *nominal);
+    addRelative("cause of unbalance", rectangular(0, 100 * cost));
   }
-  budget.lines.push_back(relativeLine("noise and repeats of the steps", Shape::normal, 100 * scatter.stepRelative,
-                                      scatter.stepDegrees));
+  addRelative("noise and repeats of the steps", normal(0, 100 * scatter.stepRelative, scatter.stepDegrees));
   const double step = std::abs(scatter.smallestStep.in(volt_per_volt));
   if (step > 0) {
     // Two readings a step, each off by at most half a digit.
-    const double digit = rectangular(0.5 * scatter.resolution.in(volt_per_volt)) * std::numbers::sqrt2;
-    budget.lines.push_back(relativeLine("resolution of the readings", Shape::rectangular, 100 * digit / step));
+    const double digits = 0.5 * scatter.resolution.in(volt_per_volt)*std::numbers::sqrt2;
+    addRelative("resolution of the readings", rectangular(0, 100 * digits / step));
   }
-  conclude(budget);
+  return std::move(inputs).model([readings, nominal = *nominal](const ChannelModel& model) {
+    auto scale = logScale(model, readings.zero, readings.measured);
+    if (scale) *scale = 100 * (*scale - nominal);
+    return scale;
+  });
+}
+
+Result<Budget> scaleBudget(const Rack& rack, const Channel& channel, const ScaleReadings& readings) {
+  auto model = scaleModel(rack, channel, readings);
+  if (!model) return std::unexpected(std::move(model.error()));
+  auto propagated = metrology::firstOrder(*model);
+  if (!propagated) return std::unexpected(std::move(propagated.error()));
+  const metrology::Estimate& scale = propagated->outputs.front();
+  Budget budget;
+  for (std::size_t i = 0; i < model->inputs.size(); ++i) {
+    const auto& [quantity, unit, distribution] = model->inputs[i];
+    BudgetLine line;
+    line.quantity = quantity;
+    line.value = distribution.mean;
+    line.unit = unit;
+    line.distribution = metrology::name(distribution.shape);
+    line.standardUncertainty = distribution.standardUncertainty;
+    line.degreesOfFreedom = distribution.degreesOfFreedom;
+    line.sensitivity = scale.contributions[i].sensitivity;
+    line.contribution_percent = scale.contributions[i].uncertainty;
+    budget.lines.push_back(std::move(line));
+  }
+  budget.standardUncertainty_percent = scale.standardUncertainty;
+  budget.effectiveDegreesOfFreedom = scale.degreesOfFreedom;
+  budget.expandedUncertainty_percent = metrology::shapedHalfWidth(*model, scale);
+  budget.coverageFactor =
+      scale.standardUncertainty > 0 ? budget.expandedUncertainty_percent / scale.standardUncertainty : 2;
   return budget;
 }
 
-Result<Strain> zeroUncertainty(const Rack& rack, const Channel& channel, Ratio zero, const ZeroScatter& scatter) {
+Result<metrology::MonteCarloResult> scaleMonteCarlo(const Rack& rack, const Channel& channel,
+                                                    const ScaleReadings& readings, Random& random,
+                                                    const metrology::MonteCarloOptions& options) {
+  auto model = scaleModel(rack, channel, readings);
+  if (!model) return std::unexpected(std::move(model.error()));
+  return metrology::monteCarlo(*model, random, options);
+}
+
+Result<metrology::Model> zeroModel(const Rack& rack, const Channel& channel, Ratio zero,
+                                   const ZeroScatter& scatter) {
   const ChannelModel nominal = modelWithLeads(rack, channel);
   auto prediction = predictScale(nominal, zero);
   if (!prediction) return std::unexpected(std::move(prediction.error()));
   const double slope = std::abs(prediction->slope_per_strain);
-  double variance = 0;
-  const auto addRatio = [&](double u_V_per_V) { variance += (u_V_per_V / slope) * (u_V_per_V / slope); };
-  addRatio(scatter.standardUncertainty.in(volt_per_volt));
-  addRatio(rectangular(0.5 * scatter.resolution.in(volt_per_volt)));
-  addRatio(rectangular(scatter.returnSpread.in(volt_per_volt)));
-  addRatio(rectangular(scatter.stability.in(volt_per_volt)));
-
-  // Leads that warm: the shift by itself, and together with each lead being off its stated value.
-  const auto zeroShift = [&](const ChannelModel& model) {
-    const auto then = bridge::ratio(model.atCalibration, {});
-    const auto later = bridge::ratio(model.inTest, {});
-    return then && later ? (*later - *then).in(volt_per_volt) : 0.0;
-  };
-  const auto inputs = inputsOf(rack, channel);
-  for (const auto& warming : inputs) {
-    if (warming.quantity != "lead temperature, change until the test") continue;
-    ChannelModel warm = nominal;
-    const double change = scatter.leadsShare * warming.standardUncertainty;
-    warming.shift(warm, change);
-    const double alone = zeroShift(warm);
-    addRatio(alone);
-    for (const auto& lead : inputs) {
-      if (!lead.quantity.starts_with("lead ") || lead.unit != "ohm") continue;
-      ChannelModel both = nominal;
-      lead.shift(both, lead.standardUncertainty);
-      // A longer lead warms by more ohms.
-      const double longer = lead.value > 0 ? 1 + lead.standardUncertainty / lead.value : 1;
-      ChannelModel bothWarm = both;
-      warming.shift(bothWarm, change);
-      for (std::size_t t = 0; t < both.inTest.leads.size(); ++t) {
-        const auto warmedBy = bothWarm.inTest.leads[t] - both.inTest.leads[t];
-        const bool own = both.atCalibration.leads[t] != nominal.atCalibration.leads[t];
-        if (own) bothWarm.inTest.leads[t] = both.inTest.leads[t] + warmedBy * longer;
-      }
-      addRatio(zeroShift(bothWarm) - alone);
-    }
+  ChannelInputs inputs(nominal);
+  // Of the circuit only what changes until the test moves the zero: leads that warm, by more where they are
+  // longer.
+  for (auto& in : inputsOf(rack, channel)) {
+    if (!in.input.quantity.starts_with("lead ")) continue;
+    if (in.input.quantity == kLeadsWarming) in.input.distribution.standardUncertainty *= scatter.leadsShare;
+    inputs.add(std::move(in));
   }
-  return std::sqrt(variance) * strain;
+  const auto strainOf = [slope](Ratio r) { return r.in(volt_per_volt) / slope; };
+  inputs.addToOutput("noise of the zero reading", "m/m", normal(0, strainOf(scatter.standardUncertainty)));
+  inputs.addToOutput("resolution of the zero reading", "m/m",
+                     rectangular(0, 0.5 * strainOf(scatter.resolution)));
+  inputs.addToOutput("zero return", "m/m", rectangular(0, strainOf(scatter.returnSpread)));
+  inputs.addToOutput("stability of the amplifier", "m/m", rectangular(0, strainOf(scatter.stability)));
+  return std::move(inputs).model([slope](const ChannelModel& model) -> Result<double> {
+    const auto then = bridge::ratio(model.atCalibration, {});
+    if (!then) return std::unexpected(then.error());
+    const auto later = bridge::ratio(model.inTest, {});
+    if (!later) return std::unexpected(later.error());
+    return (*later - *then).in(volt_per_volt) / slope;
+  });
+}
+
+Result<Strain> zeroUncertainty(const Rack& rack, const Channel& channel, Ratio zero,
+                               const ZeroScatter& scatter) {
+  auto model = zeroModel(rack, channel, zero, scatter);
+  if (!model) return std::unexpected(std::move(model.error()));
+  metrology::FirstOrderOptions options;
+  options.secondOrder = true;
+  auto propagated = metrology::firstOrder(*model, options);
+  if (!propagated) return std::unexpected(std::move(propagated.error()));
+  return propagated->outputs.front().standardUncertainty * strain;
 }
 
 }  // namespace shuntwright::calibration

@@ -4,6 +4,7 @@
 
 #include "driver/calibration/channel_model.h"
 #include "driver/calibration/record.h"
+#include "driver/metrology/monte_carlo.h"
 
 namespace shuntwright::calibration {
 
@@ -15,14 +16,28 @@ struct ReadingScatter {
   units::Ratio smallestStep;         ///< |measured|, to turn the resolution into a relative figure
 };
 
-/// Uncertainty of the correction's scale: of measured steps, of the circuit, of the shunts. Sensitivities are
-/// central differences of the full network at one standard uncertainty: ln(scale) where scale = 1 / (slope x
-/// span) (GUM 5.1.3 note 2). Effective degrees of freedom by Welch-Satterthwaite (GUM G.4.1); the expanded
-/// uncertainty at 95.45 % from the convolved shapes, times Student's factor over the normal one.
-/// @param zero      true ratio at no load (reading over span).
-/// @param measured  steps as measured, one a shunt; their size does not matter, only their proportion.
-Result<Budget> scaleBudget(const description::Rack& rack, const description::Channel& channel, units::Ratio zero,
-                           const std::vector<units::Ratio>& measured, const ReadingScatter& scatter);
+/// What the uncertainty of a correction's scale depends on.
+struct ScaleReadings {
+  units::Ratio zero;                   ///< true ratio at no load (reading over span)
+  std::vector<units::Ratio> measured;  ///< steps, one a shunt; their size does not matter, only their proportion
+  ReadingScatter scatter;
+};
+
+/// The measurement behind a correction's scale: of measured steps, of the circuit, of the shunts. Its one output is
+/// by how much ln(scale) is off its nominal value, in percent, where scale = 1 / (slope x span) of the full
+/// network. Both the budget and its second opinion propagate this model.
+Result<metrology::Model> scaleModel(const description::Rack& rack, const description::Channel& channel,
+                                    const ScaleReadings& readings);
+
+/// The budget of the scale: GUM to first order; the expanded uncertainty at 95.45 % from the convolved shapes, times
+/// Student's factor over the normal one.
+Result<Budget> scaleBudget(const description::Rack& rack, const description::Channel& channel,
+                           const ScaleReadings& readings);
+
+/// Second opinion: Monte Carlo of the same model (JCGM 101). Output 0 is in percent of the scale, about 0.
+Result<metrology::MonteCarloResult> scaleMonteCarlo(const description::Rack& rack,
+                                                    const description::Channel& channel, const ScaleReadings& readings,
+                                                    Random& random, const metrology::MonteCarloOptions& options = {});
 
 /// How far the zero may move until the test, as a strain: scatter and resolution of the zero reading, the
 /// drift seen while calibrating, leads that warm (second order where equal leads cancel).
@@ -33,6 +48,12 @@ struct ZeroScatter {
   units::Ratio stability;            ///< half-width by which the offset may wander until the test
   double leadsShare = 1;             ///< how much of the leads' stated change of temperature happens until then
 };
+
+/// The measurement behind a zero: its one output is by how much the zero is off when the test comes, in m/m.
+Result<metrology::Model> zeroModel(const description::Rack& rack, const description::Channel& channel,
+                                   units::Ratio zero, const ZeroScatter& scatter);
+
+/// Standard uncertainty of the zero by the GUM, with second-order terms.
 Result<units::Strain> zeroUncertainty(const description::Rack& rack, const description::Channel& channel,
                                       units::Ratio zero, const ZeroScatter& scatter);
 
