@@ -4,8 +4,8 @@
 # and sim/ only what SIM_MAY_LINK names: the simulator solves its circuits and writes its bytes with
 # code of its own, so that a mistake in the driver cannot cancel out.
 
-set(DRIVER_PARTS core units metrology description bridge protocol transport device rack calibration correction
-    recording ledger plugin)
+set(DRIVER_PARTS core units metrology description bridge mechanics protocol transport device rack calibration
+    correction recording ledger plugin)
 set(SIM_PARTS wire fault physics relays amplifier)
 set(SIM_MAY_LINK core units description)
 
