@@ -3,6 +3,7 @@
 #include <cmath>
 #include <numbers>
 
+#include "driver/calibration/measurement_model.h"
 #include "driver/metrology/first_order.h"
 
 namespace shuntwright::calibration {
@@ -35,46 +36,6 @@ double costOfCause(const ChannelModel& model, Ratio zero, const std::vector<Rati
   return worst;
 }
 
-/// The inputs of a measurement on one channel: first those that change the circuit, then those that add
-/// straight to the output, in its unit.
-class ChannelInputs {
- public:
-  explicit ChannelInputs(ChannelModel nominal) : nominal_(std::move(nominal)) {}
-
-  void add(UncertainInput in) {
-    if (in.input.distribution.standardUncertainty <= 0) return;
-    inputs_.push_back(std::move(in.input));
-    shifts_.push_back(std::move(in.shift));
-  }
-  void addToOutput(const char* quantity, const char* unit, const metrology::Distribution& distribution) {
-    added_.push_back({quantity, unit, distribution});
-  }
-
-  /// @param output  of a changed circuit, without what adds straight to it.
-  metrology::Model model(std::function<Result<double>(const ChannelModel&)> output) && {
-    metrology::Model model;
-    model.inputs = inputs_;
-    model.inputs.insert(model.inputs.end(), added_.begin(), added_.end());
-    model.function = [nominal = std::move(nominal_), circuit = std::move(inputs_),
-                      shifts = std::move(shifts_), output = std::move(output)](
-                         std::span<const double> x, std::span<double> y) -> Result<void> {
-      ChannelModel shifted = nominal;
-      for (std::size_t i = 0; i < shifts.size(); ++i) shifts[i](shifted, x[i] - circuit[i].distribution.mean);
-      auto value = output(shifted);
-      if (!value) return std::unexpected(std::move(value.error()));
-      y[0] = *value;
-      for (std::size_t i = shifts.size(); i < x.size(); ++i) y[0] += x[i];
-      return {};
-    };
-    return model;
-  }
-
- private:
-  ChannelModel nominal_;
-  std::vector<metrology::Input> inputs_, added_;
-  std::vector<std::function<void(ChannelModel&, double)>> shifts_;
-};
-
 }  // namespace
 
 Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, const ScaleReadings& readings) {
@@ -82,7 +43,7 @@ Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, co
   const ChannelModel nominalModel = modelWithLeads(rack, channel);
   auto nominal = logScale(nominalModel, zero, measured);
   if (!nominal) return std::unexpected(std::move(nominal.error()));
-  ChannelInputs inputs(nominalModel);
+  MeasurementInputs inputs(nominalModel);
   for (auto& in : inputsOf(rack, channel)) inputs.add(std::move(in));
   const auto addRelative = [&](const char* quantity, const metrology::Distribution& inPercent) {
     inputs.addToOutput(quantity, "%", inPercent);
@@ -104,11 +65,13 @@ Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, co
     const double digits = 0.5 * scatter.resolution.in(volt_per_volt)*std::numbers::sqrt2;
     addRelative("resolution of the readings", rectangular(0, 100 * digits / step));
   }
-  return std::move(inputs).model([readings, nominal = *nominal](const ChannelModel& model) {
-    auto scale = logScale(model, readings.zero, readings.measured);
-    if (scale) *scale = 100 * (*scale - nominal);
-    return scale;
-  });
+  return std::move(inputs).model(
+      1, [readings, nominal = *nominal](const ChannelModel& model, std::span<double> y) -> Result<void> {
+        auto scale = logScale(model, readings.zero, readings.measured);
+        if (!scale) return std::unexpected(std::move(scale.error()));
+        y[0] = 100 * (*scale - nominal);
+        return {};
+      });
 }
 
 Result<Budget> scaleBudget(const Rack& rack, const Channel& channel, const ScaleReadings& readings) {
@@ -153,7 +116,7 @@ Result<metrology::Model> zeroModel(const Rack& rack, const Channel& channel, Rat
   auto prediction = predictScale(nominal, zero);
   if (!prediction) return std::unexpected(std::move(prediction.error()));
   const double slope = std::abs(prediction->slope_per_strain);
-  ChannelInputs inputs(nominal);
+  MeasurementInputs inputs(nominal);
   // Of the circuit only what changes until the test moves the zero: leads that warm, by more where they are
   // longer.
   for (auto& in : inputsOf(rack, channel)) {
@@ -167,12 +130,13 @@ Result<metrology::Model> zeroModel(const Rack& rack, const Channel& channel, Rat
                      rectangular(0, 0.5 * strainOf(scatter.resolution)));
   inputs.addToOutput("zero return", "m/m", rectangular(0, strainOf(scatter.returnSpread)));
   inputs.addToOutput("stability of the amplifier", "m/m", rectangular(0, strainOf(scatter.stability)));
-  return std::move(inputs).model([slope](const ChannelModel& model) -> Result<double> {
+  return std::move(inputs).model(1, [slope](const ChannelModel& model, std::span<double> y) -> Result<void> {
     const auto then = bridge::ratio(model.atCalibration, {});
     if (!then) return std::unexpected(then.error());
     const auto later = bridge::ratio(model.inTest, {});
     if (!later) return std::unexpected(later.error());
-    return (*later - *then).in(volt_per_volt) / slope;
+    y[0] = (*later - *then).in(volt_per_volt) / slope;
+    return {};
   });
 }
 

@@ -10,43 +10,45 @@ namespace shuntwright::calibration {
 
 /// What the readings themselves say about their scatter.
 struct ReadingScatter {
-  double stepRelative = 0;           ///< standard uncertainty of the span from noise and repeats, relative
-  double stepDegrees = 1;            ///< its degrees of freedom
-  units::Ratio resolution;           ///< of one reading
-  units::Ratio smallestStep;         ///< |measured|, to turn the resolution into a relative figure
+  double stepRelative = 0;    ///< standard uncertainty of the span from noise and repeats, relative
+  double stepDegrees = 1;     ///< its degrees of freedom
+  units::Ratio resolution;    ///< of one reading
+  units::Ratio smallestStep;  ///< |measured|, to turn the resolution into a relative figure
 };
 
 /// What the uncertainty of a correction's scale depends on.
 struct ScaleReadings {
-  units::Ratio zero;                   ///< true ratio at no load (reading over span)
-  std::vector<units::Ratio> measured;  ///< steps, one a shunt; their size does not matter, only their proportion
+  units::Ratio zero;  ///< true ratio at no load (reading over span)
+  std::vector<units::Ratio>
+      measured;  ///< steps, one a shunt; their size does not matter, only their proportion
   ReadingScatter scatter;
 };
 
-/// The measurement behind a correction's scale: of measured steps, of the circuit, of the shunts. Its one output is
-/// by how much ln(scale) is off its nominal value, in percent, where scale = 1 / (slope x span) of the full
-/// network. Both the budget and its second opinion propagate this model.
+/// The measurement behind a correction's scale: of measured steps, of the circuit, of the shunts. Its one
+/// output is by how much ln(scale) is off its nominal value, in percent, where scale = 1 / (slope x span) of
+/// the full network. Both the budget and its second opinion propagate this model.
 Result<metrology::Model> scaleModel(const description::Rack& rack, const description::Channel& channel,
                                     const ScaleReadings& readings);
 
-/// The budget of the scale: GUM to first order; the expanded uncertainty at 95.45 % from the convolved shapes, times
-/// Student's factor over the normal one.
+/// The budget of the scale: GUM to first order; the expanded uncertainty at 95.45 % from the convolved
+/// shapes, times Student's factor over the normal one.
 Result<Budget> scaleBudget(const description::Rack& rack, const description::Channel& channel,
                            const ScaleReadings& readings);
 
 /// Second opinion: Monte Carlo of the same model (JCGM 101). Output 0 is in percent of the scale, about 0.
 Result<metrology::MonteCarloResult> scaleMonteCarlo(const description::Rack& rack,
-                                                    const description::Channel& channel, const ScaleReadings& readings,
-                                                    Random& random, const metrology::MonteCarloOptions& options = {});
+                                                    const description::Channel& channel,
+                                                    const ScaleReadings& readings, Random& random,
+                                                    const metrology::MonteCarloOptions& options = {});
 
 /// How far the zero may move until the test, as a strain: scatter and resolution of the zero reading, the
 /// drift seen while calibrating, leads that warm (second order where equal leads cancel).
 struct ZeroScatter {
   units::Ratio standardUncertainty;  ///< of the mean zero reading
   units::Ratio resolution;
-  units::Ratio returnSpread;         ///< largest |return - before| seen
-  units::Ratio stability;            ///< half-width by which the offset may wander until the test
-  double leadsShare = 1;             ///< how much of the leads' stated change of temperature happens until then
+  units::Ratio returnSpread;  ///< largest |return - before| seen
+  units::Ratio stability;     ///< half-width by which the offset may wander until the test
+  double leadsShare = 1;      ///< how much of the leads' stated change of temperature happens until then
 };
 
 /// The measurement behind a zero: its one output is by how much the zero is off when the test comes, in m/m.
