@@ -1,3 +1,4 @@
+// proves P-12
 // Worked examples of the Guide to the expression of uncertainty in measurement (JCGM 100:2008), through the
 // engine that makes the project's own budgets. "quoted": seen in the documentation of a national institute's
 // uncertainty library; "from memory": not looked up; "recomputed": 40-digit arithmetic of the same data.

@@ -1,3 +1,4 @@
+// proves P-12
 // Worked examples of Supplement 1 to the GUM (JCGM 101:2008, clause 9): the same models propagated by the law
 // of propagation of uncertainty and by Monte Carlo, with the engine that makes the project's own budgets.
 // Published figures are from memory; "exact" ones are computed here or with 40-digit arithmetic. Tolerances

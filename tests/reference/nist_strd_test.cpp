@@ -1,3 +1,4 @@
+// proves P-12
 // NIST Statistical Reference Datasets, linear least squares, through the fit that the calibration uses.
 // Norris and NoInt1: certified values as several public files quote them; the others from memory, each
 // confirmed by exact rational arithmetic of the data given here. The load cell is also the worked example of

@@ -1,3 +1,4 @@
+// proves P-13
 #include "driver/calibration/uncertainty.h"
 
 #include <gtest/gtest.h>
