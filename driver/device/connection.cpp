@@ -188,7 +188,12 @@ void Connection::onNotAwaited(const Incoming& incoming, std::string_view line) {
 }
 
 void Connection::onSamples(const Incoming& incoming, Instant arrival) {
-  if (profile().inputs->counterBits > 0) queue_->noteLost(counter_.next(incoming.counter));
+  if (profile().inputs->counterBits > 0) {
+    const auto restarts = counter_.restarts();
+    queue_->noteLost(counter_.next(incoming.counter));
+    // How many frames are gone nobody knows; that some are must be seen.
+    if (counter_.restarts() != restarts) queue_->noteDamaged(1);
+  }
   queue_->push(arrival, ratio_, flags_);
   ++inThisPiece_;
 }
@@ -231,7 +236,9 @@ Task<Result<Connection::Times>> Connection::ask(const description::Exchange& exc
     if (done) co_return done;
     Error error = std::move(done.error());
     const bool again = error.code == ErrorCode::timeout || error.code == ErrorCode::bad_answer;
-    if (again && k < tries && !failure_) continue;
+    // A request that was cut off is not sent again: its beginning may have been taken for another one, and only the
+    // caller knows what to do about that.
+    if (again && k < tries && !failure_ && !torn_) continue;
     if (again && tries > 1) error.message += " (tried " + std::to_string(k) + " times)";
     error.where = where() + ", request " + quoted(request->text);
     co_return std::unexpected(std::move(error));
@@ -240,6 +247,9 @@ Task<Result<Connection::Times>> Connection::ask(const description::Exchange& exc
 
 Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& request, const Accept& accept) {
   const auto& protocol = profile().protocol;
+  if (torn_) {
+    if (auto ended = co_await endTornRequest(request); !ended) co_return std::unexpected(std::move(ended.error()));
+  }
   if (owed_) co_await awaitQuiet();
   if (lastAnswer_ != Instant::min() && clock_.now() < lastAnswer_ + protocol.gap) {
     const Instant free = lastAnswer_ + protocol.gap;
@@ -256,8 +266,10 @@ Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& req
     Pending& pending;
     bool waits;
     Instant sent;
+    bool whole = false;  ///< all of the request went out
     ~Guard() {
       connection.pending_ = nullptr;
+      if (!whole) connection.torn_ = true;
       if (!waits || pending.done) return;
       const Nanoseconds timeout = connection.profile().protocol.timeout;
       connection.owed_ = Owed{pending.request, pending.expectEcho, sent + timeout + timeout / 2};
@@ -268,6 +280,7 @@ Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& req
   const Instant writeBy = clock_.now() + protocol.timeout;
   auto written = co_await stream_->write(request.bytes, writeBy);
   const Instant sent = guard.sent = clock_.now();
+  guard.whole = written.has_value();
   if (!written) {
     co_return std::unexpected(std::move(written.error()).wrap("the request could not be sent"));
   }
@@ -287,6 +300,19 @@ Task<Result<Connection::Times>> Connection::attempt(const protocol::Request& req
   }
   if (failure_) co_return std::unexpected(*failure_);
   co_return std::unexpected(silence(pending));
+}
+
+/// Ends a request that was cut off while it was written, so that the device does not take the next one for its
+/// rest, and leaves it the time to answer to that.
+Task<Result<void>> Connection::endTornRequest(const protocol::Request& next) {
+  const auto& protocol = profile().protocol;
+  const Bytes end(bytesOf(protocol.requestEnd).begin(), bytesOf(protocol.requestEnd).end());
+  const Instant writeBy = clock_.now() + protocol.timeout;
+  auto written = co_await stream_->write(end, writeBy);
+  if (!written) co_return std::unexpected(std::move(written.error()).wrap("a request that was cut off could not be ended"));
+  torn_ = false;
+  owed_ = Owed{next, protocol.echo, clock_.now() + protocol.timeout};
+  co_return Result<void>{};
 }
 
 Task<void> Connection::awaitQuiet() {

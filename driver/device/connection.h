@@ -89,6 +89,7 @@ class Connection : public std::enable_shared_from_this<Connection> {
 
   Task<Result<Times>> attempt(const protocol::Request& request, const Accept& accept);
   Task<void> awaitQuiet();
+  Task<Result<void>> endTornRequest(const protocol::Request& next);
   Error silence(const Pending& pending);
 
   const description::Device described_;
@@ -100,6 +101,7 @@ class Connection : public std::enable_shared_from_this<Connection> {
   Event progress_;  ///< the pending request went on, or an owed answer came
   Pending* pending_ = nullptr;
   std::optional<Owed> owed_;
+  bool torn_ = false;  ///< the device may hold the beginning of a request whose rest was never sent
   Instant lastAnswer_ = Instant::min();
   std::optional<Error> failure_;
   Strays strays_;

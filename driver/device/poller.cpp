@@ -78,6 +78,7 @@ Task<void> Poller::read() {
   if (!queue || !wanted_) co_return;
   if (done) {
     queue->push(done->middle(), ratio_, flags_);
+    error_.reset();  // it answers again; what was lost is in the count
   } else {
     queue->noteLost(1);
     error_ = std::move(done.error());

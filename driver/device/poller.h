@@ -23,7 +23,7 @@ class Poller : public std::enable_shared_from_this<Poller> {
   /// Ends it without awaiting anything.
   void halt();
 
-  /// The last reading that failed, once.
+  /// The error of the last reading, if it failed, once.
   std::optional<Error> takeError() { return std::exchange(error_, std::nullopt); }
 
  private:

@@ -25,7 +25,7 @@ struct SampleBlock {
   std::vector<float> ratio;         ///< frames x inputs
   std::vector<std::uint8_t> flags;  ///< frames x inputs
   std::uint64_t lostBefore = 0;  ///< frames that the device's counter says were lost just before this block
-  std::uint64_t damagedBefore = 0;  ///< lines that could not be read just before this block
+  std::uint64_t damagedBefore = 0;  ///< lines that could not be read, and restarts of the device's counter, just before this block
 
   std::size_t frames() const { return time.size(); }
   float at(std::size_t frame, std::size_t input) const { return ratio[frame * inputs + input]; }

@@ -64,6 +64,18 @@ TEST_F(StreamingAmplifier, SetsTheRateStartsAndGivesSamplesAsTheyArrive) {
   EXPECT_EQ(two->lostBefore, 0u);
 }
 
+TEST_F(StreamingAmplifier, ARestartOfTheCounterIsAGapAndNotPassedOver) {
+  ASSERT_TRUE(start(100));
+  wire.send(line(100) + line(101) + line(0) + line(1), 1ms);  // 0 is 101 back: no loss makes that
+  const auto before = next();
+  ASSERT_TRUE(before);
+  EXPECT_EQ(before->frames(), 2u);
+  const auto after = next();
+  ASSERT_TRUE(after);
+  EXPECT_EQ(after->frames(), 2u);
+  EXPECT_EQ(after->damagedBefore, 1u);
+}
+
 TEST_F(StreamingAmplifier, LostLinesAreCountedAcrossTheWrapOfTheCounter) {
   ASSERT_TRUE(start(100));
   wire.send(line(253) + line(254) + line(1) + line(2) + line(5), 1ms);  // 255 and 0 are missing, then 3 and 4
