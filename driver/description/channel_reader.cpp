@@ -38,6 +38,7 @@ class ChannelReader {
     readName(reader_, channel_.name, diagnostics_);
     readInput();
     const bool circuitKnown = readCircuit();
+    if (circuitKnown) checkHalfBridge();
     readGauge();
     readTransducer();
     readCompletion();
@@ -114,6 +115,17 @@ class ChannelReader {
     return true;
   }
 
+  /// A wrong value would not be seen in a strain, but in every step of a shunt across it: none is assumed.
+  void checkHalfBridge() {
+    const bool inside = !isFull(channel_.circuit) && channel_.circuit != CircuitKind::half_opposite;
+    if (!inside || !inputs_ || inputs_->halfBridge.value > units::Resistance{}) return;
+    diagnostics_.error(reader_.entry("circuit")->value.place,
+                       "a " + std::string(name(channel_.circuit)) + " is completed by the amplifier's half bridge, and \"" +
+                           channel_.device + "\" has none",
+                       "state half_bridge = { value = \"1 kohm\", tolerance = \"0.02 %\" } in [inputs] of " +
+                           rack_.device(channel_.device)->profile->file);
+  }
+
   void readGauge() {
     const bool wanted = channel_.circuit != CircuitKind::transducer;
     if (!wanted) {
@@ -162,6 +174,8 @@ class ChannelReader {
     TableReader inner(entry->value, "\"transducer\"", diagnostics_);
     inner.take("input_resistance", out.inputResistance, {"10 ohm", "100 kohm"});
     inner.take("output_resistance", out.outputResistance, {"10 ohm", "100 kohm"});
+    inner.take("input_resistance_tolerance", out.inputTolerance, {"0 %", "20 %"});
+    inner.take("output_resistance_tolerance", out.outputTolerance, {"0 %", "20 %"});
     if (out.inputResistance < out.outputResistance)
       diagnostics_.error(entry->value.place,
                          "the input resistance " + show(out.inputResistance) +

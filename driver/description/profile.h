@@ -92,7 +92,7 @@ struct Inputs {
   units::Ratio zeroStability;          ///< half-width by which the offset may wander within a test
   units::Resistance inputResistance = 1.0 * units::gigaohm;
   std::vector<Toleranced> completions;           ///< quarter-bridge completion resistors on offer
-  Toleranced halfBridge;                         ///< each of the two inner half-bridge resistors
+  Toleranced halfBridge;                         ///< each of the two inner half-bridge resistors; 0 ohm: it has none
   std::vector<units::Voltage> excitations;       ///< choices
   std::vector<units::Frequency> rates;           ///< choices, samples/s a channel
   Nanoseconds filterTimeConstant{0};             ///< of the first-order input filter

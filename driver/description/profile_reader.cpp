@@ -162,8 +162,6 @@ class ProfileReader {
       out.completions.push_back(readToleranced(*completion, "a completion resistor"));
     if (const TomlNode* half = reader.table("half_bridge"))
       out.halfBridge = readToleranced(*half, "\"half_bridge\"");
-    else if (!reader.has("half_bridge"))
-      out.halfBridge = {1.0 * units::kiloohm, 0.01 * units::percent};
     takeChoices(reader, "excitations", "[\"5 V\"]", out.excitations, {"0.1 V", "50 V"});
     takeChoices(reader, "rates", "[\"10 Hz\", \"100 Hz\"]", out.rates, {"0.01 Hz", "1 MHz"});
     reader.take("zero_stability", out.zeroStability, {"0 mV/V", ""});

@@ -98,6 +98,8 @@ enum class Unbalance { unknown, standing_strain, gauge_off_nominal, completion }
 struct TransducerSheet {
   units::Resistance inputResistance = 380.0 * units::ohm;
   units::Resistance outputResistance = 350.0 * units::ohm;
+  units::Fraction inputTolerance;   ///< of the input resistance; 0: as measured
+  units::Fraction outputTolerance;  ///< of the output resistance; 0: as measured
   units::Ratio sensitivity = 2.0 * units::millivolt_per_volt;  ///< at rated value
   units::Fraction sensitivityTolerance = 0.1 * units::percent;
   double ratedValue = 0;

@@ -270,7 +270,8 @@ class RackReader {
     std::map<std::string, const Device*> ports;
     for (const Device& device : rack_.devices) {
       const auto [other, first] = ports.emplace(device.port.text, &device);
-      if (!first && !device.port.text.empty())
+      // One trace may hold several devices.
+      if (!first && !device.port.text.empty() && device.port.kind != Port::Kind::replay)
         diagnostics_.error(device.place,
                            "devices " + inQuotes(other->second->name) + " and " + inQuotes(device.name) +
                                " are on the same port " + inQuotes(device.port.text),

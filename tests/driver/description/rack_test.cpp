@@ -323,6 +323,27 @@ TEST(Rack, warnsOfAGaugeFarOffItsNominal) {
   EXPECT_TRUE(d.ok());
 }
 
+TEST(Rack, aHalfBridgeThatTheProfileDoesNotStateIsNotAssumed) {
+  const std::string none = sample::spoilt(sample::kProfile, "half_bridge = { value = \"1 kohm\", tolerance = \"0.02 %\" }\n", "");
+  EXPECT_EQ(sample::rackProblems(sample::kRack, none),
+            (Lines{"23:11: a quarter 3-wire is completed by the amplifier's half bridge, and \"amp1\" has none | state "
+                   "half_bridge = { value = \"1 kohm\", tolerance = \"0.02 %\" } in [inputs] of p/device.toml"}));
+}
+
+TEST(Rack, aTransducersInputResistanceIsNotBelowItsOutputResistance) {
+  const Lines got = sample::rackProblems(
+      sample::spoilt(sample::kRack, "transducer = { ", "transducer = { output_resistance = \"390 ohm\", "));
+  EXPECT_EQ(got, (Lines{"34:14: the input resistance 380 ohm is below the output resistance 390 ohm | swap them: the "
+                        "compensation resistors stand in the excitation lines"}));
+}
+
+TEST(Rack, oneTraceMayHoldSeveralDevices) {
+  const std::string traced = sample::spoilt(sample::kRack, "tcp:127.0.0.1:47001", "replay:x");
+  EXPECT_EQ(sample::rackProblems(sample::spoilt(
+                traced, "[gauge.G350]", "[[device]]\nname = \"a2\"\nprofile = \"../p/device.toml\"\nport = \"replay:x\"\n[gauge.G350]")),
+            Lines{});
+}
+
 TEST(Rack, mistakesInDefaultsAreSaidOnce) {
   const Lines got =
       sample::rackProblems(sample::spoilt(sample::kRack, "[[channel]]\nname = \"S01\"",
