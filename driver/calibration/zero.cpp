@@ -42,7 +42,7 @@ Result<Strain> uncertaintyOf(const description::Rack& rack, const description::C
 
 }  // namespace
 
-Task<Result<Zeros>> takeZeros(rack::LiveRack& live, Nanoseconds span) {
+Task<Result<Zeros>> takeZeros(rack::LiveRack& live, rack::LoadPathPermit permit, Nanoseconds span) {
   if (!live.relays().maybeClosed().empty()) {
     co_return fail(ErrorCode::refused, "a relay may be closed, and a shunt is no zero", live.described().file,
                    "open every relay with `shuntwright release`");
@@ -60,6 +60,7 @@ Task<Result<Zeros>> takeZeros(rack::LiveRack& live, Nanoseconds span) {
     auto& columns = builders.at(device);
     for (std::size_t frame = 0; frame < block.frames(); ++frame) {
       for (std::size_t k = 0; k < block.inputs; ++k) {
+        if (block.flagsAt(frame, k) & device::kSwitching) continue;
         columns[k].add(block.time[frame], block.at(frame, k), block.flagsAt(frame, k));
       }
     }
@@ -67,7 +68,7 @@ Task<Result<Zeros>> takeZeros(rack::LiveRack& live, Nanoseconds span) {
   Clock& clock = live.clock();
   const Instant end = clock.now() + span;
   const std::function<bool()> enough = [&] { return trouble || clock.now() >= end; };
-  auto done = co_await rack::acquire(live, sink, enough);
+  auto done = co_await rack::acquire(live, permit, sink, enough);
   if (!done) co_return std::unexpected(std::move(done.error()));
   if (trouble) co_return std::unexpected(std::move(*trouble));
   Zeros zeros;

@@ -15,8 +15,8 @@ namespace shuntwright::calibration {
 using Zeros = std::map<std::string, Window>;
 
 /// Reads every channel of the rack for `span`. The specimen must carry no load, which nobody but the person who asks
-/// can know. No relay is touched. Errors: the devices'; refused while a relay may be closed.
-Task<Result<Zeros>> takeZeros(rack::LiveRack& live, Nanoseconds span);
+/// can know. No relay is touched; samples that a relay may still have touched are left out. Errors: the devices'; refused while a relay may be closed.
+Task<Result<Zeros>> takeZeros(rack::LiveRack& live, rack::LoadPathPermit permit, Nanoseconds span);
 
 /// Puts these zeros in place of those of the calibration: the corrections are worked out again about them (spans
 /// stay), and so is how far each zero may move in the time that it has to hold. Absolute sensors keep theirs.

@@ -187,7 +187,15 @@ Result<void> Session::open() {
   Thread& t = *thread_;
   transport::Opener opener;
   rack::LiveRackOptions liveOptions;
-  if (!options_.replayFile.empty()) {
+  const auto traced = transport::replayStart(*rack_);
+  if (!traced) return std::unexpected(traced.error());
+  if (options_.replayFile.empty() && *traced) {
+    auto clock = std::make_unique<VirtualClock>(**traced);
+    t.virtualClock = clock.get();
+    t.clock = std::move(clock);
+    opener = transport::portOpener(*t.clock);
+    t.journal = std::make_unique<rack::MemoryJournal>();
+  } else if (!options_.replayFile.empty()) {
     auto trace = transport::loadTrace(options_.replayFile);
     if (!trace) return std::unexpected(std::move(trace.error()));
     auto clock = std::make_unique<VirtualClock>(trace->start);
@@ -288,6 +296,9 @@ Result<void> Session::use(calibration::Record record) {
 Result<void> Session::start() {
   if (!thread_ || !thread_->live) return std::unexpected(notOpen());
   if (thread_->running) return fail(ErrorCode::bad_use, "samples are being read already");
+  // Starting sets the devices' rates.
+  auto permit = rack::confirmLoadPath(*rack_, options_.isolated, "plug-in host");
+  if (!permit) return std::unexpected(std::move(permit.error()));
   Thread* t = thread_.get();
   t->stopWanted = false;
   {
@@ -298,11 +309,11 @@ Result<void> Session::start() {
     t->acquisitionError.reset();
   }
   struct Acquire {
-    static Task<Result<void>> run(Thread* thread) {
+    static Task<Result<void>> run(Thread* thread, rack::LoadPathPermit permit) {
       rack::AcquisitionSink sink;
       sink.block = [thread](const std::string& device, device::SampleBlock& block) { thread->push(device, block); };
       const std::function<bool()> stop = [thread] { return thread->stopWanted.load(); };
-      auto done = co_await rack::acquire(*thread->live, sink, stop);
+      auto done = co_await rack::acquire(*thread->live, permit, sink, stop);
       const std::lock_guard lock(thread->mutex);
       if (!done) thread->acquisitionError = done.error();
       thread->arrived.notify_all();
@@ -310,7 +321,7 @@ Result<void> Session::start() {
     }
   };
   t->running = true;
-  t->acquisition = t->spawn([t]() -> Task<Result<void>> { return Acquire::run(t); });
+  t->acquisition = t->spawn([t, permit = *permit]() -> Task<Result<void>> { return Acquire::run(t, permit); });
   return {};
 }
 

@@ -38,11 +38,10 @@ class SwitchingMarks {
   }
 
   void mark(device::SampleBlock& block) {
-    const Instant now = live_.clock().now();
-    if (!live_.relays().maybeClosed().empty()) lastClosed_ = now;
-    if (!lastClosed_) return;
+    const auto lastClosed = live_.relays().lastClosed();
+    if (!lastClosed) return;
     for (std::size_t frame = 0; frame < block.frames(); ++frame) {
-      if (block.time[frame] > *lastClosed_ + settle_) continue;
+      if (block.time[frame] > *lastClosed + settle_) continue;
       for (std::size_t k = 0; k < block.inputs; ++k) block.flags[frame * block.inputs + k] |= device::kSwitching;
     }
   }
@@ -50,7 +49,6 @@ class SwitchingMarks {
  private:
   LiveRack& live_;
   Nanoseconds settle_{0};
-  std::optional<Instant> lastClosed_;
 };
 
 struct Run {
@@ -104,7 +102,7 @@ Task<void> runAmplifier(Run& run, Amplifier& amplifier) {
 
 }  // namespace
 
-Task<Result<void>> acquire(LiveRack& live, AcquisitionSink sink, std::function<bool()> stopWanted) {
+Task<Result<void>> acquire(LiveRack& live, LoadPathPermit, AcquisitionSink sink, std::function<bool()> stopWanted) {
   std::vector<std::unique_ptr<Amplifier>> amplifiers;
   for (const auto& described : live.described().devices) {
     if (!described.profile->inputs) continue;
@@ -115,30 +113,29 @@ Task<Result<void>> acquire(LiveRack& live, AcquisitionSink sink, std::function<b
   }
   if (amplifiers.empty()) co_return fail(ErrorCode::bad_use, "the rack has no amplifier", live.described().file);
 
-  // A first start that fails for all of them is an error, not a recording.
-  std::optional<Error> first;
-  for (auto& amplifier : amplifiers) {
-    auto started = co_await amplifier->device->start(LiveRack::rateOf(amplifier->device->described()));
-    amplifier->running = started.has_value();
-    if (!started && !first) first = std::move(started.error());
-  }
-  const bool any = std::any_of(amplifiers.begin(), amplifiers.end(), [](const auto& a) { return a->running; });
-  if (!any) co_return std::unexpected(std::move(*first));
-
   Run run{live, sink, stopWanted, SwitchingMarks(live)};
-  std::vector<std::function<Task<void>()>> bodies;
-  for (auto& amplifier : amplifiers) {
-    bodies.push_back([&run, one = amplifier.get()]() -> Task<void> { return runAmplifier(run, *one); });
-  }
+  std::optional<Error> first;
   std::exception_ptr thrown;
   try {
+    // A first start that fails for all of them is an error, not a recording.
+    for (auto& amplifier : amplifiers) {
+      auto started = co_await amplifier->device->start(LiveRack::rateOf(amplifier->device->described()));
+      amplifier->running = started.has_value();
+      if (!started && !first) first = std::move(started.error());
+    }
+    const bool any = std::any_of(amplifiers.begin(), amplifiers.end(), [](const auto& a) { return a->running; });
+    if (!any) co_return std::unexpected(std::move(*first));
+    std::vector<std::function<Task<void>()>> bodies;
+    for (auto& amplifier : amplifiers) {
+      bodies.push_back([&run, one = amplifier.get()]() -> Task<void> { return runAmplifier(run, *one); });
+    }
     co_await whenAll(std::move(bodies));
   } catch (...) {
     thrown = std::current_exception();
   }
+  // Those that were cancelled while they started, too: stopping what does not run does nothing.
   co_await asio::this_coro::reset_cancellation_state(asio::disable_cancellation());
   for (auto& amplifier : amplifiers) {
-    if (!amplifier->running) continue;
     auto stopped = co_await amplifier->device->stop();
     (void)stopped;  // nothing depends on it any more
   }

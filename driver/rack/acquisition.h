@@ -23,8 +23,8 @@ struct AcquisitionSink {
 };
 
 /// Runs every amplifier of the rack at its rate until `stopWanted` says so (asked at least twice a second) or
-/// the coroutine is cancelled. A device that fails is reported once and started again every second; the
+/// the coroutine is cancelled. Starting sets rates, which changes readings: hence the permit. A device that fails is reported once and started again every second; the
 /// others never wait for it. Errors: only when no amplifier could be started at all.
-Task<Result<void>> acquire(LiveRack& live, AcquisitionSink sink, std::function<bool()> stopWanted);
+Task<Result<void>> acquire(LiveRack& live, LoadPathPermit permit, AcquisitionSink sink, std::function<bool()> stopWanted);
 
 }  // namespace shuntwright::rack

@@ -7,6 +7,7 @@
 #include <exception>
 #include <utility>
 
+#include "driver/core/async.h"
 #include "driver/description/profile.h"
 
 namespace shuntwright::rack {
@@ -33,19 +34,26 @@ bool canRead(const device::Device& device) { return relaysOf(device).state.has_v
 
 }  // namespace
 
+std::optional<Instant> RelayGuard::lastClosed() const {
+  return maybeClosed_.empty() ? lastOpened_ : clock_.now();
+}
+
 RelayGuard::RelayGuard(Devices devices, RelayJournal& journal, Clock& clock)
     : devices_(std::move(devices)), journal_(journal), clock_(clock), maybeClosed_(journal.unresolved()) {}
 
 Result<device::Device*> RelayGuard::deviceOf(const RelayRef& relay) const {
   const auto found = devices_.find(relay.device);
   if (found == devices_.end() || !found->second->described().profile->relays) {
-    return fail(ErrorCode::not_found, "no device of the rack has relay " + text(relay));
+    return fail(ErrorCode::not_found, "no device of the rack has relay " + text(relay), {},
+                "put its device back into the rack and run `shuntwright release`, or see to it that the relay is open "
+                "and delete the rack's relay journal");
   }
   return found->second;
 }
 
 Result<void> RelayGuard::noteOpen(const RelayRef& relay) {
   maybeClosed_.erase(relay);
+  lastOpened_ = clock_.now();
   if (onSwitching) onSwitching(relay, false);
   return journal_.opened(relay, clock_.now());
 }
@@ -86,13 +94,27 @@ Task<Result<void>> RelayGuard::open(RelayRef relay) {
 }
 
 Task<Result<void>> RelayGuard::openDevice(std::string name, std::vector<int> relays) {
-  const auto found = devices_.find(name);
-  if (found == devices_.end()) co_return fail(ErrorCode::not_found, "device " + name + " is not in the rack");
-  device::Device& device = *found->second;
-  if (auto done = co_await device.openAllRelays(); !done) co_return done;
-  if (canRead(device)) co_await waitFor(clock_, relaysOf(device).releaseTime);
+  auto found = deviceOf(RelayRef{name, relays.front()});
+  if (!found) {
+    co_return std::unexpected(std::move(found.error()).wrap("a relay that an earlier run may have left closed is unknown"));
+  }
+  device::Device& device = **found;
   Result<void> result;
+  std::set<int> refused;
+  if (auto all = co_await device.openAllRelays(); !all) {
+    const ErrorCode code = all.error().code;
+    if (code != ErrorCode::device_error && code != ErrorCode::bad_answer) co_return all;
+    // It does not take the order for all of them: relay by relay.
+    for (const int number : relays) {
+      auto one = co_await device.openRelay(number);
+      if (one) continue;
+      result = std::move(one);
+      refused.insert(number);
+    }
+  }
+  if (canRead(device)) co_await waitFor(clock_, relaysOf(device).releaseTime);
   for (const int number : relays) {
+    if (refused.contains(number)) continue;
     const RelayRef relay{name, number};
     if (canRead(device)) {
       auto closed = co_await device.relayClosed(number);
@@ -108,22 +130,35 @@ Task<Result<void>> RelayGuard::openDevice(std::string name, std::vector<int> rel
   co_return result;
 }
 
+Task<void> RelayGuard::openInto(std::string name, std::vector<int> relays, Result<void>& into) {
+  into = co_await openDevice(std::move(name), std::move(relays));
+}
+
 Task<Result<void>> RelayGuard::openAll(Nanoseconds limit) {
   const Instant deadline = clock_.now() + limit;
-  Result<void> last;
   while (!maybeClosed_.empty()) {
     std::map<std::string, std::vector<int>> byDevice;
     for (const auto& relay : maybeClosed_) byDevice[relay.device].push_back(relay.relay);
+    // All devices at once: one that is silent must not keep another's relays closed for its time-outs.
+    std::map<std::string, Result<void>> results;
+    std::vector<std::function<Task<void>()>> bodies;
     for (auto& [name, relays] : byDevice) {
-      auto opened = co_await openDevice(name, relays);
-      if (!opened) last = std::move(opened);
+      auto& into = results[name];
+      bodies.push_back([this, &name, &relays, &into]() -> Task<void> { return openInto(name, relays, into); });
     }
+    co_await whenAll(std::move(bodies));
     if (maybeClosed_.empty()) break;
     if (clock_.now() >= deadline) {
       Error error(ErrorCode::device_error, "relays may still be closed: " + listed(maybeClosed_), {},
                   "run `shuntwright release` again; until then take no reading for true and do not re-engage a "
                   "controller");
-      if (!last) error.cause = std::make_shared<const Error>(std::move(last.error()));
+      for (auto& [name, result] : results) {
+        if (result) continue;
+        // No further try helps a relay that the rack does not know any more.
+        if (result.error().code == ErrorCode::not_found) error.remedy = result.error().remedy;
+        error.cause = std::make_shared<const Error>(std::move(result.error()));
+        break;
+      }
       co_return std::unexpected(std::move(error));
     }
     co_await waitFor(clock_, std::chrono::milliseconds(200));

@@ -2,6 +2,7 @@
 
 #include <functional>
 #include <map>
+#include <optional>
 #include <set>
 #include <string>
 #include <vector>
@@ -30,8 +31,9 @@ class RelayGuard {
   /// Opens one relay, with read-back. Needs no permit: an open relay is the safe state.
   Task<Result<void>> open(description::RelayRef relay);
 
-  /// Opens every relay that may be closed (those of an earlier run's journal included), trying again until
-  /// the device confirms or `limit` is over. The error names the relays that may still be closed.
+  /// Opens every relay that may be closed (those of an earlier run's journal included), all devices at once,
+  /// relay by relay where a device refuses the order for all, trying again until the device confirms or `limit`
+  /// is over. The error names the relays that may still be closed.
   Task<Result<void>> openAll(Nanoseconds limit = std::chrono::seconds(10));
 
   /// Opens every relay of every device, whatever the journal says.
@@ -39,11 +41,15 @@ class RelayGuard {
 
   const std::set<description::RelayRef>& maybeClosed() const { return maybeClosed_; }
 
+  /// The last moment at which a relay may have been closed: now while one may be; nothing before the first.
+  std::optional<Instant> lastClosed() const;
+
   /// Told whenever a relay starts to move: true before a close command, false once it is open again.
   std::function<void(const description::RelayRef&, bool)> onSwitching;
 
  private:
   Task<Result<void>> openDevice(std::string name, std::vector<int> relays);
+  Task<void> openInto(std::string name, std::vector<int> relays, Result<void>& into);
   Result<device::Device*> deviceOf(const description::RelayRef& relay) const;
   Result<void> noteOpen(const description::RelayRef& relay);
 
@@ -51,6 +57,7 @@ class RelayGuard {
   RelayJournal& journal_;
   Clock& clock_;
   std::set<description::RelayRef> maybeClosed_;
+  std::optional<Instant> lastOpened_;
 };
 
 /// Awaits `body`, then opens every relay, whatever ended the body: return, error, exception or cancellation.

@@ -42,10 +42,15 @@ bool parseRelay(const std::string& word, RelayRef& out) {
 
 Result<std::unique_ptr<FileJournal>> FileJournal::open(const std::string& path) {
   std::set<RelayRef> closed;
+  bool torn = false;
   {
     std::ifstream in(path);
     std::string lineText;
-    while (std::getline(in, lineText) && !in.eof()) {
+    while (std::getline(in, lineText)) {
+      if (in.eof()) {
+        torn = true;
+        break;
+      }
       std::istringstream words(lineText);
       std::string word, relayWord;
       RelayRef relay;
@@ -62,6 +67,7 @@ Result<std::unique_ptr<FileJournal>> FileJournal::open(const std::string& path) 
                 "no relay is closed without it; make the folder writable or set XDG_STATE_HOME");
   }
   std::unique_ptr<FileJournal> journal(new FileJournal(path, descriptor));
+  journal->torn_ = torn;
   journal->closed_ = std::move(closed);
   return journal;
 }
@@ -69,9 +75,12 @@ Result<std::unique_ptr<FileJournal>> FileJournal::open(const std::string& path) 
 FileJournal::~FileJournal() { ::close(descriptor_); }
 
 Result<void> FileJournal::line(const char* word, const RelayRef& relay, Instant when) {
-  const std::string entry = std::string(word) + " " + text(relay) + " " + rfc3339(when) + "\n";
-  if (::write(descriptor_, entry.data(), entry.size()) != static_cast<ssize_t>(entry.size()) ||
-      ::fdatasync(descriptor_) != 0) {
+  // A line that was cut off must not swallow this one.
+  const std::string entry =
+      std::string(torn_ ? "\n" : "") + word + " " + text(relay) + " " + rfc3339(when) + "\n";
+  const auto written = ::write(descriptor_, entry.data(), entry.size());
+  torn_ = written != static_cast<ssize_t>(entry.size());
+  if (torn_ || ::fdatasync(descriptor_) != 0) {
     return fail(ErrorCode::io, "cannot write the relay journal: " + std::string(std::strerror(errno)), path_,
                 "free some space; no relay is closed without the journal");
   }
@@ -87,7 +96,10 @@ Result<void> FileJournal::closing(const RelayRef& relay, Instant when) {
 Result<void> FileJournal::opened(const RelayRef& relay, Instant when) {
   closed_.erase(relay);
   if (closed_.empty()) {
-    if (::ftruncate(descriptor_, 0) == 0) return {};
+    if (::ftruncate(descriptor_, 0) == 0) {
+      torn_ = false;
+      return {};
+    }
   }
   return line("opened", relay, when);
 }

@@ -51,6 +51,7 @@ class FileJournal final : public RelayJournal {
 
   std::string path_;
   int descriptor_;
+  bool torn_ = false;  ///< the file ends inside a line
   std::set<description::RelayRef> closed_;
 };
 

@@ -1,5 +1,6 @@
 #include "driver/transport/port_opener.h"
 
+#include <algorithm>
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/awaitable.hpp>
 #include <map>
@@ -45,6 +46,17 @@ Task<Result<std::unique_ptr<Stream>>> openPort(std::shared_ptr<Replays> replays,
 }
 
 }  // namespace
+
+Result<std::optional<Instant>> replayStart(const description::Rack& rack) {
+  std::optional<Instant> earliest;
+  for (const auto& device : rack.devices) {
+    if (device.port.kind != Port::Kind::replay) return std::optional<Instant>();
+    auto trace = loadTrace(device.port.path);
+    if (!trace) return std::unexpected(std::move(trace.error()).wrap("device " + device.name + " cannot be replayed"));
+    earliest = std::min(earliest.value_or(trace->start), trace->start);
+  }
+  return earliest;
+}
 
 Opener portOpener(Clock& clock, Nanoseconds connectLimit) {
   auto replays = std::make_shared<Replays>();

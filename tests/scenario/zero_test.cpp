@@ -21,7 +21,8 @@ using test::VirtualBench;
 Zeros takenOn(VirtualBench& world, Nanoseconds span = 2s) {
   Zeros zeros;
   auto done = world.onRack([&](rack::LiveRack& live) -> Task<Result<void>> {
-    auto taken = co_await calibration::takeZeros(live, span);
+    const auto permit = VirtualBench::permit(live.described());
+    auto taken = co_await calibration::takeZeros(live, permit, span);
     if (!taken) co_return std::unexpected(std::move(taken.error()));
     zeros = std::move(*taken);
     co_return Result<void>{};
@@ -125,7 +126,7 @@ TEST_F(ZeroAnew, noZeroWhileARelayMayBeClosed) {
     const auto permit = VirtualBench::permit(world.rack);
     const auto relay = world.rack.channels[0].shunts[0].relay;
     if (auto closed = co_await live.relays().close(permit, relay); !closed) co_return closed;
-    auto taken = co_await calibration::takeZeros(live, 1s);
+    auto taken = co_await calibration::takeZeros(live, permit, 1s);
     EXPECT_EQ(taken.has_value() ? ErrorCode::io : taken.error().code, ErrorCode::refused);
     co_return co_await live.relays().open(relay);
   });

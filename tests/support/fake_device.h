@@ -13,7 +13,7 @@
 namespace shuntwright::test {
 
 /// A relay board without wires: relays are a set, every operation is noted and may be made to fail.
-class FakeRelayBoard final : public device::Device {
+class FakeRelayBoard : public device::Device {
  public:
   explicit FakeRelayBoard(std::string name, int relays = 8, bool readBack = true) {
     auto profile = std::make_shared<description::Profile>();
@@ -26,6 +26,8 @@ class FakeRelayBoard final : public device::Device {
 
   std::set<int> closed, welded, dead;
   std::vector<std::string> log;
+  Clock* clock = nullptr;  ///< with `openingTakes`
+  Nanoseconds openingTakes{0};
   std::function<Result<void>(const std::string& operation)> fails = [](const std::string&) { return Result<void>{}; };
 
   const description::Device& described() const override { return described_; }
@@ -43,6 +45,7 @@ class FakeRelayBoard final : public device::Device {
     co_return done;
   }
   Task<Result<void>> openAllRelays() override {
+    if (clock) co_await waitFor(*clock, openingTakes);
     auto done = note("open all");
     if (done) std::erase_if(closed, [this](int relay) { return !welded.contains(relay); });
     co_return done;
@@ -55,12 +58,14 @@ class FakeRelayBoard final : public device::Device {
   Task<Result<void>> stop() override { co_return Result<void>{}; }
   void close() override {}
 
+ protected:
+  description::Device described_;
+
  private:
   Result<void> note(const std::string& operation) {
     log.push_back(operation);
     return fails(operation);
   }
-  description::Device described_;
 };
 
 }  // namespace shuntwright::test

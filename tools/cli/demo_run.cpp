@@ -87,18 +87,18 @@ struct Work {
     // People clear the hall and the weights are brought; meanwhile the leads go on warming.
     co_await waitFor(clock, std::chrono::minutes(30));
     // The last thing before the load: the zero again.
-    auto zeros = co_await calibration::takeZeros(**live, kZeroTime);
+    auto zeros = co_await calibration::takeZeros(**live, *permit, kZeroTime);
     if (!zeros) co_return std::unexpected(std::move(zeros.error()));
     const Nanoseconds programme = fromSeconds(holdsOf(scenario).back().end_s) + std::chrono::seconds(2);
     run.zeroFindings = calibration::rezero(run.calibration, rack, *zeros, clock.now(), programme);
-    auto recorded = co_await loadTest(**live);
+    auto recorded = co_await loadTest(**live, *permit);
     if (!recorded) co_return recorded;
     run.relaysOpen = bench->closedRelays().empty();
     (*live)->close();
     co_return Result<void>{};
   }
 
-  Task<Result<void>> loadTest(rack::LiveRack& live) {
+  Task<Result<void>> loadTest(rack::LiveRack& live, rack::LoadPathPermit permit) {
     auto session = RecordingSession::begin(rack, run.calibration, options.recordingPath, clock);
     if (!session) co_return std::unexpected(std::move(session.error()));
     loadStart = clock.now() + std::chrono::seconds(2);
@@ -128,7 +128,7 @@ struct Work {
       }
       return clock.now() >= end;
     };
-    auto done = co_await recording.run(live, stop);
+    auto done = co_await recording.run(live, permit, stop);
     if (!done) co_return done;
     run.rows = recording.rows();
     run.lost = recording.lost();

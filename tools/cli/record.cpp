@@ -193,7 +193,7 @@ class Record final : public Command {
       }
       return quit || context.stopAsked || (job->duration_s > 0 && seconds(now - start) >= job->duration_s);
     };
-    auto done = co_await (*session)->run(context.live, stop);
+    auto done = co_await (*session)->run(context.live, job->permit, stop);
     if (keyboard) keyboard->stop();
     table.draw(**session, seconds(clock.now() - start));
     if (!done) co_return std::unexpected(std::move(done.error()));
@@ -203,7 +203,7 @@ class Record final : public Command {
   }
 
   static Task<Result<void>> takeZerosAnew(SessionContext context, Job* job) {
-    auto zeros = co_await calibration::takeZeros(context.live, fromSeconds(job->zero_s));
+    auto zeros = co_await calibration::takeZeros(context.live, job->permit, fromSeconds(job->zero_s));
     if (!zeros) co_return std::unexpected(std::move(zeros.error()));
     // How long it has to hold; an hour when nobody says.
     const auto holds = fromSeconds(job->duration_s > 0 ? job->duration_s : 3600);

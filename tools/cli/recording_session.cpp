@@ -70,7 +70,7 @@ void RecordingSession::take(std::size_t index, device::SampleBlock& block) {
   }
 }
 
-Task<Result<void>> RecordingSession::run(rack::LiveRack& live, std::function<bool()> stopWanted) {
+Task<Result<void>> RecordingSession::run(rack::LiveRack& live, rack::LoadPathPermit permit, std::function<bool()> stopWanted) {
   rack::AcquisitionSink sink;
   sink.block = [this](const std::string& device, device::SampleBlock& block) { take(index_.at(device), block); };
   sink.fault = [this](const std::string& device, const Error& error) {
@@ -83,7 +83,7 @@ Task<Result<void>> RecordingSession::run(rack::LiveRack& live, std::function<boo
     if (recorder_) (void)recorder_->event("recovered", clock_.now(), "samples come again", device);
   };
   const std::function<bool()> stop = [this, stopWanted] { return failed_.has_value() || stopWanted(); };
-  auto done = co_await rack::acquire(live, sink, stop);
+  auto done = co_await rack::acquire(live, permit, sink, stop);
   if (failed_) co_return std::unexpected(*failed_);
   co_return done;
 }

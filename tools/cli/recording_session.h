@@ -32,7 +32,7 @@ class RecordingSession {
 
   /// Records until `stopWanted`. Errors: the acquisition's, or the recorder's (disk full: everything before is
   /// kept).
-  Task<Result<void>> run(rack::LiveRack& live, std::function<bool()> stopWanted);
+  Task<Result<void>> run(rack::LiveRack& live, rack::LoadPathPermit permit, std::function<bool()> stopWanted);
 
   Result<void> mark(std::string_view kind, std::string_view text);
   Result<void> finish();

@@ -57,7 +57,7 @@ struct Library {
       for (std::size_t f = 0; f < block.frames() && wanted > 0; ++f, --wanted) print(block, corrected, f);
     };
     const std::function<bool()> stop = [&] { return wanted <= 0; };
-    auto done = co_await rack::acquire(**live, sink, stop);
+    auto done = co_await rack::acquire(**live, permit, sink, stop);
     (*live)->close();
     co_return done;
   }
@@ -181,6 +181,7 @@ TEST_F(PluginTest, withoutTheConfirmationNothingIsShunted) {
   ASSERT_EQ(api->open(&options, &session), SHUNTWRIGHT_OK) << api->last_error(session);
   EXPECT_EQ(api->calibrate(session, nullptr, nullptr, nullptr), SHUNTWRIGHT_REFUSED);
   EXPECT_NE(std::string(api->last_error(session)).find("isolated"), std::string::npos);
+  EXPECT_EQ(api->start(session), SHUNTWRIGHT_REFUSED) << "starting sets rates";
   EXPECT_EQ(api->use_calibration(session, "{}"), SHUNTWRIGHT_BAD_FILE);
   api->close(session);
 }

@@ -69,12 +69,26 @@ Task<Result<void>> closeTwoAndWait(RelayGuard* guard, LoadPathPermit permit, Clo
   co_return Result<void>{};
 }
 
+Task<Result<void>> waitASecond(Clock* clock) {
+  co_await waitFor(*clock, std::chrono::seconds(1));
+  co_return Result<void>{};
+}
+
 TEST_F(RelayGuardTest, relaysAreOpenAfterANormalEnd) {
   auto done = run([this] { return closeTwoAndWait(&guard_, permit(), &clock_); });
   EXPECT_TRUE(done.has_value());
   EXPECT_TRUE(board_.closed.empty());
   EXPECT_TRUE(guard_.maybeClosed().empty());
   EXPECT_TRUE(journal_.unresolved().empty());
+}
+
+TEST_F(RelayGuardTest, knowsWhenARelayWasLastClosedThoughNobodyLookedMeanwhile) {
+  EXPECT_FALSE(guard_.lastClosed().has_value());
+  run([this] { return closeTwoAndWait(&guard_, permit(), &clock_); });
+  const Instant opened = clock_.now();
+  EXPECT_EQ(guard_.lastClosed(), opened);
+  run([this]() -> Task<Result<void>> { return waitASecond(&clock_); });
+  EXPECT_EQ(guard_.lastClosed(), opened);
 }
 
 TEST_F(RelayGuardTest, relaysAreOpenAfterAnError) {
@@ -168,6 +182,67 @@ TEST_F(RelayGuardTest, relaysOfAnEarlierRunAreOpenedToo) {
   EXPECT_TRUE(out.has_value());
   EXPECT_TRUE(board_.closed.empty());
   EXPECT_TRUE(journal_.unresolved().empty());
+}
+
+Task<Result<void>> closeTheFirstOfEach(RelayGuard* guard, LoadPathPermit permit) {
+  const RelayRef one{"relays1", 1}, other{"relays2", 1};
+  if (auto closed = co_await guard->close(permit, one); !closed) co_return closed;
+  co_return co_await guard->close(permit, other);
+}
+
+TEST_F(RelayGuardTest, aSilentBoardDoesNotKeepAnotherBoardsRelaysClosed) {
+  test::FakeRelayBoard other("relays2");
+  board_.clock = &clock_;
+  board_.openingTakes = std::chrono::seconds(60);
+  board_.fails = [](const std::string& operation) -> Result<void> {
+    if (operation == "open all") return fail(ErrorCode::timeout, "no answer");
+    return {};
+  };
+  RelayGuard guard({{"relays1", &board_}, {"relays2", &other}}, journal_, clock_);
+  std::map<RelayRef, Instant> opened;
+  guard.onSwitching = [&](const RelayRef& relay, bool closed) {
+    if (!closed) opened[relay] = clock_.now();
+  };
+  Result<void> result;
+  auto body = [](RelayGuard* g, LoadPathPermit p, Result<void>* out) -> Task<void> {
+    std::function<Task<Result<void>>()> inner = [g, p]() -> Task<Result<void>> { return closeTheFirstOfEach(g, p); };
+    *out = co_await withRelays(*g, std::move(inner));
+  };
+  asio::co_spawn(
+      context_, [&]() -> Task<void> { return body(&guard, permit(), &result); }, [](std::exception_ptr) {});
+  runVirtual(context_, clock_);
+  ASSERT_FALSE(result.has_value());
+  EXPECT_NE(result.error().text().find("no answer"), std::string::npos) << result.error().text();
+  EXPECT_EQ(guard.maybeClosed(), (std::set<RelayRef>{{"relays1", 1}}));
+  ASSERT_TRUE(opened.contains(RelayRef{"relays2", 1}));
+  EXPECT_LT(opened[(RelayRef{"relays2", 1})] - VirtualClock::kDefaultStart, std::chrono::seconds(1));
+}
+
+TEST_F(RelayGuardTest, aBoardThatRefusesTheOrderForAllIsOpenedRelayByRelay) {
+  board_.fails = [](const std::string& operation) -> Result<void> {
+    if (operation == "open all") return fail(ErrorCode::device_error, "unknown command");
+    return {};
+  };
+  auto done = run([this] { return closeTwoAndWait(&guard_, permit(), &clock_); });
+  EXPECT_TRUE(done.has_value()) << done.error().text();
+  EXPECT_TRUE(board_.closed.empty());
+  EXPECT_TRUE(journal_.unresolved().empty());
+}
+
+TEST_F(RelayGuardTest, aJournalledRelayOfADeviceThatHasNoneAnyMoreIsNamedWithARemedy) {
+  ASSERT_TRUE(journal_.closing(RelayRef{"amp1", 7}, clock_.now()));
+  class Amplifier final : public test::FakeRelayBoard {
+   public:
+    Amplifier() : FakeRelayBoard("amp1") { described_.profile = std::make_shared<description::Profile>(); }
+  } amplifier;
+  RelayGuard guard({{"amp1", &amplifier}, {"relays1", &board_}}, journal_, clock_);
+  Result<void> out;
+  auto body = [](RelayGuard* g, Result<void>* result) -> Task<void> { *result = co_await g->openAll(); };
+  asio::co_spawn(context_, [&]() -> Task<void> { return body(&guard, &out); }, [](std::exception_ptr) {});
+  runVirtual(context_, clock_);
+  ASSERT_FALSE(out.has_value());
+  EXPECT_NE(out.error().text().find("amp1/7"), std::string::npos) << out.error().text();
+  EXPECT_NE(out.error().text().find("delete the rack's relay journal"), std::string::npos) << out.error().text();
 }
 
 TEST(LoadPath, isRefusedWithoutConfirmationAndNamesTheLoadControlChannels) {

@@ -53,6 +53,13 @@ TEST_F(FileJournalTest, aTornLastLineIsIgnoredSinceItsCommandHadNotGoneOut) {
   EXPECT_EQ(open()->unresolved(), (std::set<RelayRef>{{"relays1", 3}}));
 }
 
+TEST_F(FileJournalTest, aTornLineDoesNotSwallowTheNextOne) {
+  open();
+  std::ofstream(path_) << "closing relays1/3 2026-05-04T09:3";
+  ASSERT_TRUE(open()->closing(RelayRef{"relays1", 4}, when_));
+  EXPECT_TRUE(open()->unresolved().contains(RelayRef{"relays1", 4}));
+}
+
 TEST_F(FileJournalTest, saysSoWhenItCannotWrite) {
   auto journal = FileJournal::open("/proc/none/rack.relays");
   ASSERT_FALSE(journal.has_value());
