@@ -17,10 +17,29 @@ using metrology::studentFactor;
 using description::Channel;
 using description::Rack;
 
+namespace {
+
+/// Weight of the later of two open windows in the line through both, at the middle of the closed one between them.
+double laterWeight(const ShuntReadings& readings, std::size_t k) {
+  const auto middle_s = [&](const Window& w) {
+    return seconds(w.start - readings.opened[k].start) + 0.5 * seconds(w.end - w.start);
+  };
+  const double before = middle_s(readings.opened[k]), after = middle_s(readings.opened[k + 1]);
+  return after > before ? (middle_s(readings.closed[k]) - before) / (after - before) : 0.5;
+}
+
+std::size_t stepCount(const ShuntReadings& readings) {
+  return readings.opened.empty() ? 0 : std::min(readings.closed.size(), readings.opened.size() - 1);
+}
+
+}  // namespace
+
 std::vector<Ratio> stepsOf(const ShuntReadings& readings) {
   std::vector<Ratio> steps;
-  for (std::size_t k = 0; k < readings.closed.size() && k + 1 < readings.opened.size(); ++k) {
-    steps.push_back(readings.closed[k].mean - 0.5 * (readings.opened[k].mean + readings.opened[k + 1].mean));
+  for (std::size_t k = 0; k < stepCount(readings); ++k) {
+    const double later = laterWeight(readings, k);
+    const Ratio line = (1 - later) * readings.opened[k].mean + later * readings.opened[k + 1].mean;
+    steps.push_back(readings.closed[k].mean - line);
   }
   return steps;
 }
@@ -79,9 +98,12 @@ StepFigures figuresOf(const description::Shunt& shunt, const ShuntReadings& read
   r.name = shunt.name;
   r.settling = readings.settling;
   r.repeats = static_cast<int>(readings.closed.size());
+  const Ratio unknown = std::numeric_limits<double>::quiet_NaN() * volt_per_volt;
+  r.before = r.returned = r.after = r.measuredStep = unknown;
   if (readings.opened.empty()) return f;
   r.before = readings.opened.front().mean;
   r.returned = readings.opened.back().mean;
+  if (readings.closed.empty()) return f;
   r.after = meanOf(readings.closed, [](const Window& w) { return valueOf(w.mean); }) * volt_per_volt;
   const auto steps = stepsOf(readings);
   if (steps.empty()) return f;
@@ -107,9 +129,18 @@ StepFigures figuresOf(const description::Shunt& shunt, const ShuntReadings& read
   r.noise = std::sqrt(variance) * volt_per_volt;
   const double perWindow =
       variance * correlation / std::max(1.0, samples / static_cast<double>(readings.opened.size() + readings.closed.size()));
-  // Closed windows weigh 1/n each, open ones 1/n except the two ends with half of that.
-  f.u_V_per_V = std::sqrt(perWindow * (1 / count + (count - 0.5) / (count * count)));
-  f.degrees = degrees;
+  // Each window by its weight in the mean step; two neighbouring steps share an open one.
+  std::vector<double> weights(steps.size() + 1, 0.0);
+  double squares = 1 / count;
+  for (std::size_t k = 0; k < steps.size(); ++k) {
+    const double later = laterWeight(readings, k);
+    weights[k] += (1 - later) / count;
+    weights[k + 1] += later / count;
+  }
+  for (const double weight : weights) squares += weight * weight;
+  f.u_V_per_V = std::sqrt(perWindow * squares);
+  // Samples that a filter makes alike say less about their scatter, too.
+  f.degrees = std::max(1.0, degrees / correlation);
   // Repeats that scatter far more than the noise explains speak for themselves.
   const double expected = std::sqrt(perWindow * 1.5);
   if (repeatDeviation > 3 * expected && repeatDeviation > 0) {
@@ -150,19 +181,32 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
   describeChannel(rack, channel, result);
   const ChannelModel model = modelOf(rack, channel);
   const double correlation = correlationFactor(rack, channel);
-  if (readings.zero) result.zero = readings.zero->mean;
+  if (readings.zero) {
+    result.zero = readings.zero->mean;
+    result.lostSamples += readings.zero->lost;
+  } else if (!readings.shunts.empty() && !readings.shunts.front().opened.empty()) {
+    // No zero could be read; the first reading of all was taken with every relay open, too.
+    result.zero = readings.shunts.front().opened.front().mean;
+  }
 
   std::vector<Ratio> measured;
-  double weighted = 0, squares = 0, degreesSum = 0, worstReturn = 0, smallest = 0;
+  std::vector<metrology::WeightedDegrees> weighted;
+  double variance = 0, squares = 0, worstReturn = 0, smallest = 0;
   for (std::size_t k = 0; k < readings.shunts.size(); ++k) {
     StepFigures f = figuresOf(channel.shunts[k], readings.shunts[k], correlation);
-    const double step = std::abs(valueOf(f.result.measuredStep));
     measured.push_back(f.result.measuredStep);
-    weighted += step * step * f.u_V_per_V * f.u_V_per_V;
-    squares += step * step;
-    degreesSum += f.degrees;
-    smallest = smallest == 0 ? step : std::min(smallest, step);
-    worstReturn = std::max(worstReturn, std::abs(valueOf(f.result.returned - f.result.before)));
+    for (const auto* windows : {&readings.shunts[k].opened, &readings.shunts[k].closed}) {
+      for (const auto& w : *windows) result.lostSamples += w.lost;
+    }
+    if (f.result.measured()) {
+      const double step = std::abs(valueOf(f.result.measuredStep));
+      const double u = step * f.u_V_per_V;
+      weighted.push_back({u, f.degrees});
+      variance += u * u;
+      squares += step * step;
+      smallest = smallest == 0 ? step : std::min(smallest, step);
+      worstReturn = std::max(worstReturn, std::abs(valueOf(f.result.returned - f.result.before)));
+    }
     result.shunts.push_back(std::move(f.result));
   }
 
@@ -177,7 +221,7 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
     }
     slope = prediction->slope_per_strain;
     for (std::size_t k = 0; k < result.shunts.size(); ++k) result.shunts[k].predictedStep = prediction->steps[k];
-    if (!measured.empty()) span = spanOf(measured, prediction->steps);
+    span = spanOf(measured, prediction->steps);
     if (!(span > 0.2 && span < 5)) break;  // judged below; not a span to correct with
   }
   result.spanRatio = span;
@@ -188,10 +232,10 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
     }
   }
   const Ratio resolution = rack.device(channel.device)->profile->inputs->resolution;
-  if (!trouble && !measured.empty()) {
+  if (!trouble && squares > 0) {
     ScaleReadings scale{result.zero / usable, measured, {}};
-    scale.scatter.stepRelative = squares > 0 ? std::sqrt(weighted) / squares : 0;
-    scale.scatter.stepDegrees = std::max(1.0, degreesSum);
+    scale.scatter.stepRelative = std::sqrt(variance) / squares;
+    scale.scatter.stepDegrees = metrology::effectiveDegrees(weighted);
     scale.scatter.resolution = resolution;
     scale.scatter.smallestStep = smallest * volt_per_volt;
     auto budget = scaleBudget(rack, channel, scale);
@@ -206,8 +250,8 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
     ZeroScatter scatter;
     scatter.standardUncertainty =
         zero.deviation * std::sqrt(correlation / std::max(1, zero.samples)) / usable;
-    scatter.resolution = resolution;
-    scatter.returnSpread = worstReturn * volt_per_volt;
+    scatter.resolution = resolution / usable;
+    scatter.returnSpread = worstReturn / usable * volt_per_volt;
     scatter.stability = rack.device(channel.device)->profile->inputs->zeroStability / usable;
     if (auto u = zeroUncertainty(rack, channel, result.zero / usable, scatter)) {
       result.zeroExpandedUncertainty = studentFactor(std::numeric_limits<double>::infinity()) * *u;

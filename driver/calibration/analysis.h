@@ -26,7 +26,8 @@ struct ChannelReadings {
   std::optional<Window> zero;         ///< at no load, every relay open
 };
 
-/// Steps with linear drift removed: each closed window against the mean of the open ones beside it (A-B-A).
+/// Steps with linear drift removed: each closed window against the straight line through the open ones beside it, at
+/// its own time (A-B-A). Settling makes the waits unequal; the plain mean of the two would leave part of the drift.
 std::vector<units::Ratio> stepsOf(const ShuntReadings& readings);
 
 /// By how much the variance of a mean exceeds that of independent samples, when an input filter of time

@@ -61,6 +61,8 @@ class Sequence {
         }
         readings.shunts.push_back(std::move(*measured));
       }
+      // A zero read through a shunt would be worse than none.
+      if (maybeShunted(*channel)) continue;
       auto zero = co_await reader_.take(column(*channel), clock_.now(), settings_.windowSamples);
       if (!zero) co_return std::unexpected(std::move(zero.error()));
       tell(*channel, "", false, *zero);
@@ -71,6 +73,12 @@ class Sequence {
 
  private:
   std::size_t column(const Channel& channel) const { return static_cast<std::size_t>(channel.input - inputs_.first); }
+
+  bool maybeShunted(const Channel& channel) const {
+    const auto& closed = run_.live.relays().maybeClosed();
+    return std::any_of(channel.shunts.begin(), channel.shunts.end(),
+                       [&](const description::Shunt& shunt) { return closed.contains(shunt.relay); });
+  }
 
   /// Open, closed, open, ... A relay's refusal ends this shunt, not the calibration.
   Task<Result<ShuntReadings>> measure(const Channel& channel, const description::Shunt& shunt) {

@@ -139,8 +139,11 @@ Result<ScalePrediction> predictScale(const ChannelModel& model, Ratio zero) {
 
 double spanOf(const std::vector<Ratio>& measured, const std::vector<Ratio>& predicted) {
   std::vector<double> x, y;
-  for (const auto r : predicted) x.push_back(r.in(volt_per_volt));
-  for (const auto r : measured) y.push_back(r.in(volt_per_volt));
+  for (std::size_t k = 0; k < measured.size(); ++k) {
+    if (!std::isfinite(measured[k].in(volt_per_volt))) continue;
+    x.push_back(predicted[k].in(volt_per_volt));
+    y.push_back(measured[k].in(volt_per_volt));
+  }
   const auto fit = metrology::fitLinear(metrology::throughOrigin(x), y);
   return fit ? fit->parameters.front() : 1;
 }
@@ -157,6 +160,29 @@ void shiftArm(ChannelModel& model, std::size_t arm, double delta_ohm) {
   model.inTest.arms[arm].resistance += delta_ohm * ohm;
 }
 
+/// Changes a transducer's terminal resistances. Its sensitivity stays: the certificate holds for the terminals.
+void shiftTransducer(ChannelModel& model, double input_ohm, double output_ohm) {
+  for (bridge::Circuit* circuit : {&model.atCalibration, &model.inTest}) {
+    const double output = circuit->arms[0].resistance.in(ohm);
+    const double input = output + 2 * circuit->excitationSeries.in(ohm);
+    circuit->excitationSeries += 0.5 * (input_ohm - output_ohm) * ohm;
+    const double gain = ((input + input_ohm) / (output + output_ohm)) / (input / output);
+    for (auto& arm : circuit->arms) {
+      arm.resistance += output_ohm * ohm;
+      arm.relativePerStrain *= gain;
+    }
+  }
+}
+
+void addTransducer(const description::TransducerSheet& sheet, std::vector<UncertainInput>& out) {
+  const double input = sheet.inputResistance.in(ohm), output = sheet.outputResistance.in(ohm);
+  out.push_back({{"input resistance of the transducer", "ohm", rectangular(input, input * sheet.inputTolerance.in(one))},
+                 [](ChannelModel& m, double delta) { shiftTransducer(m, delta, 0); }});
+  out.push_back(
+      {{"output resistance of the transducer", "ohm", rectangular(output, output * sheet.outputTolerance.in(one))},
+       [](ChannelModel& m, double delta) { shiftTransducer(m, 0, delta); }});
+}
+
 void addArms(const Rack& rack, const Channel& channel, const ChannelModel& model, std::vector<UncertainInput>& out) {
   const auto& inputs = *rack.device(channel.device)->profile->inputs;
   for (std::size_t arm = 0; arm < 4; ++arm) {
@@ -165,7 +191,6 @@ void addArms(const Rack& rack, const Channel& channel, const ChannelModel& model
     const auto shift = [arm](ChannelModel& m, double delta) { shiftArm(m, arm, delta); };
     const std::string number = " of arm " + std::to_string(arm + 1);
     if (part.relativePerStrain != 0) {
-      if (channel.transducer) continue;  // its certificate speaks for the whole
       const auto& nominal = rack.gaugeOf(channel).resistance;
       if (channel.measuredResistance && arm == 0) {
         const double u = value * channel.measuredResistance->tolerance.in(one) / 2;  // expanded, k = 2
@@ -261,7 +286,11 @@ std::vector<UncertainInput> inputsOf(const Rack& rack, const Channel& channel) {
   std::vector<UncertainInput> inputs;
   const ChannelModel model = modelWithLeads(rack, channel);
   addShunts(rack, channel, inputs);
-  addArms(rack, channel, model, inputs);
+  if (channel.transducer) {
+    addTransducer(*channel.transducer, inputs);
+  } else {
+    addArms(rack, channel, model, inputs);
+  }
   addLeads(channel, inputs);
   return inputs;
 }

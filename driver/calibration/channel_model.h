@@ -43,8 +43,8 @@ struct ScalePrediction {
 };
 Result<ScalePrediction> predictScale(const ChannelModel& model, units::Ratio zero);
 
-/// Amplifier's span from all shunts: least squares of measured against predicted steps through the origin. 1 when
-/// they cannot give one (no shunt, no predicted step).
+/// Amplifier's span from all shunts: least squares of measured against predicted steps through the origin; a
+/// measured step that is NaN counts for nothing. 1 when they cannot give one (no shunt measured, no predicted step).
 double spanOf(const std::vector<units::Ratio>& measured, const std::vector<units::Ratio>& predicted);
 
 /// One value that is not known exactly: what is known of it, and what moving it does to the model. Shifts are
@@ -58,8 +58,8 @@ struct UncertainInput {
 inline constexpr const char* kLeadsWarming = "lead temperature, change until the test";
 
 /// Everything about the circuit and the shunts that is not known exactly: resistors by tolerance or
-/// certificate and temperature, relay contacts, gauges, completions, half bridge, each lead, and the leads'
-/// temperature at calibration and its change until the test.
+/// certificate and temperature, relay contacts, gauges, completions, half bridge, a transducer's terminal
+/// resistances, each lead, and the leads' temperature at calibration and its change until the test.
 std::vector<UncertainInput> inputsOf(const description::Rack& rack, const description::Channel& channel);
 
 }  // namespace shuntwright::calibration

@@ -1,6 +1,7 @@
 #include "driver/calibration/record.h"
 
 #include <algorithm>
+#include <cmath>
 
 namespace shuntwright::calibration {
 
@@ -12,6 +13,8 @@ const char* name(Verdict verdict) {
   }
   return "fail";
 }
+
+bool ShuntResult::measured() const { return std::isfinite(measuredStep.in(units::volt_per_volt)); }
 
 bool Record::passed() const {
   return relaysMaybeClosed.empty() && std::none_of(channels.begin(), channels.end(), [](const ChannelResult& c) {

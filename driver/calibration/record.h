@@ -42,7 +42,8 @@ struct Budget {
   double expandedUncertainty_percent = 0;  ///< at 95.45 %
 };
 
-/// One before / shunt / after measurement, the mean of its repeats. Ratios in V/V as read.
+/// One before / shunt / after measurement, the mean of its repeats. Ratios in V/V as read; NaN (null in JSON) what
+/// was not measured because the relay would not work.
 struct ShuntResult {
   std::string name;
   units::Ratio before, after, returned;  ///< "returned" is after the relay opened again
@@ -50,6 +51,7 @@ struct ShuntResult {
   units::Ratio predictedStep;            ///< at the before state
   units::Ratio stepDeviation;            ///< standard deviation of the repeated steps; 0 for one repeat
   units::Ratio noise;                    ///< standard deviation of a sample
+  bool measured() const;                 ///< there is a step
   Nanoseconds settling{0};               ///< longest time until a window was steady
   int repeats = 0;
 };
@@ -63,6 +65,7 @@ struct ChannelResult {
   std::optional<units::Resistance> leadResistance;      ///< as used: entered (mean of the leads)
   std::optional<units::Resistance> leadUncertainty;     ///< expanded
   units::Ratio zero;                     ///< reading at no load
+  int lostSamples = 0;                   ///< frames lost or damaged inside the windows
   std::vector<ShuntResult> shunts;
   bridge::RationalMap correction;        ///< reading in V/V -> strain (or fraction of rated value), zeroed
   units::Strain worstMapError;           ///< of the correction's form against the exact circuit, within its range

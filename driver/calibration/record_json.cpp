@@ -1,5 +1,6 @@
 #include "driver/calibration/record_json.h"
 
+#include <algorithm>
 #include <boost/json/parse.hpp>
 #include <boost/json/serialize.hpp>
 #include <boost/json/value.hpp>
@@ -69,10 +70,10 @@ json::object channelJson(const ChannelResult& c) {
     findings.push_back(std::move(one));
   }
   o["findings"] = std::move(findings);
-  const bool calibrated = !c.shunts.empty();
+  const bool calibrated = std::any_of(c.shunts.begin(), c.shunts.end(), [](const auto& s) { return s.measured(); });
   o["span_ratio"] = calibrated ? number(c.spanRatio) : json::value(nullptr);
   o["span_expanded_uncertainty_percent"] =
-      calibrated ? number(c.budget.expandedUncertainty_percent) : json::value(nullptr);
+      calibrated && !c.budget.lines.empty() ? number(c.budget.expandedUncertainty_percent) : json::value(nullptr);
   o["lead_resistance_ohm"] = c.leadResistance ? number(c.leadResistance->in(ohm)) : json::value(nullptr);
   o["lead_expanded_uncertainty_ohm"] = c.leadUncertainty ? number(c.leadUncertainty->in(ohm)) : json::value(nullptr);
   o["zero_mV_per_V"] = mVperV(c.zero);
@@ -80,6 +81,7 @@ json::object channelJson(const ChannelResult& c) {
   o["gauge_factor_expanded_uncertainty_percent"] = number(c.factorUncertainty_percent);
   o["unit"] = c.unit;
   o["units_per_strain"] = number(c.unitsPerStrain);
+  o["lost_samples"] = c.lostSamples;
   json::array shunts;
   for (const auto& s : c.shunts) shunts.push_back(shuntJson(s));
   o["shunts"] = std::move(shunts);
@@ -193,6 +195,7 @@ ChannelResult channelFrom(const json::object& o) {
   c.factorUncertainty_percent = get(o, "gauge_factor_expanded_uncertainty_percent");
   c.unit = word(o, "unit");
   c.unitsPerStrain = get(o, "units_per_strain");
+  c.lostSamples = o.at("lost_samples").to_number<int>();
   for (const auto& s : o.at("shunts").as_array()) c.shunts.push_back(shuntFrom(s.as_object()));
   const auto& correction = o.at("correction").as_object();
   c.correction = {get(correction, "p"), get(correction, "q"), get(correction, "w")};

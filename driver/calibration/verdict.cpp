@@ -116,6 +116,20 @@ class ShuntJudge {
   double slope_;
 };
 
+/// A few lost samples cost a window nothing and are only counted; with more, something is wrong with the wire.
+void lostSamples(ChannelResult& result, const ChannelReadings& readings) {
+  int taken = readings.zero ? readings.zero->samples : 0;
+  for (const auto& shunt : readings.shunts) {
+    for (const auto* windows : {&shunt.opened, &shunt.closed}) {
+      for (const auto& w : *windows) taken += w.samples;
+    }
+  }
+  constexpr double kTooMany = 0.1;  // common practice, no source
+  if (result.lostSamples <= kTooMany * (taken + result.lostSamples)) return;
+  result.findings.push_back({"lost-samples", "many samples were lost between device and driver",
+                             std::to_string(result.lostSamples) + " lost, " + std::to_string(taken) + " read"});
+}
+
 }  // namespace
 
 void judge(ChannelResult& result, const ChannelReadings& readings, const description::Limits& limits,
@@ -123,6 +137,11 @@ void judge(ChannelResult& result, const ChannelReadings& readings, const descrip
   for (std::size_t k = 0; k < result.shunts.size(); ++k) {
     ShuntJudge(result, result.shunts[k], readings.shunts[k], limits, slope_per_strain).judge();
   }
+  if (readings.zero && readings.zero->missing > 0) {
+    result.findings.push_back({"no-samples", "the device sent no value for some samples at no load",
+                               std::to_string(readings.zero->missing) + " samples"});
+  }
+  lostSamples(result, readings);
   if (readings.zero && readings.zero->saturated > 0) {
     result.findings.push_back({"saturated", "the input is over range at no load",
                                std::to_string(readings.zero->saturated) + " samples at full scale"});

@@ -30,6 +30,11 @@ void WindowBuilder::add(Instant when, float ratio, std::uint8_t flags) {
   sxy_ += dx * (y - meanY_);
 }
 
+void WindowBuilder::noteGap(const device::SampleBlock& block) {
+  // A damaged line is seen as a gap of the counter, too, where there is one.
+  window_.lost += static_cast<int>(std::max(block.lostBefore, block.damagedBefore));
+}
+
 Window WindowBuilder::window() const {
   Window out = window_;
   const double slope = sxx_ > 0 ? sxy_ / sxx_ : 0;
@@ -57,6 +62,7 @@ Task<Result<Window>> WindowReader::take(std::size_t input, Instant notBefore, in
     }
     const std::size_t frame = next_++;
     if (block_.time[frame] < notBefore) continue;
+    if (frame == 0 && window.seen() > 0) window.noteGap(block_);
     window.add(block_.time[frame], block_.at(frame, input), block_.flagsAt(frame, input));
   }
   co_return window.window();

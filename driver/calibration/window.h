@@ -19,6 +19,7 @@ struct Window {
   int samples = 0;          ///< used
   int saturated = 0;
   int missing = 0;
+  int lost = 0;             ///< frames lost or damaged on the wire inside the window
   Instant start, end;
 
   bool usable() const { return samples >= 2 && saturated == 0; }
@@ -28,6 +29,8 @@ struct Window {
 class WindowBuilder {
  public:
   void add(Instant when, float ratio, std::uint8_t flags);
+  /// Counts what was lost just before the first frame of a block.
+  void noteGap(const device::SampleBlock& block);
   int seen() const { return window_.samples + window_.saturated + window_.missing; }
   Window window() const;
 

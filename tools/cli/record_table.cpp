@@ -39,7 +39,7 @@ void printRecord(const Console& console, const calibration::Record& record) {
     for (const auto& s : c.shunts) {
       table.row({first ? c.name : "", first ? verdict : "", first ? fixed(c.spanRatio, 5) : "",
                  first ? fixed(c.budget.expandedUncertainty_percent, 3) : "",
-                 first ? fixed(c.zero.in(millivolt_per_volt), 5) : "", s.name, fixed(s.measuredStep.in(millivolt_per_volt), 6),
+                 first ? fixed(c.zero.in(millivolt_per_volt), 5) : "", s.name, s.measured() ? fixed(s.measuredStep.in(millivolt_per_volt), 6) : "-",
                  fixed(s.predictedStep.in(millivolt_per_volt), 6), first ? lead() : "",
                  first ? fixed(c.factorUncertainty_percent, 2) : ""});
       first = false;

@@ -37,6 +37,17 @@ TEST(WindowBuilder, aSmallScatterOnALargeReadingSurvives) {
   EXPECT_NEAR(builder.window().deviation.in(volt_per_volt), step / 2, step * 0.01);
 }
 
+TEST(WindowBuilder, gapsInsideAWindowAreCountedOnce) {
+  WindowBuilder builder;
+  device::SampleBlock block;
+  block.lostBefore = 3;
+  block.damagedBefore = 2;  // of the three
+  builder.noteGap(block);
+  block.lostBefore = 0;
+  builder.noteGap(block);
+  EXPECT_EQ(builder.window().lost, 5);
+}
+
 TEST(WindowBuilder, saturatedAndMissingSamplesAreCountedAndLeftOut) {
   WindowBuilder builder;
   builder.add(Instant{}, 9.0f, device::kSaturated);
