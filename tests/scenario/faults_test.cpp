@@ -171,5 +171,31 @@ TEST(Interrupted, relaysAreOpenWhereverTheCalibrationIsCancelled) {
   EXPECT_GT(cancelled, total / 2);
 }
 
+// The same between any two handlers of the event loop, so at every single await, also where several end at one moment.
+// A small calibration has all of them: two amplifier channels, one repeat, short windows.
+TEST(Interrupted, relaysAreOpenWhicheverAwaitIsCancelled) {
+  auto rack = shippedRack("small_bench.toml");
+  rack.channels.resize(2);
+  rack.calibration.repeats = 1;
+  rack.calibration.windowSamples = 4;
+  constexpr auto kGrain = VirtualBench::Grain::handler;
+  std::size_t total = 0;
+  {
+    VirtualBench whole(rack);
+    ASSERT_FALSE(whole.calibrateCancelledAfter(static_cast<std::size_t>(-1), kGrain).has_value());
+    total = whole.stepsTaken();
+  }
+  ASSERT_GT(total, 300u);
+  RecordProperty("awaits", static_cast<int>(total));
+  std::size_t cancelled = 0;
+  for (std::size_t at = 0; at < total; ++at) {
+    VirtualBench world(rack);
+    if (world.calibrateCancelledAfter(at, kGrain)) ++cancelled;
+    ASSERT_TRUE(world.bench->closedRelays().empty()) << "cancelled before handler " << at;
+    ASSERT_TRUE(world.journal.unresolved().empty()) << "cancelled before handler " << at;
+  }
+  EXPECT_GT(cancelled, total / 2);
+}
+
 }  // namespace
 }  // namespace shuntwright

@@ -9,6 +9,7 @@
 #include <boost/asio/co_spawn.hpp>
 #include <stdexcept>
 
+#include "driver/transport/tracing_stream.h"
 #include "tools/simhost/serve.h"
 
 namespace shuntwright::test {
@@ -39,6 +40,11 @@ namespace {
 struct Whole {
   static Task<Result<void>> run(VirtualBench* world, std::function<Task<Result<void>>(rack::LiveRack&)> body) {
     auto opener = simhost::memoryOpener(*world->bench, world->clock);
+    if (!world->traceFile.empty()) {
+      auto tracing = transport::tracingOpener(opener, world->traceFile, world->clock);
+      if (!tracing) co_return std::unexpected(std::move(tracing.error()));
+      opener = std::move(*tracing);
+    }
     auto live = co_await rack::LiveRack::open(world->rack, opener, world->clock, world->journal);
     if (!live) co_return std::unexpected(std::move(live.error()));
     auto done = co_await body(**live);
@@ -86,7 +92,7 @@ Result<calibration::Record> VirtualBench::calibrate(calibration::Options options
   return *record;
 }
 
-std::optional<std::string> VirtualBench::calibrateCancelledAfter(std::size_t steps) {
+std::optional<std::string> VirtualBench::calibrateCancelledAfter(std::size_t steps, Grain grain) {
   asio::io_context context;
   auto record = std::make_shared<Result<calibration::Record>>(fail(ErrorCode::cancelled, "it did not end"));
   auto out = std::make_shared<Result<void>>();
@@ -107,9 +113,19 @@ std::optional<std::string> VirtualBench::calibrateCancelledAfter(std::size_t ste
   bool cancelled = false;
   while (!ended) {
     context.restart();
-    while (context.poll() > 0) {
+    for (;;) {
+      if (grain == Grain::handler && steps_ == steps && !cancelled) {
+        cancelled = true;
+        signal.emit(asio::cancellation_type::terminal);
+      }
+      if (ended || context.poll_one() == 0) break;
+      if (grain == Grain::handler) ++steps_;
     }
     if (ended) break;
+    if (grain == Grain::handler) {
+      if (!clock.advance()) break;
+      continue;
+    }
     if (steps_ == steps && !cancelled) {
       cancelled = true;
       signal.emit(asio::cancellation_type::terminal);

@@ -25,8 +25,11 @@ class VirtualBench {
 
   /// Opens the rack, calibrates it and closes it again.
   Result<calibration::Record> calibrate(calibration::Options options = {});
-  /// The same, cancelled after that many steps of the clock; nothing when it ended before by itself.
-  std::optional<std::string> calibrateCancelledAfter(std::size_t steps);
+  /// Where a cancellation may come: between two moments of the clock, or between any two handlers of the loop, which
+  /// is at every single await.
+  enum class Grain { clock, handler };
+  /// The same, cancelled after that many steps; nothing when it ended before by itself.
+  std::optional<std::string> calibrateCancelledAfter(std::size_t steps, Grain grain = Grain::clock);
   std::size_t stepsTaken() const { return steps_; }
 
   /// Runs any coroutine on the live rack.
@@ -37,6 +40,7 @@ class VirtualBench {
   const description::Rack rack;
   VirtualClock clock;
   rack::MemoryJournal journal;
+  std::string traceFile;  ///< when set, what goes over the wires is written there
   std::unique_ptr<sim::Bench> bench;
 
  private:

@@ -68,6 +68,11 @@ std::string journalPath(const description::Rack& rack) { return stateName(rack) 
 std::string openAllPath(const description::Rack& rack) { return stateName(rack) + ".open-all"; }
 std::string calibrationPath(const description::Rack& rack) { return stateName(rack) + ".calibration.json"; }
 
+bool isReplay(const BenchOptions& options, const description::Rack& rack) {
+  const auto traced = [](const auto& device) { return device.port.kind == description::Port::Kind::replay; };
+  return !options.replayFile.empty() || std::all_of(rack.devices.begin(), rack.devices.end(), traced);
+}
+
 std::optional<description::Rack> loadRackFor(const Console& console, const std::string& file) {
   description::Diagnostics diagnostics;
   auto rack = description::loadRack(file, description::diskReader(), diagnostics);
@@ -154,7 +159,14 @@ int runOnBench(const Console& console, const description::Rack& rack, const Benc
   Clock* clock = &realClock;
   std::unique_ptr<rack::RelayJournal> journal;
   rack::LiveRackOptions liveOptions;
-  if (!options.replayFile.empty()) {
+  const auto traced = transport::replayStart(rack);
+  if (!traced) return console.fail(traced.error());
+  if (options.replayFile.empty() && *traced) {
+    virtualClock = std::make_unique<VirtualClock>(**traced);
+    clock = virtualClock.get();
+    opener = transport::portOpener(*clock);
+    journal = std::make_unique<rack::MemoryJournal>();
+  } else if (!options.replayFile.empty()) {
     auto trace = transport::loadTrace(options.replayFile);
     if (!trace) return console.fail(trace.error());
     virtualClock = std::make_unique<VirtualClock>(trace->start);
@@ -175,7 +187,10 @@ int runOnBench(const Console& console, const description::Rack& rack, const Benc
     if (!tracing) return console.fail(tracing.error());
     opener = std::move(*tracing);
   }
-  const std::uint64_t seed = options.seed != 0 ? options.seed : std::random_device{}();
+  // A replay gives the same bytes every time, the record's id included.
+  const std::uint64_t byChance = virtualClock ? static_cast<std::uint64_t>(clock->now().time_since_epoch().count())
+                                              : std::random_device{}();
+  const std::uint64_t seed = options.seed != 0 ? options.seed : byChance;
 
   Outcome outcome;
   bool stopAsked = false;

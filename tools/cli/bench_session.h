@@ -21,7 +21,7 @@ struct BenchOptions {
   std::string rackFile;
   std::string traceFile;   ///< --trace: what goes over the wires is written here
   std::string replayFile;  ///< --replay: plays such a file in place of the devices, in virtual time
-  std::uint64_t seed = 0;  ///< --seed: of the record's id; 0: by chance
+  std::uint64_t seed = 0;  ///< --seed: of the record's id; 0: by chance, in a replay from its start
   void addTo(CLI::App& app);
 };
 
@@ -33,6 +33,10 @@ std::string lockFolder();   ///< common to all users of the machine
 std::string journalPath(const description::Rack& rack);
 std::string openAllPath(const description::Rack& rack);
 std::string calibrationPath(const description::Rack& rack);  ///< the record in force
+
+/// Whether a trace is played in place of every device: by --replay, or since all ports are `replay:`. Runs in virtual
+/// time then, and leaves nothing in the state folder.
+bool isReplay(const BenchOptions& options, const description::Rack& rack);
 
 /// Loads and checks the rack; prints every problem. Nothing when it has errors.
 std::optional<description::Rack> loadRackFor(const Console& console, const std::string& file);

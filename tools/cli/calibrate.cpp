@@ -62,7 +62,7 @@ class Calibrate final : public Command {
   int finish(const Console& console, const description::Rack& rack, const calibration::Record& record) const {
     const std::string text = calibration::recordJson(record);
     // A part of the channels, or a replay, does not become the calibration in force.
-    if (channels_.empty() && bench_.replayFile.empty()) {
+    if (channels_.empty() && !isReplay(bench_, rack)) {
       if (auto kept = writeFile(calibrationPath(rack), text + "\n"); !kept) return console.fail(kept.error());
     }
     if (!out_.empty()) {
