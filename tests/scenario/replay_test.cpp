@@ -64,9 +64,11 @@ TEST_F(ReplayedPorts, theProgramGivesTheSameRecordToTheByteEveryTime) {
   ASSERT_EQ(record->channels.size(), traced->channels.size());
   for (std::size_t k = 0; k < traced->channels.size(); ++k) {
     // Reading numbers back from JSON costs the last bit.
-    EXPECT_NEAR(record->channels[k].spanRatio, traced->channels[k].spanRatio, 1e-15) << traced->channels[k].name;
+    EXPECT_NEAR(record->channels[k].spanRatio, traced->channels[k].spanRatio, 1e-15)
+        << traced->channels[k].name;
   }
-  EXPECT_FALSE(std::filesystem::exists(folder_ + "/state")) << "a replay leaves no calibration in force, and no journal";
+  EXPECT_FALSE(std::filesystem::exists(folder_ + "/state"))
+      << "a replay leaves no calibration in force, and no journal";
 }
 
 }  // namespace

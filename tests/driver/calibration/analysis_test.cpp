@@ -30,7 +30,8 @@ class Analysis : public ::testing::Test {
   Analysis() : rack(test::shippedRack("small_bench.toml")) {}
 
   description::Channel& channel(const std::string& name) {
-    return *std::find_if(rack.channels.begin(), rack.channels.end(), [&](const auto& c) { return c.name == name; });
+    return *std::find_if(rack.channels.begin(), rack.channels.end(),
+                         [&](const auto& c) { return c.name == name; });
   }
 
   ChannelReadings ideal(const description::Channel& c) const {
@@ -48,11 +49,13 @@ class Analysis : public ::testing::Test {
   }
 
   static bool finds(const ChannelResult& result, const std::string& code) {
-    return std::any_of(result.findings.begin(), result.findings.end(), [&](const auto& f) { return f.code == code; });
+    return std::any_of(result.findings.begin(), result.findings.end(),
+                       [&](const auto& f) { return f.code == code; });
   }
   static const BudgetLine* line(const ChannelResult& result, const std::string& quantity) {
     const auto& lines = result.budget.lines;
-    const auto found = std::find_if(lines.begin(), lines.end(), [&](const auto& l) { return l.quantity == quantity; });
+    const auto found =
+        std::find_if(lines.begin(), lines.end(), [&](const auto& l) { return l.quantity == quantity; });
     return found == lines.end() ? nullptr : &*found;
   }
 
@@ -115,8 +118,8 @@ TEST_F(Analysis, lostSamplesAreCountedAndManyAreAFinding) {
   EXPECT_TRUE(finds(result, "lost-samples"));
 }
 
-// Welch-Satterthwaite, GUM G.4.1 (V): degrees of freedom do not simply add up. One shunt's two repeats that scatter
-// leave about one degree, however well the other shunt is known.
+// Welch-Satterthwaite, GUM G.4.1 (V): degrees of freedom do not simply add up. One shunt's two repeats that
+// scatter leave about one degree, however well the other shunt is known.
 TEST_F(Analysis, degreesOfFreedomAreThoseOfTheScatterThatMatters) {
   auto& two = channel("Q3");
   two.shunts.push_back(two.shunts.front());
@@ -129,8 +132,8 @@ TEST_F(Analysis, degreesOfFreedomAreThoseOfTheScatterThatMatters) {
   EXPECT_NEAR(noise->degreesOfFreedom, 1, 0.01);
 }
 
-// The step of a near-end shunt across an arm goes with R_out / (4 R_C): 1 % of R_out is 1 % of the step, whatever
-// the sensitivity on the certificate.
+// The step of a near-end shunt across an arm goes with R_out / (4 R_C): 1 % of R_out is 1 % of the step,
+// whatever the sensitivity on the certificate.
 TEST_F(Analysis, aTransducersOutputResistanceIsALineOfItsBudget) {
   auto& cell = channel("F1");
   EXPECT_EQ(line(analyse(rack, cell, ideal(cell)), "output resistance of the transducer"), nullptr);

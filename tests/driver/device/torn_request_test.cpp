@@ -1,6 +1,6 @@
 // proves P-07
-// A request that was cut off while it was written (a line held by flow control, a cancelled write) must not spoil
-// the next one: that may be the one that opens a relay.
+// A request that was cut off while it was written (a line held by flow control, a cancelled write) must not
+// spoil the next one: that may be the one that opens a relay.
 #include "scripted_device.h"
 
 namespace shuntwright::test {
@@ -22,7 +22,8 @@ open = { ask = "OPEN {relay}" }
 /// Sends only the first bytes of one write.
 class TearingStream final : public transport::Stream {
  public:
-  TearingStream(std::unique_ptr<transport::Stream> inner, int& tearAt) : inner_(std::move(inner)), tearAt_(tearAt) {}
+  TearingStream(std::unique_ptr<transport::Stream> inner, int& tearAt)
+      : inner_(std::move(inner)), tearAt_(tearAt) {}
   Task<Result<std::size_t>> read(std::span<std::byte> into, Instant deadline) override {
     return inner_->read(into, deadline);
   }
