@@ -262,20 +262,21 @@ void addShunts(const Rack& rack, const Channel& channel, std::vector<UncertainIn
     const std::string quantity = "shunt resistor " + resistorName;
     if (resistor.expandedUncertainty.in(one) > 0) {
       const double u = value * resistor.expandedUncertainty.in(one) / resistor.coverageFactor;
-      out.push_back({{quantity + ", certificate", "ohm", normal(value, u)}, shift});
+      out.push_back({{quantity + ", certificate", "ohm", normal(value, u), quantity}, shift});
     } else {
-      out.push_back({{quantity, "ohm", rectangular(value, value * resistor.tolerance.in(one))}, shift});
+      out.push_back({{quantity, "ohm", rectangular(value, value * resistor.tolerance.in(one)), quantity}, shift});
     }
     const double thermal = value * (resistor.temperatureCoefficient * resistor.temperatureSpan).in(one);
     if (thermal != 0) {
-      out.push_back({{quantity + ", temperature", "ohm", rectangular(0, std::abs(thermal))}, shift});
+      out.push_back({{quantity + ", temperature", "ohm", rectangular(0, std::abs(thermal)), quantity + ", temperature"}, shift});
     }
   }
   for (std::size_t k = 0; k < channel.shunts.size(); ++k) {
     const auto& relay = channel.shunts[k].relay;
     const auto& relays = *rack.device(relay.device)->profile->relays;
-    out.push_back({{"contact of relay " + relay.device + "/" + std::to_string(relay.relay), "ohm",
-                    rectangular(relays.contactResistance.in(ohm), relays.contactTolerance.in(ohm))},
+    const std::string contact = "contact of relay " + relay.device + "/" + std::to_string(relay.relay);
+    out.push_back({{contact, "ohm", rectangular(relays.contactResistance.in(ohm), relays.contactTolerance.in(ohm)),
+                    contact},
                    [k](ChannelModel& m, double delta) { m.shunts[k].resistance += delta * ohm; }});
   }
 }

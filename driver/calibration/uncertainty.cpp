@@ -74,6 +74,16 @@ Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, co
       });
 }
 
+Result<metrology::Model> jointScaleModel(const Rack& rack, std::span<const ChannelScale> channels) {
+  std::vector<metrology::NamedModel> parts;
+  for (const auto& [channel, readings] : channels) {
+    auto model = scaleModel(rack, *channel, readings);
+    if (!model) return std::unexpected(std::move(model.error()).wrap("channel " + channel->name));
+    parts.push_back({channel->name, std::move(*model)});
+  }
+  return metrology::join(std::move(parts));
+}
+
 Result<Budget> scaleBudget(const Rack& rack, const Channel& channel, const ScaleReadings& readings) {
   auto model = scaleModel(rack, channel, readings);
   if (!model) return std::unexpected(std::move(model.error()));
@@ -82,7 +92,7 @@ Result<Budget> scaleBudget(const Rack& rack, const Channel& channel, const Scale
   const metrology::Estimate& scale = propagated->outputs.front();
   Budget budget;
   for (std::size_t i = 0; i < model->inputs.size(); ++i) {
-    const auto& [quantity, unit, distribution] = model->inputs[i];
+    const auto& [quantity, unit, distribution, source] = model->inputs[i];
     BudgetLine line;
     line.quantity = quantity;
     line.value = distribution.mean;

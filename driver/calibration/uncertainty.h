@@ -1,5 +1,6 @@
 #pragma once
 
+#include <span>
 #include <vector>
 
 #include "driver/calibration/channel_model.h"
@@ -29,6 +30,15 @@ struct ScaleReadings {
 /// the full network. Both the budget and its second opinion propagate this model.
 Result<metrology::Model> scaleModel(const description::Rack& rack, const description::Channel& channel,
                                     const ScaleReadings& readings);
+
+/// The scales of several channels as one measurement, an output a channel in the order given: shunt resistors
+/// and relay contacts that they share correlate them (covariance of firstOrder() or monteCarlo()).
+struct ChannelScale {
+  const description::Channel* channel = nullptr;
+  ScaleReadings readings;
+};
+Result<metrology::Model> jointScaleModel(const description::Rack& rack,
+                                         std::span<const ChannelScale> channels);
 
 /// The budget of the scale: GUM to first order; the expanded uncertainty at 95.45 % from the convolved
 /// shapes, times Student's factor over the normal one.

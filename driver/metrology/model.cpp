@@ -1,7 +1,9 @@
 #include "driver/metrology/model.h"
 
+#include <algorithm>
 #include <cmath>
 #include <Eigen/Eigenvalues>
+#include <map>
 #include <numeric>
 
 namespace shuntwright::metrology {
@@ -66,6 +68,46 @@ std::vector<std::vector<std::size_t>> correlatedGroups(const Model& model) {
     }
   }
   return groups;
+}
+
+Model join(std::vector<NamedModel> parts) {
+  Model joint;
+  joint.outputs = 0;
+  std::map<std::string, std::size_t> shared;
+  std::vector<std::vector<std::size_t>> places;  // of each part's inputs among the joint ones
+  for (const auto& [name, model] : parts) {
+    auto& own = places.emplace_back();
+    for (Input in : model.inputs) {
+      if (!in.source.empty()) {
+        const auto [known, isNew] = shared.try_emplace(in.source, joint.inputs.size());
+        own.push_back(known->second);
+        if (!isNew) continue;
+      } else {
+        own.push_back(joint.inputs.size());
+        in.quantity = name + ": " + in.quantity;
+      }
+      joint.inputs.push_back(std::move(in));
+    }
+    for (const auto& c : model.correlations) {
+      joint.correlations.push_back({own[c.first], own[c.second], c.coefficient});
+    }
+    joint.outputs += model.outputs;
+  }
+  joint.function = [parts = std::move(parts), places = std::move(places)](
+                       std::span<const double> x, std::span<double> y) -> Result<void> {
+    std::vector<double> own;
+    for (std::size_t p = 0; p < parts.size(); ++p) {
+      own.clear();
+      for (const auto place : places[p]) own.push_back(x[place]);
+      const auto& model = parts[p].model;
+      if (auto done = model.function(own, y.first(model.outputs)); !done) {
+        return std::unexpected(std::move(done.error()).wrap(parts[p].name));
+      }
+      y = y.subspan(model.outputs);
+    }
+    return {};
+  };
+  return joint;
 }
 
 Result<void> addObservedTogether(Model& model, std::span<const ObservedQuantity> observed) {

@@ -16,6 +16,8 @@ struct Input {
   std::string quantity;
   std::string unit;
   Distribution distribution;
+  /// What it is a property of, where several measurements may share it ("resistor RC1"); else empty.
+  std::string source = {};
 };
 
 /// Correlation coefficient, -1..1, of two inputs (indices into Model::inputs).
@@ -45,6 +47,15 @@ Matrix correlationMatrix(const Model& model);
 
 /// Inputs joined by correlations, directly or through others; those that stand alone are groups of one.
 std::vector<std::vector<std::size_t>> correlatedGroups(const Model& model);
+
+/// Several measurements as one (JCGM 102): their outputs one after the other, their inputs together, where
+/// inputs of one source are one quantity. That is how results that share a resistor come to be correlated.
+/// The other inputs are told apart by the measurement's name.
+struct NamedModel {
+  std::string name;
+  Model model;
+};
+Model join(std::vector<NamedModel> parts);
 
 /// Type A inputs from readings taken together (one list a quantity, equally long), with the correlations of
 /// their means (GUM 5.2.3, equation 17). Appended to `model`.

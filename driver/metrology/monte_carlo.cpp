@@ -100,6 +100,9 @@ class Trials {
   std::vector<std::vector<double>> values_;
 };
 
+/// Two blocks, the least that 7.9.4 asks for, agree by chance too often.
+constexpr std::size_t kLeastBlocks = 5;
+
 /// JCGM 101 7.9.4: blocks until every output is steady. Returns whether it came to that.
 Result<bool> runUntilSteady(Trials& trials, std::size_t outputs, const MonteCarloOptions& options) {
   const auto least = static_cast<std::size_t>(std::ceil(100 / (1 - options.probability)));
@@ -107,12 +110,12 @@ Result<bool> runUntilSteady(Trials& trials, std::size_t outputs, const MonteCarl
   std::vector<Blocks> blocks(outputs);
   for (std::size_t h = 1;; ++h) {
     if (auto done = trials.run(block); !done) return std::unexpected(std::move(done.error()));
-    bool steady = h > 1;
+    bool steady = h >= kLeastBlocks;
     for (std::size_t k = 0; k < outputs; ++k) {
       const auto& all = trials.of(k);
       blocks[k].add(
           summaryOf({all.end() - static_cast<std::ptrdiff_t>(block), all.end()}, options.probability));
-      if (h == 1) continue;
+      if (h < kLeastBlocks) continue;
       const double tolerance =
           options.toleranceShare * numericalTolerance(momentsOf(all).deviation, options.digits);
       steady = steady && blocks[k].unsteadiness() <= tolerance;

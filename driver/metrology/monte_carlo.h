@@ -49,10 +49,10 @@ struct MonteCarloResult {
 };
 
 /// Propagation of distributions (JCGM 101, JCGM 102) of the same model as firstOrder(). With a fixed number
-/// of trials, or in blocks of max(100 / (1 - p), 10^4) until twice the standard deviation of the blocks'
-/// mean, u and ends of the symmetric interval are within the numerical tolerance. Errors: as Sampler::of();
-/// bad_use for a probability outside 0..1 or fewer than two trials; any error of the function, with the
-/// number of the trial.
+/// of trials, or in at least five blocks of max(100 / (1 - p), 10^4) until twice the standard deviation of
+/// the blocks' mean, u and ends of the symmetric interval are within the numerical tolerance. Errors: as
+/// Sampler::of(); bad_use for a probability outside 0..1 or fewer than two trials; any error of the function,
+/// with the number of the trial.
 Result<MonteCarloResult> monteCarlo(const Model& model, Random& random,
                                     const MonteCarloOptions& options = {});
 

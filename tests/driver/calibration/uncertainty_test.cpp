@@ -100,6 +100,46 @@ TEST(ScaleModel, listsEachInputWithItsUnitAndCountsNoneTwice) {
   EXPECT_EQ(y[0], 0);
 }
 
+// Two channels shunted with one resistor are correlated by what that resistor contributes to both, and by no
+// more.
+TEST(JointScaleModel, aSharedShuntResistorCorrelatesChannels) {
+  const auto rack = test::shippedRack("gantry_beam.toml");
+  const auto& first = *rack.channel("S01");
+  auto second = *rack.channel("S02");
+  second.shunts.front().resistor = first.shunts.front().resistor;
+  std::vector<ChannelScale> channels;
+  double shared[2] = {0, 0};
+  for (const auto* channel : {&first, &std::as_const(second)}) {
+    channels.push_back({channel, readingsOf(rack, *channel)});
+    const auto budget = scaleBudget(rack, *channel, channels.back().readings);
+    ASSERT_TRUE(budget);
+    for (const auto& line : budget->lines) {
+      if (line.quantity.starts_with("shunt resistor"))
+        shared[channels.size() - 1] += std::pow(line.contribution_percent, 2);
+    }
+  }
+  const auto model = jointScaleModel(rack, channels);
+  ASSERT_TRUE(model) << model.error().text();
+  const auto propagated = metrology::firstOrder(*model);
+  ASSERT_TRUE(propagated) << propagated.error().text();
+  const double expected = std::sqrt(shared[0] * shared[1]);
+  EXPECT_GT(expected, 1e-3);
+  EXPECT_NEAR(propagated->covariance(0, 1), expected, 1e-6 * expected);
+  EXPECT_LT(expected, 0.9 * propagated->covariance(0, 0));
+
+  Random random(6);
+  metrology::MonteCarloOptions options;
+  options.trials = 40'000;
+  const auto drawn = metrology::monteCarlo(*model, random, options);
+  ASSERT_TRUE(drawn);
+  EXPECT_NEAR(drawn->covariance(0, 1) / expected, 1, 0.05);
+
+  second.shunts.front().resistor = rack.channel("S02")->shunts.front().resistor;
+  const auto apart = metrology::firstOrder(*jointScaleModel(rack, channels));
+  ASSERT_TRUE(apart);
+  EXPECT_NEAR(apart->covariance(0, 1), 0, 1e-9 * expected);
+}
+
 // Leads of a 3-wire quarter bridge that warm together cancel, but for what they differ by: with a relative
 // tolerance the zero moves by alpha dT (d1 - d2) / (K R), so u = sqrt(2) alpha u_T u_lead / (K R) (product of
 // independent quantities; alpha 0.00393 /K at 20 degC, IEC 60028).

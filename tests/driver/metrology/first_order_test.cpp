@@ -146,6 +146,27 @@ TEST(ShapedHalfWidth, knowsARectangleAndStudent) {
   EXPECT_NEAR(shapedHalfWidth(together, estimateOf(together)), 2 * studentFactor(kInfinity), 4e-3);
 }
 
+TEST(Join, inputsOfOneSourceAreOneQuantity) {
+  const auto difference = [](auto x) { return x[0] - x[1]; };
+  Model one = modelOf({normal(3, 0.5), normal(2, 0.1)}, difference);
+  Model other = modelOf({normal(2, 0.2), normal(3, 0.5)}, difference);
+  one.inputs[0].source = other.inputs[1].source = "resistor";
+  one.correlations = {{0, 1, 0.3}};
+  const Model joint = join({{"A", one}, {"B", other}});
+  ASSERT_EQ(joint.inputs.size(), 3u);
+  EXPECT_EQ(joint.inputs[0].quantity, "X1");
+  EXPECT_EQ(joint.inputs[1].quantity, "A: X2");
+  EXPECT_EQ(joint.inputs[2].quantity, "B: X1");
+  const auto result = firstOrder(joint);
+  ASSERT_TRUE(result) << result.error().text();
+  ASSERT_EQ(result->outputs.size(), 2u);
+  EXPECT_EQ(result->outputs[0].value, 1);
+  EXPECT_EQ(result->outputs[1].value, -1);
+  // A = r - a, B = b - r: cov = -u_r^2 + 0.3 u_r u_a.
+  EXPECT_NEAR(result->covariance(0, 1), -0.25 + 0.3 * 0.5 * 0.1, 1e-12);
+  EXPECT_NEAR(result->covariance(1, 1), 0.25 + 0.04, 1e-12);
+}
+
 TEST(CorrelatedGroups, followChains) {
   Model model = modelOf(std::vector<Distribution>(5, normal(0, 1)), [](auto x) { return x[0]; });
   model.correlations = {{4, 2, 0.1}, {2, 0, 0.1}, {1, 3, 0.0}};
