@@ -117,6 +117,7 @@ struct Relays {
   Nanoseconds releaseTime = std::chrono::milliseconds(10);
   units::Resistance contactResistance = 100.0 * units::milliohm;  ///< typical, closed
   units::Resistance contactTolerance = 100.0 * units::milliohm;   ///< half-width about it, absolute
+  std::optional<units::Resistance> leakage;  ///< across an open relay, at least this; none: taken as perfect
   bool latching = false;  ///< stay as they are when power goes
 
   Exchange close;                     ///< {relay}

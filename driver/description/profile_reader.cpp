@@ -215,6 +215,7 @@ class ProfileReader {
     reader.take("operate_time", out.operateTime, {"0 s", "5 s"});
     reader.take("release_time", out.releaseTime, {"0 s", "5 s"});
     reader.take("contact_resistance", out.contactResistance, {"0 ohm", "100 ohm"});
+    reader.take("leakage", out.leakage, {"1 Mohm", ""});
     reader.take("contact_tolerance", out.contactTolerance, {"0 ohm", "100 ohm"});
     if (out.contactTolerance > out.contactResistance)
       diagnostics_.error(

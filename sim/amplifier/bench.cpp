@@ -53,18 +53,34 @@ void Bench::State::contact(const RelayRef& relay, bool closed, Instant when) {
   }
 }
 
+namespace {
+
+/// Half of the excitation stands across each gauge.
+double gridPower_kW_per_m2(const description::Rack& rack, const description::Channel& channel) {
+  if (channel.transducer || !rack.gaugeOf(channel).gridArea) return 0;
+  const auto& sheet = rack.gaugeOf(channel);
+  const double half_V = channel.excitation.in(volt) / 2;
+  return 1e-3 * half_V * half_V / sheet.resistance.value.in(ohm) / sheet.gridArea->in(square_metre);
+}
+
+}  // namespace
+
 Bench::Bench(const description::Rack& rack, const Scenario& scenario, std::uint64_t seed, Instant start)
     : state_(std::make_unique<State>(rack, scenario, Random(seed), start)) {
   State& s = *state_;
   s.contactRandom = s.random.fork(2);
-  const Hall hall = Hall::drawn(s.random.fork(3));
+  Shared shared{Hall::drawn(s.random.fork(3))};
+  Random packets = s.random.fork(4);
+  std::map<std::string, double> batches;
+  for (const auto& [name, sheet] : rack.gauges) batches[name] = packets.uniform(-1, 1);
   std::uint64_t stream = 100;
   for (const auto& channel : rack.channels) {
     const auto faults = s.scenario.channels.contains(channel.name) ? s.scenario.channels.at(channel.name) : ChannelFaults{};
-    TrueChannel truth(rack, channel, s.scenario.imperfections, faults, s.random.fork(stream++), hall);
+    if (!channel.gauge.empty()) shared.batch = batches.at(channel.gauge);
+    TrueChannel truth(rack, channel, s.scenario.imperfections, faults, s.random.fork(stream++), shared);
     s.inputs[channel.name] = std::make_unique<BridgeInput>(
         std::move(truth), s.specimen, s.clock, *rack.device(channel.device)->profile->inputs, s.scenario.imperfections,
-        faults, s.random.fork(stream++));
+        faults, s.random.fork(stream++), gridPower_kW_per_m2(rack, channel));
   }
   // Which relay really works which shunt: as the rack says, but for the swapped ones.
   const auto really = [&](RelayRef relay) {

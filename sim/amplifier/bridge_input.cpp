@@ -1,5 +1,6 @@
 #include "sim/amplifier/bridge_input.h"
 
+#include <algorithm>
 #include <cmath>
 #include <numbers>
 
@@ -8,6 +9,8 @@ namespace shuntwright::sim {
 using namespace units;
 
 namespace {
+constexpr double kFlickerShortest_s = 0.02, kFlickerLongest_s = 1000;
+constexpr double kHeating_s = 30;
 // How often the circuit is solved anew: under a moving load ten times a second, else only the leads' temperature
 // moves, over minutes.
 constexpr Nanoseconds kLoadTick = std::chrono::milliseconds(100), kIdleTick = std::chrono::seconds(5);
@@ -24,11 +27,13 @@ LoadClock::Phase LoadClock::mains(Instant when) const {
 
 BridgeInput::BridgeInput(TrueChannel channel, const Specimen& specimen, const LoadClock& clock,
                          const description::Inputs& inputs, const Imperfections& imperfections,
-                         const ChannelFaults& faults, Random random)
+                         const ChannelFaults& faults, Random random, double kW_per_m2)
     : channel_(std::move(channel)),
       specimen_(&specimen),
       clock_(&clock),
       imperfections_(imperfections),
+      flicker_(imperfections.flicker.in(volt_per_volt), kFlickerShortest_s, kFlickerLongest_s, random.fork(1)),
+      heated_(imperfections.selfHeating.in(strain) * kW_per_m2),
       faults_(faults),
       random_(random),
       span_(1 + random_.uniform(-1, 1) * imperfections.spanTolerance),
@@ -41,7 +46,8 @@ BridgeInput::BridgeInput(TrueChannel channel, const Specimen& specimen, const Lo
       mainsSine_(imperfections.mains.in(volt_per_volt) * std::cos(mainsPhase_)),
       mainsCosine_(imperfections.mains.in(volt_per_volt) * std::sin(mainsPhase_)),
       last_(clock.start),
-      nextRefresh_(clock.start) {}
+      nextRefresh_(clock.start),
+      lastSample_(clock.start) {}
 
 double BridgeInput::strainAt(Instant when) const {
   const double time_s = seconds(when - clock_->start);
@@ -50,7 +56,9 @@ double BridgeInput::strainAt(Instant when) const {
 }
 
 double BridgeInput::trueRatioAt(Instant when) const {
-  return channel_.ratio(strainAt(when), channel_.leadWarming_K(seconds(when - clock_->start)));
+  const double time_s = seconds(when - clock_->start);
+  const double heated = heated_ * (1 - std::exp(-std::max(0.0, time_s) / kHeating_s));
+  return channel_.ratio(strainAt(when) + heated, channel_.leadWarming_K(time_s));
 }
 
 void BridgeInput::refresh(Instant now) {
@@ -89,7 +97,9 @@ double BridgeInput::sample(Instant now) {
   if (now >= nextRefresh_) refresh(now);
   const double noise = imperfections_.noise.in(volt_per_volt) * faults_.noiseScale * random_.normal();
   const auto [sine, cosine] = clock_->mains(now);
-  return span_ * filtered_ + offset_ + drift_ + noise + mainsSine_ * sine + mainsCosine_ * cosine;
+  const double flicker = flicker_.after(seconds(now - lastSample_));
+  lastSample_ = now;
+  return span_ * filtered_ + offset_ + drift_ + flicker + noise + mainsSine_ * sine + mainsCosine_ * cosine;
 }
 
 }  // namespace shuntwright::sim

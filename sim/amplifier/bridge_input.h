@@ -6,6 +6,7 @@
 #include "driver/core/random.h"
 #include "driver/description/profile.h"
 #include "sim/fault/scenario.h"
+#include "sim/physics/flicker.h"
 #include "sim/physics/specimen.h"
 #include "sim/physics/true_channel.h"
 
@@ -34,8 +35,9 @@ class LoadClock {
 /// temperature; between that the ratio stands and the filter runs on analytically.
 class BridgeInput {
  public:
+  /// @param kW_per_m2  what the excitation puts into the gauge's grid; 0: unknown or no gauge
   BridgeInput(TrueChannel channel, const Specimen& specimen, const LoadClock& clock, const description::Inputs& inputs,
-              const Imperfections& imperfections, const ChannelFaults& faults, Random random);
+              const Imperfections& imperfections, const ChannelFaults& faults, Random random, double kW_per_m2 = 0);
 
   TrueChannel& channel() { return channel_; }
   const TrueChannel& channel() const { return channel_; }
@@ -59,6 +61,8 @@ class BridgeInput {
   const Specimen* specimen_;
   const LoadClock* clock_;
   Imperfections imperfections_;
+  Flicker flicker_;
+  double heated_ = 0;  ///< apparent strain of the warm gauge
   ChannelFaults faults_;
   Random random_;
   double span_, offset_, driftPhase_, driftPeriod_s_, mainsPhase_, timeConstant_s_;
@@ -69,7 +73,7 @@ class BridgeInput {
   double filtered_ = 0;  ///< behind the filter
   double left_ = 0;      ///< strain left behind by closings (no zero return)
   double drift_ = 0;
-  Instant last_, nextRefresh_;
+  Instant last_, nextRefresh_, lastSample_;
   bool started_ = false;
 };
 

@@ -21,6 +21,9 @@ struct Imperfections {
   double spanTolerance = 5e-3;          ///< amplifier, half-width, relative
   units::Ratio offset = 10e-3 * units::millivolt_per_volt;       ///< amplifier, half-width
   units::Ratio drift = 0.1e-3 * units::millivolt_per_volt;       ///< amplitude of a slow wander of the offset
+  double batches = 0;                   ///< 0..1, how much of a gauge factor's deviation a whole packet shares
+  units::Strain selfHeating;            ///< apparent strain of a gauge heated with 1 kW/m2 of its grid, when warm
+  units::Ratio flicker;                 ///< 1/f noise, standard deviation of one decade of frequency
   units::Ratio noise = 0.2e-3 * units::millivolt_per_volt;       ///< white, standard deviation of a sample
   units::Ratio mains = 0.1e-3 * units::millivolt_per_volt;       ///< 50 Hz amplitude
   Nanoseconds answerDelay = std::chrono::milliseconds(1);

@@ -41,6 +41,10 @@ class ScenarioReader {
     t.take("leads_warm", i.leadsWarm);
     units::Fraction span = i.spanTolerance * units::one;
     if (t.take("span_tolerance", span, {"0 %", "50 %"})) i.spanTolerance = span.in(units::one);
+    units::Fraction shared = i.batches * units::one;
+    if (t.take("gauge_batches", shared, {"0 %", "100 %"})) i.batches = shared.in(units::one);
+    t.take("self_heating", i.selfHeating);
+    t.take("flicker", i.flicker);
     t.take("offset", i.offset);
     t.take("drift", i.drift);
     t.take("noise", i.noise);

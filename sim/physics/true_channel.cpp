@@ -26,6 +26,7 @@ static_assert(2 * description::kTerminals == NodeCircuit::kNodes);
 bool quarter(CircuitKind kind) { return kind == CircuitKind::quarter_2_wire || kind == CircuitKind::quarter_3_wire; }
 
 constexpr double kWorstCrimp_ohm = 0.02;
+constexpr std::uint64_t kLeakageStream = 900;
 
 double off(Random& random, double value, double tolerance) { return value * (1 + random.uniform(-tolerance, tolerance)); }
 
@@ -39,7 +40,7 @@ Hall Hall::drawn(Random random) {
 }
 
 TrueChannel::TrueChannel(const description::Rack& rack, const description::Channel& channel,
-                         const Imperfections& imperfections, const ChannelFaults& faults, Random random, Hall hall)
+                         const Imperfections& imperfections, const ChannelFaults& faults, Random random, Shared shared)
     : channel_(&channel) {
   const auto& inputs = *rack.device(channel.device)->profile->inputs;
   inputResistance_ohm_ = inputs.inputResistance.in(ohm);
@@ -56,7 +57,8 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
     }
   } else {
     const auto& sheet = rack.gaugeOf(channel);
-    gaugeFactor_ = off(random, sheet.factor.value(), imperfections.gaugeFactors * sheet.factorTolerance.in(one));
+    const double deviation = imperfections.batches * shared.batch + (1 - imperfections.batches) * random.uniform(-1, 1);
+    gaugeFactor_ = sheet.factor.value() * (1 + imperfections.gaugeFactors * sheet.factorTolerance.in(one) * deviation);
     double completion_tolerance = 0;
     for (const auto& offered : inputs.completions) {
       if (channel.completion && offered.value == *channel.completion) completion_tolerance = offered.tolerance.in(one);
@@ -94,8 +96,8 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
     leads_[static_cast<std::size_t>(opened)] = 1e9;
   }
   if (imperfections.leadsWarm) {
-    warmStart_K_ = tolerance_K * std::clamp(hall.start + 0.2 * random.uniform(-1, 1), -1.0, 1.0);
-    warmEnd_K_ = warmStart_K_ + tolerance_K * hall.warming * random.uniform(0.3, 1);
+    warmStart_K_ = tolerance_K * std::clamp(shared.hall.start + 0.2 * random.uniform(-1, 1), -1.0, 1.0);
+    warmEnd_K_ = warmStart_K_ + tolerance_K * shared.hall.warming * random.uniform(0.3, 1);
     warmTime_s_ = random.uniform(300, 1200);
   }
   for (const auto& shunt : channel.shunts) {
@@ -108,7 +110,13 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
     }
     value *= 1 + resistor.temperatureCoefficient.in(per_kelvin) *
                      random.uniform(-1, 1) * resistor.temperatureSpan.in(kelvin);
-    shunts_.push_back({shunt, value * faults.shuntScale});
+    TrueShunt one{shunt, value * faults.shuntScale};
+    // Insulation is stated as a lower bound; what it really is lies anywhere above, by decades.
+    const auto* board = rack.device(shunt.relay.device);
+    if (board && board->profile->relays && board->profile->relays->leakage) {
+      one.leakage_ohm = board->profile->relays->leakage->in(ohm) * std::pow(10, random.fork(kLeakageStream + shunts_.size()).uniform(0, 2));
+    }
+    shunts_.push_back(one);
   }
 }
 
@@ -186,10 +194,10 @@ double TrueChannel::ratio(double strainValue, double leadsWarmer_K) const {
   }
   c.connect(inst(SP), inst(SM), inputResistance_ohm_);
   for (const auto& shunt : shunts_) {
-    if (!shunt.closed) continue;
+    if (!shunt.closed && shunt.leakage_ohm <= 0) continue;
     const auto [a, b] = shunt.described.across;
     const bool near = shunt.described.side == Side::instrument;
-    c.connect(near ? inst(a) : tab(a), near ? inst(b) : tab(b), shunt.resistor_ohm + shunt.contact_ohm);
+    c.connect(near ? inst(a) : tab(a), near ? inst(b) : tab(b), shunt.resistor_ohm + (shunt.closed ? shunt.contact_ohm : shunt.leakage_ohm));
   }
   const auto v = c.solve();
   const double excitation =

@@ -15,6 +15,7 @@ struct TrueShunt {
   double resistor_ohm = 0;
   bool closed = false;
   double contact_ohm = 0;
+  double leakage_ohm = 0;  ///< across the open contact; 0: perfect
 };
 
 /// The air that all leads of a bench hang in, against what the rack states: both in parts of the leads' stated
@@ -25,11 +26,17 @@ struct Hall {
   static Hall drawn(Random random);
 };
 
+/// What a channel shares with others of its bench.
+struct Shared {
+  Hall hall;
+  double batch = 0;  ///< of its packet of gauges: the factor's deviation in parts of the tolerance, -1..1
+};
+
 /// One channel's circuit as it really is, drawn from a random source about what rack and profile state.
 class TrueChannel {
  public:
   TrueChannel(const description::Rack& rack, const description::Channel& channel, const Imperfections& imperfections,
-              const ChannelFaults& faults, Random random, Hall hall = {});
+              const ChannelFaults& faults, Random random, Shared shared = {});
 
   const description::Channel& described() const { return *channel_; }
   std::vector<TrueShunt>& shunts() { return shunts_; }

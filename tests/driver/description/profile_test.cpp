@@ -63,6 +63,7 @@ TEST(Profile, readsEveryField) {
   EXPECT_EQ(relays.operateTime, std::chrono::milliseconds(8));
   EXPECT_EQ(relays.releaseTime, std::chrono::milliseconds(10));  // the default
   EXPECT_EQ(relays.contactTolerance, 50.0 * units::milliohm);
+  EXPECT_EQ(relays.leakage, 10.0 * units::gigaohm);
   EXPECT_EQ(relays.close.ask.source, "CLOSE {relay:02}");
   EXPECT_EQ(relays.open.ask.source, "OPEN {relay:02}");
   EXPECT_EQ(relays.openAll->ask.source, "OPEN ALL");

@@ -106,6 +106,32 @@ TEST_F(BridgeInputTest, noiseIsWhiteAndAsLargeAsStated) {
   EXPECT_NEAR(deviation(take(*other, 20000, 10ms, clock_.start)) / 10e-6, 1, 0.02);
 }
 
+TEST_F(BridgeInputTest, aHeatedGaugeCreepsToItsApparentStrainAndTheTruthDoesNot) {
+  scenario_.imperfections.selfHeating = 10.0 * microstrain;
+  specimen_ = std::make_unique<Specimen>(rack_, scenario_, Random(5).fork(1));
+  TrueChannel truth(rack_, rack_.channels[0], scenario_.imperfections, {}, Random(5).fork(2));
+  BridgeInput warm(std::move(truth), *specimen_, clock_, *rack_.devices[0].profile->inputs, scenario_.imperfections, {},
+                   Random(5).fork(3), 2.0);
+  // 2 kW/m2 give 20 microstrain, 63 % of them after the time constant of 30 s.
+  const double K = warm.channel().gaugeFactor();
+  const auto apparent = [&](Nanoseconds after) {
+    return 4e6 / K * (warm.trueRatioAt(clock_.start + after) - warm.trueRatioAt(clock_.start));
+  };
+  EXPECT_NEAR(apparent(30s), 20 * (1 - std::exp(-1)), 0.5);
+  EXPECT_NEAR(apparent(600s), 20, 0.5);
+  EXPECT_EQ(warm.strainAt(clock_.start + 600s), 0);
+}
+
+TEST_F(BridgeInputTest, flickerAddsToTheWhiteNoise) {
+  scenario_.imperfections.flicker = 1.0 * microvolt_per_volt;
+  auto one = input();
+  const auto values = take(*one, 20000, 10ms, clock_.start);
+  // Every time constant from 20 ms to 1000 s, a factor of four apart: eight parts; over 200 s the slowest hardly move.
+  const double least = std::sqrt(5 * std::log10(4.0)), most = std::sqrt(8 * std::log10(4.0));
+  EXPECT_GT(deviation(values), 0.7e-6 * least);
+  EXPECT_LT(deviation(values), 1.4e-6 * most);
+}
+
 TEST_F(BridgeInputTest, mainsPickupIsASineOf50Hz) {
   scenario_.imperfections.mains = 2.0 * microvolt_per_volt;
   auto one = input();

@@ -52,6 +52,9 @@ offset = "1 uV/V"
 drift = "2 uV/V"
 noise = "3 uV/V"
 mains = "4 uV/V"
+gauge_batches = "80 %"
+self_heating = "12 microstrain"
+flicker = "0.3 uV/V"
 answer_delay = "7 ms"
 send_every = "30 ms"
 [beam]
@@ -76,6 +79,9 @@ hold = "2 s"
   EXPECT_DOUBLE_EQ(i.drift.in(microvolt_per_volt), 2);
   EXPECT_DOUBLE_EQ(i.noise.in(microvolt_per_volt), 3);
   EXPECT_DOUBLE_EQ(i.mains.in(microvolt_per_volt), 4);
+  EXPECT_DOUBLE_EQ(i.batches, 0.8);
+  EXPECT_DOUBLE_EQ(i.selfHeating.in(microstrain), 12);
+  EXPECT_DOUBLE_EQ(i.flicker.in(microvolt_per_volt), 0.3);
   EXPECT_EQ(i.answerDelay, 7ms);
   EXPECT_EQ(i.sendEvery, 30ms);
   EXPECT_DOUBLE_EQ(s.beam.span.in(metre), 8);

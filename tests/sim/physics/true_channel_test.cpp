@@ -187,7 +187,7 @@ TEST(TrueChannel, whatIsDrawnStaysInsideWhatIsStated) {
   double lowest = 1e9, highest = 0, warmest = 0, coldest = 0, unbalance = 0;
   for (std::uint64_t seed = 1; seed <= 400; ++seed) {
     const Hall hall = Hall::drawn(Random(seed));
-    const TrueChannel truth(one.rack, one.channel, Imperfections(), {}, Random(seed), hall);
+    const TrueChannel truth(one.rack, one.channel, Imperfections(), {}, Random(seed), Shared{hall, 0});
     EXPECT_NEAR(truth.gauge_ohm(), 120, 0.36 + 1e-12);
     EXPECT_NEAR(truth.gaugeFactor(), 2, 0.02 + 1e-12);
     EXPECT_NEAR(truth.shunts()[0].resistor_ohm / 59880, 1, 1.0501e-3);
@@ -206,6 +206,37 @@ TEST(TrueChannel, whatIsDrawnStaysInsideWhatIsStated) {
   EXPECT_LE(warmest, 10);
   EXPECT_LT(coldest, -3);
   EXPECT_GT(unbalance, 0.5e-3) << "completions off nominal and unequal leads";
+}
+
+TEST(TrueChannel, gaugesOfAPacketShareTheirFactor) {
+  Exact one(CircuitKind::quarter_3_wire, 120, 10);
+  Imperfections shared = one.none;
+  shared.gaugeFactors = 1;
+  shared.batches = 1;
+  const auto factor = [&](std::uint64_t seed, double batch) {
+    return TrueChannel(one.rack, one.channel, shared, {}, Random(seed), Shared{{}, batch}).gaugeFactor();
+  };
+  EXPECT_EQ(factor(1, 0.5), factor(2, 0.5)) << "all of it is the packet's";
+  EXPECT_NEAR(factor(1, 0.5), 2 * (1 + 0.5 * 0.01), 1e-12);
+  shared.batches = 0.75;
+  EXPECT_NE(factor(1, 0.5), factor(2, 0.5));
+  EXPECT_NEAR(factor(1, 0.5), 2 * (1 + 0.75 * 0.5 * 0.01), 0.25 * 0.02 + 1e-12);
+}
+
+TEST(TrueChannel, anOpenRelayLeaks) {
+  Exact one(CircuitKind::quarter_3_wire, 350, 0);
+  one.shunt(174650, Terminal::sig_plus, Terminal::exc_minus, Side::instrument);
+  auto leaky = std::make_shared<description::Profile>();
+  leaky->relays.emplace();
+  leaky->relays->leakage = 100.0 * megaohm;
+  description::Device board;
+  board.name = one.channel.shunts[0].relay.device;
+  board.profile = leaky;
+  one.rack.devices.push_back(board);
+  // 100 Mohm across 350 ohm read as -1.75 microstrain at K = 2; up to a hundredth of that when it insulates better.
+  const double strain = 4e6 / 2 * one.build(one.none).ratio(0, 0);
+  EXPECT_LE(strain, -0.0175);
+  EXPECT_GE(strain, -1.76);
 }
 
 TEST(TrueChannel, faultsOfACircuit) {
