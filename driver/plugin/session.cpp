@@ -2,12 +2,17 @@
 
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/awaitable.hpp>
+#include <boost/asio/bind_cancellation_slot.hpp>
+#include <boost/asio/cancellation_signal.hpp>
 #include <boost/asio/co_spawn.hpp>
 #include <boost/asio/detached.hpp>
+#include <boost/asio/error.hpp>
 #include <boost/asio/executor_work_guard.hpp>
 #include <boost/asio/io_context.hpp>
 #include <boost/asio/post.hpp>
+#include <boost/system/system_error.hpp>
 #include <chrono>
+#include <exception>
 #include <future>
 #include <limits>
 #include <map>
@@ -27,6 +32,19 @@ namespace asio = boost::asio;
 
 namespace {
 constexpr std::size_t kQueuedSeconds = 10;
+
+Result<void> errorOf(std::exception_ptr thrown) {
+  try {
+    std::rethrow_exception(thrown);
+  } catch (const boost::system::system_error& e) {
+    if (e.code() == asio::error::operation_aborted) return fail(ErrorCode::cancelled, "the host has cancelled it");
+    return fail(ErrorCode::io, e.what());
+  } catch (const std::exception& e) {
+    return fail(ErrorCode::io, e.what());
+  } catch (...) {
+    return fail(ErrorCode::io, "something unknown was thrown");
+  }
+}
 
 Error notOpen() { return Error(ErrorCode::bad_use, "the session is not open", {}, "call open first"); }
 }  // namespace
@@ -85,9 +103,12 @@ struct Session::Thread {
   }
 
   std::atomic<int> pending{0};
+  asio::cancellation_signal abort;  ///< of calibrations; used on the thread only, like the next
+  bool calibrating = false;
 
   /// Runs a coroutine on the thread; the future is ready when it has ended. Exceptions become errors.
-  std::future<Result<void>> spawn(std::function<Task<Result<void>>()> body) {
+  /// @param abortable  `abort` ends it
+  std::future<Result<void>> spawn(std::function<Task<Result<void>>()> body, bool abortable = false) {
     auto promise = std::make_shared<std::promise<Result<void>>>();
     auto future = promise->get_future();
     ++pending;
@@ -97,21 +118,17 @@ struct Session::Thread {
       }
     };
     auto out = std::make_shared<Result<void>>();
-    asio::post(context, [this, promise, out, body = std::move(body)] {
-      asio::co_spawn(
-          context, [body, out]() -> Task<void> { return Wrap::run(body, out); },
-          [this, promise, out](std::exception_ptr e) {
-            --pending;
-            if (!e) {
-              promise->set_value(std::move(*out));
-              return;
-            }
-            try {
-              std::rethrow_exception(e);
-            } catch (const std::exception& error) {
-              promise->set_value(fail(ErrorCode::io, error.what()));
-            }
-          });
+    asio::post(context, [this, promise, out, abortable, body = std::move(body)] {
+      auto ended = [this, promise, out](std::exception_ptr e) {
+        --pending;
+        promise->set_value(e ? errorOf(e) : std::move(*out));
+      };
+      auto run = [body, out]() -> Task<void> { return Wrap::run(body, out); };
+      if (abortable) {
+        asio::co_spawn(context, run, asio::bind_cancellation_slot(abort.slot(), ended));
+      } else {
+        asio::co_spawn(context, run, ended);
+      }
     });
     return future;
   }
@@ -210,7 +227,7 @@ Result<void> Session::open() {
     if (options_.stateFolder.empty()) {
       t.journal = std::make_unique<rack::MemoryJournal>();
     } else {
-      auto journal = rack::FileJournal::open(options_.stateFolder + "/" + rack_->name + ".relays");
+      auto journal = rack::FileJournal::open(rack::journalPath(options_.stateFolder, *rack_));
       if (!journal) return std::unexpected(std::move(journal.error()));
       t.journal = std::move(*journal);
     }
@@ -236,13 +253,14 @@ Result<void> Session::calibrate(std::function<void(const calibration::Progress&)
 
   // Progress crosses over to the calling thread.
   std::mutex mutex;
-  std::condition_variable changed;
+  std::condition_variable heard;
+  const bool patient = thread_->virtualClock != nullptr;  // virtual time waits for the host, real devices do not
   std::deque<calibration::Progress> told;
   calibration::Options wanted;
   wanted.progress = [&](const calibration::Progress& p) {
-    const std::lock_guard lock(mutex);
+    std::unique_lock lock(mutex);
     told.push_back(p);
-    changed.notify_one();
+    if (patient) heard.wait(lock, [&] { return told.empty(); });
   };
   const std::uint64_t seed = options_.seed != 0
                                  ? options_.seed
@@ -252,6 +270,11 @@ Result<void> Session::calibrate(std::function<void(const calibration::Progress&)
     static Task<Result<void>> run(Thread* thread, rack::LoadPathPermit permit, std::uint64_t seed,
                                   calibration::Options options, std::shared_ptr<Result<calibration::Record>> out) {
       Random random(seed);
+      thread->calibrating = true;
+      struct Ended {
+        Thread* thread;
+        ~Ended() { thread->calibrating = false; }
+      } ended{thread};
       *out = co_await calibration::calibrate(*thread->live, permit, random, options);
       co_return Result<void>{};
     }
@@ -259,23 +282,39 @@ Result<void> Session::calibrate(std::function<void(const calibration::Progress&)
   Thread* t = thread_.get();
   auto done = t->spawn([t, permit = *permit, seed, wanted, record]() -> Task<Result<void>> {
     return Run::run(t, permit, seed, wanted, record);
-  });
+  }, true);
   const auto tell = [&] {
     std::deque<calibration::Progress> now;
     {
       const std::lock_guard lock(mutex);
-      now.swap(told);
+      now = told;
     }
     for (const auto& p : now) {
       if (progress) progress(p);
     }
+    const std::lock_guard lock(mutex);
+    told.erase(told.begin(), told.begin() + static_cast<std::ptrdiff_t>(now.size()));
+    heard.notify_one();
   };
-  while (done.wait_for(std::chrono::milliseconds(5)) != std::future_status::ready) tell();
+  while (done.wait_for(std::chrono::microseconds(patient ? 100 : 5000)) != std::future_status::ready) tell();
   tell();
-  if (auto ended = done.get(); !ended) return ended;
+  if (auto ended = done.get(); !ended) {
+    const auto left = t->live->relays().maybeClosed();
+    for (const auto& relay : left) ended.error().message += "; relay " + rack::text(relay) + " may still be closed";
+    if (!left.empty()) ended.error().remedy = "call release";
+    return ended;
+  }
   if (!*record) return std::unexpected(std::move(record->error()));
   recordJson = calibration::recordJson(**record);
   return use(std::move(**record));
+}
+
+void Session::cancel() {
+  if (!thread_) return;
+  Thread* t = thread_.get();
+  asio::post(t->context, [t] {
+    if (t->calibrating) t->abort.emit(asio::cancellation_type::terminal);
+  });
 }
 
 Result<void> Session::use(calibration::Record record) {

@@ -43,6 +43,8 @@ class Session {
   Result<void> open();
   const description::Rack* rack() const;
   Result<void> calibrate(std::function<void(const calibration::Progress&)> progress, std::string& recordJson);
+  /// Ends a calibration under way, which then fails with `cancelled`; from any thread.
+  void cancel();
   Result<void> use(calibration::Record record);
   const calibration::Record* record() const { return record_ ? &*record_ : nullptr; }
 

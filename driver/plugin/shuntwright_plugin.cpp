@@ -30,8 +30,8 @@ int codeOf(ErrorCode code) {
     case ErrorCode::timeout: return SHUNTWRIGHT_TIMEOUT;
     case ErrorCode::io:
     case ErrorCode::bad_answer:
-    case ErrorCode::device_error:
-    case ErrorCode::cancelled: return SHUNTWRIGHT_DEVICE;
+    case ErrorCode::device_error: return SHUNTWRIGHT_DEVICE;
+    case ErrorCode::cancelled: return SHUNTWRIGHT_CANCELLED;
   }
   return SHUNTWRIGHT_INTERNAL;
 }
@@ -186,6 +186,13 @@ int releaseRelays(shuntwright_session* session) {
   return guarded(session, [](auto& s) { return s.release(); });
 }
 
+/// Beside another call: touches nothing of the handle that one may change.
+int cancelCall(shuntwright_session* session) {
+  if (!session || !session->session) return SHUNTWRIGHT_BAD_USE;
+  session->session->cancel();
+  return SHUNTWRIGHT_OK;
+}
+
 void closeSession(shuntwright_session* session) {
   try {
     delete session;
@@ -197,7 +204,7 @@ void closeSession(shuntwright_session* session) {
 const shuntwright_table kTable = {sizeof(shuntwright_table), SHUNTWRIGHT_ABI_VERSION, openSession, lastError,
                                   channelCount,              channelAt,               calibrate,   useCalibration,
                                   startReading,              readBlock,               stopReading, releaseRelays,
-                                  closeSession};
+                                  closeSession,              cancelCall};
 
 }  // namespace
 

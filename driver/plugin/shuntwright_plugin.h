@@ -5,8 +5,8 @@
  *  2. Structs begin with struct_size, which the host sets to sizeof; new fields are only ever appended. A struct
  *     smaller than the plug-in knows is taken as one whose further fields are 0.
  *  3. A session is an opaque handle. Its devices run on a thread of the plug-in; every call of the table may come
- *     from any thread of the host, one at a time for each session, and blocks until it is done. Callbacks come on
- *     the thread that made the call. No signal handler is ever installed.
+ *     from any thread of the host, one at a time for each session (cancel alone comes between), and blocks until it
+ *     is done. Callbacks come on the thread that made the call. No signal handler is ever installed.
  *  4. A call returns SHUNTWRIGHT_OK or a code below 0; last_error then says in words what is wrong, where, and how
  *     to mend it. Text is UTF-8 and ends with a zero; text that a call gives belongs to the session and stays until
  *     its next call.
@@ -35,7 +35,8 @@ enum {
   SHUNTWRIGHT_DEVICE = -3,    /* a device or the system failed */
   SHUNTWRIGHT_REFUSED = -4,   /* not confirmed, locked, exists already */
   SHUNTWRIGHT_TIMEOUT = -5,   /* nothing came in time (read) */
-  SHUNTWRIGHT_INTERNAL = -6
+  SHUNTWRIGHT_INTERNAL = -6,
+  SHUNTWRIGHT_CANCELLED = -7  /* by cancel (calibrate) */
 };
 
 /* Flags of a sample. */
@@ -51,8 +52,9 @@ typedef struct {
   uint32_t struct_size;
   int32_t isolated;          /* not 0: the load path is isolated, somebody said so */
   const char* rack_file;     /* TOML */
-  const char* state_folder;  /* of the relay journal; NULL: none is kept */
-  const char* lock_folder;   /* of port locks; NULL: none are taken */
+  const char* state_folder;  /* of the relay journal, an existing folder; NULL: none is kept, and nobody can tell
+                                after a crash which relays may be closed */
+  const char* lock_folder;   /* of port locks; NULL: none are taken, and nothing keeps another program out */
   const char* replay_file;   /* NULL, or a wire trace to play in place of the devices, in virtual time */
   uint64_t seed;             /* of record ids; 0: from the time */
 } shuntwright_open_options;
@@ -120,6 +122,10 @@ typedef struct {
 
   int (*release)(shuntwright_session* session); /* opens every relay */
   void (*close)(shuntwright_session* session);  /* NULL is ignored */
+
+  /* From any thread, and from within the progress callback: a calibration under way opens its relays and ends with
+   * SHUNTWRIGHT_CANCELLED; what was in force stays. Without one nothing happens. */
+  int (*cancel)(shuntwright_session* session);
 } shuntwright_table;
 
 #if defined(_WIN32)

@@ -191,6 +191,8 @@ Task<Result<void>> withRelays(RelayGuard& guard, std::function<Task<Result<void>
     opened = fail(ErrorCode::io, std::string("opening the relays failed: ") + e.what());
   }
   co_await asio::this_coro::reset_cancellation_state(asio::enable_terminal_cancellation());
+  // An interrupted body has no result to give; which relays are left, the guard and its journal know.
+  if (thrown) std::rethrow_exception(thrown);
   if (!opened) {
     if (!result) {
       Error both = std::move(opened.error());
@@ -199,7 +201,6 @@ Task<Result<void>> withRelays(RelayGuard& guard, std::function<Task<Result<void>
     }
     co_return opened;
   }
-  if (thrown) std::rethrow_exception(thrown);
   co_return result;
 }
 

@@ -61,7 +61,8 @@ class RelayGuard {
 };
 
 /// Awaits `body`, then opens every relay, whatever ended the body: return, error, exception or cancellation.
-/// The opening itself cannot be cancelled. A body's error comes first; relays that do not open are added to it.
+/// The opening itself cannot be cancelled. A body's error comes first; relays that do not open are added to it. What
+/// the body threw is thrown on; maybeClosed() then tells of relays that did not open.
 Task<Result<void>> withRelays(RelayGuard& guard, std::function<Task<Result<void>>()> body);
 
 }  // namespace shuntwright::rack

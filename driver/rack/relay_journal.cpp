@@ -5,14 +5,28 @@
 
 #include <cerrno>
 #include <charconv>
+#include <cstdio>
 #include <cstring>
 #include <filesystem>
 #include <fstream>
+#include <functional>
 #include <sstream>
 
 namespace shuntwright::rack {
 
 using description::RelayRef;
+
+std::string stateName(const std::string& folder, const description::Rack& rack) {
+  std::error_code ec;
+  const auto path = std::filesystem::weakly_canonical(rack.file, ec).string();
+  char hash[24];
+  std::snprintf(hash, sizeof hash, "-%08zx", std::hash<std::string>{}(path) & 0xffffffffu);
+  return folder + "/" + rack.name + hash;
+}
+
+std::string journalPath(const std::string& folder, const description::Rack& rack) {
+  return stateName(folder, rack) + ".relays";
+}
 
 std::string text(const RelayRef& relay) { return relay.device + "/" + std::to_string(relay.relay); }
 

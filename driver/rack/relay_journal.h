@@ -55,6 +55,11 @@ class FileJournal final : public RelayJournal {
   std::set<description::RelayRef> closed_;
 };
 
+/// What a folder keeps of a rack starts with this: one name a rack file, so that two racks of the same name in
+/// different folders share nothing.
+std::string stateName(const std::string& folder, const description::Rack& rack);
+std::string journalPath(const std::string& folder, const description::Rack& rack);
+
 std::string text(const description::RelayRef& relay);  ///< "relays1/3"
 
 }  // namespace shuntwright::rack

@@ -51,22 +51,9 @@ std::string lockFolder() {
   return std::filesystem::is_directory("/run/lock") ? "/run/lock/shuntwright" : "/tmp/shuntwright-lock";
 }
 
-namespace {
-
-/// One name a rack file: two racks of the same name in different folders do not share a journal.
-std::string stateName(const description::Rack& rack) {
-  std::error_code ec;
-  const auto path = std::filesystem::weakly_canonical(rack.file, ec).string();
-  char hash[24];
-  std::snprintf(hash, sizeof hash, "-%08zx", std::hash<std::string>{}(path) & 0xffffffffu);
-  return stateFolder() + "/" + rack.name + hash;
-}
-
-}  // namespace
-
-std::string journalPath(const description::Rack& rack) { return stateName(rack) + ".relays"; }
-std::string openAllPath(const description::Rack& rack) { return stateName(rack) + ".open-all"; }
-std::string calibrationPath(const description::Rack& rack) { return stateName(rack) + ".calibration.json"; }
+std::string journalPath(const description::Rack& rack) { return rack::journalPath(stateFolder(), rack); }
+std::string openAllPath(const description::Rack& rack) { return rack::stateName(stateFolder(), rack) + ".open-all"; }
+std::string calibrationPath(const description::Rack& rack) { return rack::stateName(stateFolder(), rack) + ".calibration.json"; }
 
 bool isReplay(const BenchOptions& options, const description::Rack& rack) {
   const auto traced = [](const auto& device) { return device.port.kind == description::Port::Kind::replay; };

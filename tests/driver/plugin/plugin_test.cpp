@@ -169,6 +169,53 @@ TEST_F(PluginTest, misuseIsAnErrorAndNoCrash) {
   api->close(nullptr);
 }
 
+TEST_F(PluginTest, aCalibrationIsCancelledFromItsProgressAndTheSessionGoesOn) {
+  makeTrace(test::shippedRack("small_bench.toml"));
+  const shuntwright_table* api = shuntwright_plugin_table(SHUNTWRIGHT_ABI_VERSION);
+  shuntwright_open_options options{};
+  options.struct_size = sizeof options;
+  options.isolated = 1;
+  const std::string rack = rackFile();
+  options.rack_file = rack.c_str();
+  options.replay_file = trace_.c_str();
+  struct Host {
+    const shuntwright_table* api;
+    shuntwright_session* session = nullptr;
+    int told = 0;
+  } host{api};
+  ASSERT_EQ(api->open(&options, &host.session), SHUNTWRIGHT_OK) << api->last_error(host.session);
+  EXPECT_EQ(api->cancel(host.session), SHUNTWRIGHT_OK) << "nothing is under way, nothing happens";
+  const auto stopAtTheThird = [](void* user, const shuntwright_progress*) {
+    auto* h = static_cast<Host*>(user);
+    if (++h->told == 3) h->api->cancel(h->session);
+  };
+  const char* record = nullptr;
+  EXPECT_EQ(api->calibrate(host.session, stopAtTheThird, &host, &record), SHUNTWRIGHT_CANCELLED);
+  EXPECT_EQ(record, nullptr) << "half a calibration is none";
+  EXPECT_EQ(host.told, 3);
+  uint32_t count = 0;
+  EXPECT_EQ(api->channel_count(host.session, &count), SHUNTWRIGHT_OK) << "the session lives on";
+  EXPECT_EQ(api->cancel(nullptr), SHUNTWRIGHT_BAD_USE);
+  api->close(host.session);
+}
+
+TEST_F(PluginTest, oneSymbolIsExported) {
+  const std::string command = std::string("nm -D --defined-only ") + SHUNTWRIGHT_BIN_DIR + "/shuntwright-plugin.so";
+  std::string symbols;
+  FILE* pipe = ::popen(command.c_str(), "r");
+  ASSERT_NE(pipe, nullptr);
+  char buffer[4096];
+  while (const std::size_t got = std::fread(buffer, 1, sizeof buffer, pipe)) symbols.append(buffer, got);
+  ASSERT_EQ(::pclose(pipe), 0);
+  // Sanitizers bring their own.
+  std::istringstream lines(symbols);
+  std::string address, type, name, ours;
+  while (lines >> address >> type >> name) {
+    if (name.find("asan") == std::string::npos && name.find("ubsan") == std::string::npos) ours += name + " ";
+  }
+  EXPECT_EQ(ours, "shuntwright_plugin_table ");
+}
+
 TEST_F(PluginTest, withoutTheConfirmationNothingIsShunted) {
   makeTrace(test::shippedRack("small_bench.toml"));
   const shuntwright_table* api = shuntwright_plugin_table(SHUNTWRIGHT_ABI_VERSION);

@@ -149,6 +149,14 @@ TEST_F(RelayGuardTest, aWeldedRelayIsNamedAndStaysInTheBook) {
   EXPECT_EQ(journal_.unresolved(), guard_.maybeClosed());
 }
 
+TEST_F(RelayGuardTest, aCancellationStaysOneThoughARelayDoesNotOpen) {
+  board_.welded.insert(2);
+  const auto done = run([this] { return closeTwoAndWait(&guard_, permit(), &clock_); }, 2);
+  ASSERT_TRUE(thrown_) << "a calibration cut short must not look like one that ended";
+  EXPECT_FALSE(done.has_value());
+  EXPECT_TRUE(guard_.maybeClosed().contains({"relays1", 2}));
+}
+
 TEST_F(RelayGuardTest, aRelayThatDoesNotCloseIsAnErrorWithReadBack) {
   board_.dead = {2};
   auto done = run([this] { return closeTwoAndWait(&guard_, permit(), &clock_); });
