@@ -11,11 +11,15 @@
 #include <boost/asio/io_context.hpp>
 #include <boost/asio/post.hpp>
 #include <boost/system/system_error.hpp>
+#include <atomic>
 #include <chrono>
+#include <condition_variable>
+#include <deque>
 #include <exception>
 #include <future>
 #include <limits>
 #include <map>
+#include <mutex>
 #include <thread>
 
 #include "driver/calibration/record_json.h"
@@ -68,14 +72,7 @@ struct Session::Thread {
   bool running = false;
   std::future<Result<void>> acquisition;
 
-  // Samples on their way to the host.
-  std::mutex mutex;
-  std::condition_variable arrived;
-  std::condition_variable taken;
-  std::deque<std::unique_ptr<Block>> queue;
-  std::map<std::string, std::size_t> queuedFrames;
-  std::map<std::string, std::uint64_t> dropped;
-  std::optional<Error> acquisitionError;
+  BlockQueue blocks;
 
   void run() {
     if (!virtualClock) {
@@ -95,12 +92,7 @@ struct Session::Thread {
   }
 
   /// In virtual time nothing is dropped: the thread waits until the host has read.
-  bool hold() {
-    std::unique_lock lock(mutex);
-    if (queue.size() < 64 || stopWanted || ending) return false;
-    taken.wait_for(lock, std::chrono::milliseconds(20));
-    return true;
-  }
+  bool hold() { return !stopWanted && !ending && blocks.waitForRoom(); }
 
   std::atomic<int> pending{0};
   asio::cancellation_signal abort;  ///< of calibrations; used on the thread only, like the next
@@ -143,34 +135,9 @@ struct Session::Thread {
     }
     block->lost = block->samples.lostBefore;
     const double rate_Hz = rack::LiveRack::rateOf(*rack.device(device)).in(units::hertz);
-    const std::lock_guard lock(mutex);
-    block->lost += std::exchange(dropped[device], 0);
-    queuedFrames[device] += block->samples.frames();
-    queue.push_back(std::move(block));
-    if (!virtualClock) dropOldest(device, static_cast<std::size_t>(kQueuedSeconds * rate_Hz));
-    arrived.notify_all();
-  }
-
-  /// Keeps at most ten seconds of a device's samples; what is dropped is counted in the next block.
-  void dropOldest(const std::string& device, std::size_t most) {
-    auto it = queue.begin();
-    while (queuedFrames[device] > most && it != queue.end()) {
-      if ((*it)->device != device) {
-        ++it;
-        continue;
-      }
-      const std::size_t frames = (*it)->samples.frames();
-      queuedFrames[device] -= frames;
-      std::uint64_t gone = frames + (*it)->lost;
-      it = queue.erase(it);
-      for (auto next = it; next != queue.end(); ++next) {
-        if ((*next)->device != device) continue;
-        (*next)->lost += gone;
-        gone = 0;
-        break;
-      }
-      dropped[device] += gone;
-    }
+    const bool keepAll = virtualClock != nullptr;
+    blocks.push(std::move(block), keepAll ? std::numeric_limits<std::size_t>::max()
+                                          : static_cast<std::size_t>(kQueuedSeconds * rate_Hz));
   }
 };
 
@@ -340,22 +307,14 @@ Result<void> Session::start() {
   if (!permit) return std::unexpected(std::move(permit.error()));
   Thread* t = thread_.get();
   t->stopWanted = false;
-  {
-    const std::lock_guard lock(t->mutex);
-    t->queue.clear();
-    t->queuedFrames.clear();
-    t->dropped.clear();
-    t->acquisitionError.reset();
-  }
+  t->blocks.clear();
   struct Acquire {
     static Task<Result<void>> run(Thread* thread, rack::LoadPathPermit permit) {
       rack::AcquisitionSink sink;
       sink.block = [thread](const std::string& device, device::SampleBlock& block) { thread->push(device, block); };
       const std::function<bool()> stop = [thread] { return thread->stopWanted.load(); };
       auto done = co_await rack::acquire(*thread->live, permit, sink, stop);
-      const std::lock_guard lock(thread->mutex);
-      if (!done) thread->acquisitionError = done.error();
-      thread->arrived.notify_all();
+      if (!done) thread->blocks.end(done.error());
       co_return done;
     }
   };
@@ -364,29 +323,20 @@ Result<void> Session::start() {
   return {};
 }
 
-Result<Session::Block*> Session::next(std::uint32_t timeout_ms) {
+Result<Block*> Session::next(std::uint32_t timeout_ms) {
   if (!thread_ || !thread_->live) return std::unexpected(notOpen());
   if (!thread_->running) return fail(ErrorCode::bad_use, "no samples are being read", {}, "call start first");
   if (current_ && current_->taken < current_->samples.frames()) return current_.get();
-  Thread& t = *thread_;
-  std::unique_lock lock(t.mutex);
-  t.arrived.wait_for(lock, std::chrono::milliseconds(timeout_ms),
-                     [&t] { return !t.queue.empty() || t.acquisitionError.has_value(); });
-  if (t.queue.empty()) {
-    if (t.acquisitionError) return std::unexpected(*t.acquisitionError);
-    return fail(ErrorCode::timeout, "no samples came in time");
-  }
-  current_ = std::move(t.queue.front());
-  t.queue.pop_front();
-  t.queuedFrames[current_->device] -= current_->samples.frames();
-  t.taken.notify_all();
+  auto block = thread_->blocks.take(std::chrono::milliseconds(timeout_ms));
+  if (!block) return std::unexpected(std::move(block.error()));
+  current_ = std::move(*block);
   return current_.get();
 }
 
 Result<void> Session::stop() {
   if (!thread_ || !thread_->running) return {};
   thread_->stopWanted = true;
-  thread_->taken.notify_all();
+  thread_->blocks.wake();
   auto done = thread_->acquisition.get();
   thread_->running = false;
   current_.reset();

@@ -1,20 +1,15 @@
 #pragma once
 
-#include <atomic>
-#include <condition_variable>
 #include <cstdint>
-#include <deque>
 #include <functional>
 #include <memory>
-#include <mutex>
 #include <optional>
 #include <string>
-#include <vector>
 
 #include "driver/calibration/calibrate.h"
 #include "driver/correction/live_correction.h"
 #include "driver/description/rack.h"
-#include "driver/device/sample_block.h"
+#include "driver/plugin/block_queue.h"
 
 namespace shuntwright::plugin {
 
@@ -28,15 +23,6 @@ struct SessionOptions {
 /// holds between them.
 class Session {
  public:
-  /// Samples of one device, corrected.
-  struct Block {
-    std::string device;
-    device::SampleBlock samples;
-    std::vector<float> corrected;
-    std::uint64_t lost = 0;
-    std::size_t taken = 0;  ///< frames given to the host already
-  };
-
   explicit Session(SessionOptions options);
   ~Session();
 

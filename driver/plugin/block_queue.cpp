@@ -1,0 +1,78 @@
+#include "driver/plugin/block_queue.h"
+
+#include <utility>
+
+namespace shuntwright::plugin {
+
+namespace {
+constexpr std::size_t kMany = 64;
+}
+
+void BlockQueue::clear() {
+  const std::lock_guard lock(mutex_);
+  blocks_.clear();
+  frames_.clear();
+  dropped_.clear();
+  error_.reset();
+}
+
+void BlockQueue::push(std::unique_ptr<Block> block, std::size_t most) {
+  const std::string device = block->device;
+  const std::lock_guard lock(mutex_);
+  block->lost += std::exchange(dropped_[device], 0);
+  frames_[device] += block->samples.frames();
+  blocks_.push_back(std::move(block));
+  dropOldest(device, most);
+  arrived_.notify_all();
+}
+
+void BlockQueue::dropOldest(const std::string& device, std::size_t most) {
+  auto it = blocks_.begin();
+  while (frames_[device] > most && it != blocks_.end()) {
+    if ((*it)->device != device) {
+      ++it;
+      continue;
+    }
+    const std::size_t frames = (*it)->samples.frames();
+    frames_[device] -= frames;
+    std::uint64_t gone = frames + (*it)->lost;
+    it = blocks_.erase(it);
+    for (auto next = it; next != blocks_.end(); ++next) {
+      if ((*next)->device != device) continue;
+      (*next)->lost += std::exchange(gone, 0);
+      break;
+    }
+    dropped_[device] += gone;
+  }
+}
+
+void BlockQueue::end(Error error) {
+  const std::lock_guard lock(mutex_);
+  error_ = std::move(error);
+  arrived_.notify_all();
+}
+
+Result<std::unique_ptr<Block>> BlockQueue::take(std::chrono::milliseconds timeout) {
+  std::unique_lock lock(mutex_);
+  arrived_.wait_for(lock, timeout, [this] { return !blocks_.empty() || error_.has_value(); });
+  if (blocks_.empty()) {
+    if (error_) return std::unexpected(*error_);
+    return fail(ErrorCode::timeout, "no samples came in time");
+  }
+  auto block = std::move(blocks_.front());
+  blocks_.pop_front();
+  frames_[block->device] -= block->samples.frames();
+  taken_.notify_all();
+  return block;
+}
+
+bool BlockQueue::waitForRoom() {
+  std::unique_lock lock(mutex_);
+  if (blocks_.size() < kMany) return false;
+  taken_.wait_for(lock, std::chrono::milliseconds(20));
+  return true;
+}
+
+void BlockQueue::wake() { taken_.notify_all(); }
+
+}  // namespace shuntwright::plugin
