@@ -26,20 +26,21 @@ class ShuntJudge {
 
   void judge() {
     if (readings_.relayError) {
-      find("relay-error", "the relay of shunt " + shunt_.name + " did not do as told", readings_.relayError->text());
+      find("relay-error", "the relay of shunt \"" + shunt_.name + "\" did not do as told",
+           readings_.relayError->text());
       return;
     }
     if (!samples()) return;
     if (!readings_.steady) {
-      find("not-steady", "the reading did not settle with shunt " + shunt_.name,
+      find("not-steady", "the reading did not settle with shunt \"" + shunt_.name + "\"",
            "still moving after " + number(seconds(shunt_.settling), 2) + " s");
     }
-    step();
-    repeats();
+    if (step()) repeats();
     const double back = microstrainOf(shunt_.returned - shunt_.before);
     if (back > limits_.zeroReturn.in(microstrain)) {
-      find("no-zero-return", "the reading does not come back after shunt " + shunt_.name,
-           "off by " + number(back, 1) + " microstrain, limit " + number(limits_.zeroReturn.in(microstrain), 1));
+      find("no-zero-return", "the reading does not come back after shunt \"" + shunt_.name + "\"",
+           "off by " + number(back, 1) + " microstrain, limit " +
+               number(limits_.zeroReturn.in(microstrain), 1));
     }
     const double noise = microstrainOf(shunt_.noise);
     if (noise > limits_.noise.in(microstrain)) {
@@ -66,7 +67,7 @@ class ShuntJudge {
       }
     }
     if (saturated > 0) {
-      find("saturated", "the input is over range with shunt " + shunt_.name,
+      find("saturated", "the input is over range with shunt \"" + shunt_.name + "\"",
            std::to_string(saturated) + " samples at full scale");
     }
     if (missing > 0) {
@@ -76,26 +77,35 @@ class ShuntJudge {
     return usable > 0 && saturated == 0;
   }
 
-  void step() {
+  /// Whether there is a step at all; the spread of one that is missing says nothing.
+  bool step() {
     const double measured = shunt_.measuredStep.in(volt_per_volt);
     const double predicted = shunt_.predictedStep.in(volt_per_volt);
     const double noise = shunt_.noise.in(volt_per_volt);
     const std::string evidence = "measured " + mVperV(shunt_.measuredStep) + ", predicted " + mVperV(shunt_.predictedStep);
     if (std::abs(measured) < std::max(0.1 * std::abs(predicted), 3 * noise)) {
-      find("step-missing", "closing the relay of shunt " + shunt_.name + " changes nothing", evidence);
-      return;
+      find("step-missing",
+           "closing the relay of shunt \"" + shunt_.name +
+               "\" changes nothing: a dead relay, relays swapped, or a shunt that is "
+               "not connected",
+           evidence);
+      return false;
     }
     if (measured * predicted < 0) {
-      find("wrong-sign", "the step of shunt " + shunt_.name + " has the wrong sign: another arm is shunted, or the "
-           "signal leads are swapped", evidence);
-      return;
+      find("wrong-sign",
+           "the step of shunt \"" + shunt_.name +
+               "\" has the wrong sign: another arm is shunted, or the "
+               "signal leads are swapped",
+           evidence);
+      return true;
     }
     const double deviation = measured / predicted - 1;
     if (std::abs(deviation) > limits_.spanDeviation.in(one)) {
-      find("span-deviates", "the step of shunt " + shunt_.name + " is out of limits",
-           evidence + ": " + number(100 * deviation, 2) + " %, limit " + number(limits_.spanDeviation.in(percent), 2) +
-               " %");
+      find("span-deviates", "the step of shunt \"" + shunt_.name + "\" is out of limits",
+           evidence + ": " + number(100 * deviation, 2) + " %, limit " +
+               number(limits_.spanDeviation.in(percent), 2) + " %");
     }
+    return true;
   }
 
   void repeats() {
@@ -103,7 +113,7 @@ class ShuntJudge {
     if (step <= 0) return;
     const double spread = shunt_.stepDeviation.in(volt_per_volt) / step;
     if (spread > limits_.repeatability.in(one)) {
-      find("not-repeatable", "repeated steps of shunt " + shunt_.name + " differ",
+      find("not-repeatable", "repeated steps of shunt \"" + shunt_.name + "\" differ",
            "standard deviation " + number(100 * spread, 2) + " %, limit " +
                number(limits_.repeatability.in(percent), 2) + " %");
     }

@@ -97,6 +97,16 @@ TEST_F(Analysis, aRelayThatWouldNotWorkDoesNotPullTheSpanOfTheOtherShunt) {
   EXPECT_GT(result.budget.expandedUncertainty_percent, 0);
 }
 
+TEST_F(Analysis, aStepThatIsMissingIsToldOnceAndItsSpreadNotAtAll) {
+  auto readings = ideal(channel("Q3"));
+  readings.shunts[0].closed = {windowAt(1s, 1e-9), windowAt(3s, 3e-9)};  // differ by more than their mean
+  const auto result = analyse(rack, channel("Q3"), readings);
+  EXPECT_TRUE(finds(result, "step-missing"));
+  EXPECT_FALSE(finds(result, "not-repeatable"));
+  EXPECT_NE(result.findings.front().message.find("shunt \"completion\""), std::string::npos)
+      << result.findings.front().message;
+}
+
 TEST_F(Analysis, aZeroWithoutSamplesIsNoZeroOfNought) {
   auto readings = ideal(channel("Q3"));
   readings.zero->samples = 0;
