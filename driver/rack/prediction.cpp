@@ -37,6 +37,11 @@ std::vector<ChannelPrediction> predict(const description::Rack& rack, descriptio
     ChannelPrediction prediction;
     prediction.name = channel.name;
     prediction.circuit = description::name(channel.circuit);
+    if (channel.transducer) {
+      prediction.transducer = true;
+      prediction.unit = channel.transducer->unit;
+      prediction.unitsPerStrain = channel.transducer->ratedValue;
+    }
     const bridge::Circuit circuit = bridge::circuitOf(rack, channel);
     if (auto zero = bridge::ratio(circuit, {}); !zero) {
       diagnostics.error(channel.place, "channel \"" + channel.name + "\" makes no bridge: " + zero.error().message,

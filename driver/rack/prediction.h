@@ -17,6 +17,9 @@ struct ShuntPrediction {
 struct ChannelPrediction {
   std::string name;
   std::string circuit;
+  bool transducer = false;
+  std::string unit = "microstrain";  ///< of what a shunt simulates
+  double unitsPerStrain = 1e6;  ///< simulated value = step.simulated x this (a transducer: its rated value)
   std::vector<ShuntPrediction> shunts;
 };
 

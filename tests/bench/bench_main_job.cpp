@@ -53,13 +53,18 @@ void calibrationBesideRealTime() {
     std::fputs(diagnostics.render(false).c_str(), stderr);
     return;
   }
+  const auto scenario = cli::demoScenario(*rack);
+  if (!scenario) {
+    std::fputs(scenario.error().text().c_str(), stderr);
+    return;
+  }
   std::vector<double> ratios;
   for (std::uint64_t seed = 1; seed <= 7; ++seed) {
     cli::DemoOptions options;
     options.seed = seed;
     double started = processor_s(), calibrated = 0;
     options.progress = [&](const calibration::Progress&) { calibrated = processor_s(); };
-    auto run = cli::runDemo(*rack, sim::Scenario{}, options);
+    auto run = cli::runDemo(*rack, *scenario, options);
     if (!run) {
       std::fputs(run.error().text().c_str(), stderr);
       return;

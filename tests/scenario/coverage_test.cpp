@@ -15,12 +15,14 @@ namespace {
 // is 0.065 %, and that of 240 channels scatters by less than a hundredth of a percent.
 TEST(HonestUncertainty, theTruthLiesInsideTheStatedIntervalAsOftenAsItSays) {
   const auto rack = test::shippedRack("gantry_beam.toml");
+  const auto scenario = cli::demoScenario(rack);
+  ASSERT_TRUE(scenario.has_value()) << scenario.error().text();
   std::vector<double> errors, before;
   int inside = 0;
   for (std::uint64_t seed = 1001; seed <= 1008; ++seed) {
     cli::DemoOptions options;
     options.seed = seed;
-    auto run = cli::runDemo(rack, sim::Scenario{}, options);
+    auto run = cli::runDemo(rack, *scenario, options);
     ASSERT_TRUE(run.has_value()) << run.error().text();
     EXPECT_TRUE(run->relaysOpen);
     EXPECT_EQ(run->lost, 0u);

@@ -40,7 +40,10 @@ json::object channelJson(const rack::ChannelPrediction& channel) {
     s["name"] = shunt.name;
     s["predicted_before_mV_per_V"] = shunt.step.before.in(millivolt_per_volt);
     s["predicted_step_mV_per_V"] = shunt.step.step.in(millivolt_per_volt);
-    s["simulated_microstrain"] = shunt.step.simulated.in(microstrain);
+    s["simulated_microstrain"] =
+        channel.transducer ? json::value(nullptr) : json::value(shunt.step.simulated.in(microstrain));
+    s["simulated_value"] = shunt.step.simulated.in(strain)*channel.unitsPerStrain;
+    s["simulated_unit"] = channel.unit;
     s["step_lead_percent_per_ohm"] = shunt.step.stepPercentPerOhm;
     s["strain_lead_percent_per_ohm"] = shunt.step.strainPercentPerOhm;
     s["carries_lead_loss"] = shunt.step.carriesLeadLoss;
@@ -100,15 +103,25 @@ class Check final : public Command {
   static void print(const Console& console, const std::vector<rack::ChannelPrediction>& channels) {
     if (channels.empty()) return;
     using A = Table::Align;
-    Table table({{"channel", A::left}, {"circuit", A::left}, {"shunt", A::left}, {"before mV/V"}, {"step mV/V"},
-                 {"simulates \xC2\xB5\xCE\xB5"}, {"step %/ohm"}, {"strain %/ohm"}, {"carries lead loss", A::left}});
+    Table table({{"channel", A::left},
+                 {"circuit", A::left},
+                 {"shunt", A::left},
+                 {"before mV/V"},
+                 {"step mV/V"},
+                 {"simulates"},
+                 {"unit", A::left},
+                 {"step %/ohm"},
+                 {"strain %/ohm"},
+                 {"carries lead loss", A::left}});
     for (const auto& channel : channels) {
       if (channel.shunts.empty()) table.row({channel.name, channel.circuit, "none"});
       for (const auto& shunt : channel.shunts) {
         const auto& s = shunt.step;
         table.row({channel.name, channel.circuit, shunt.name, fixed(s.before.in(millivolt_per_volt), 5),
-                   fixed(s.step.in(millivolt_per_volt), 6), fixed(s.simulated.in(microstrain), 1),
-                   fixed(s.stepPercentPerOhm, 4), fixed(s.strainPercentPerOhm, 4), s.carriesLeadLoss ? "yes" : "no"});
+                   fixed(s.step.in(millivolt_per_volt), 6),
+                   fixed(s.simulated.in(strain)*channel.unitsPerStrain, channel.transducer ? 3 : 1),
+                   channel.unit, fixed(s.stepPercentPerOhm, 4), fixed(s.strainPercentPerOhm, 4),
+                   s.carriesLeadLoss ? "yes" : "no"});
       }
     }
     table.print(console);

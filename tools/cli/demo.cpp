@@ -42,6 +42,8 @@ class Demo final : public Command {
   int run(const Console& console) override {
     auto rack = loadRackFor(console, profilesFolder() + "/racks/gantry_beam.toml");
     if (!rack) return kBadUse;
+    const auto scenario = demoScenario(*rack);
+    if (!scenario) return console.fail(scenario.error());
     DemoOptions options;
     options.seed = seed_;
     options.recordingPath = out_;
@@ -49,7 +51,7 @@ class Demo final : public Command {
       console.progress(static_cast<double>(p.windowsDone) / p.windowsPlanned, "calibrating " + p.channel);
     };
     const auto begun = std::chrono::steady_clock::now();
-    auto run = runDemo(*rack, sim::Scenario{}, options);
+    auto run = runDemo(*rack, *scenario, options);
     console.endProgress();
     if (!run) return console.fail(run.error());
     const double took_s = std::chrono::duration<double>(std::chrono::steady_clock::now() - begun).count();
@@ -84,7 +86,7 @@ class Demo final : public Command {
     }
     o["channels"] = std::move(channels);
     o["seed"] = seed_;
-    o["rows"] = run.rows;
+    o["rows"] = out_.empty() ? json::value(nullptr) : json::value(run.rows);
     o["lost"] = run.lost;
     o["simulated_s"] = run.simulated_s;
     console.out << json::serialize(o) << '\n';

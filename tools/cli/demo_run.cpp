@@ -12,10 +12,12 @@
 #include <map>
 
 #include "driver/calibration/zero.h"
+#include "driver/description/load.h"
 #include "driver/description/wiring.h"
 #include "driver/rack/live_rack.h"
 #include "driver/recording/load_steps.h"
 #include "sim/amplifier/bench.h"
+#include "sim/fault/scenario_file.h"
 #include "tools/cli/recording_session.h"
 #include "tools/simhost/serve.h"
 
@@ -180,6 +182,16 @@ struct Work {
 Task<void> work(Work* w) { w->outcome = co_await w->all(); }
 
 }  // namespace
+
+Result<sim::Scenario> demoScenario(const description::Rack& rack) {
+  const std::string file = profilesFolder() + "/racks/gantry_beam.sim.toml";
+  const auto text = description::diskReader()(file);
+  if (!text) return std::unexpected(Error{ErrorCode::bad_file, "the demo's scenario cannot be read", file});
+  description::Diagnostics diagnostics;
+  auto scenario = sim::parseScenario(*text, file, rack, diagnostics);
+  if (!diagnostics.ok()) return std::unexpected(Error{ErrorCode::bad_file, diagnostics.render(false), file});
+  return scenario;
+}
 
 Result<DemoRun> runDemo(const description::Rack& rack, const sim::Scenario& scenario, const DemoOptions& options) {
   asio::io_context context;

@@ -44,6 +44,10 @@ struct DemoRun {
   bool relaysOpen = false;  ///< as the simulator's own relays say
 };
 
+/// The specimen behind the shipped gantry beam: `racks/gantry_beam.sim.toml`, the file that `shuntwright-sim` reads.
+/// Errors: bad_file, with every mistake in it.
+Result<sim::Scenario> demoScenario(const description::Rack& rack);
+
 /// Calibrates a rack on the simulator, waits, runs the load programme, records it, and compares with the truth;
 /// all in virtual time and in one thread. Errors: those of what it runs.
 Result<DemoRun> runDemo(const description::Rack& rack, const sim::Scenario& scenario, const DemoOptions& options);

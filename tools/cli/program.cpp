@@ -1,6 +1,11 @@
 #include <CLI/CLI.hpp>
+#include <algorithm>
 #include <exception>
+#include <ostream>
+#include <string>
+#include <string_view>
 
+#include "driver/description/toml_reader.h"
 #include "tools/cli/command.h"
 
 namespace shuntwright::cli {
@@ -33,6 +38,15 @@ int runProgram(int argc, char** argv) {
     sub->add_flag("--json", console.json, "One JSON document on standard output");
     command->configure(*sub);
     sub->callback([&chosen, one = command.get()] { chosen = one; });
+  }
+  // The parser itself would only say that a command is needed.
+  const std::string first = argc > 1 ? argv[1] : "";
+  std::vector<std::string> names;
+  for (const auto& command : commands) names.push_back(command->name());
+  if (!first.empty() && first.front() != '-' && std::find(names.begin(), names.end(), first) == names.end()) {
+    const std::vector<std::string_view> known(names.begin(), names.end());
+    return console.fail(Error(ErrorCode::bad_use, "there is no command \"" + first + '"', {},
+                              description::suggestion(first, known)));
   }
   try {
     app.parse(argc, argv);

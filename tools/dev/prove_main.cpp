@@ -22,13 +22,18 @@ double medianOf(std::vector<double> values) {
 /// The demo pooled over fixed seeds: channels inside their stated expanded uncertainty as often as it says, and
 /// a median error of at most 0.1 % of the chain.
 int demoCampaign(const description::Rack& rack, int first, int seeds, bool json) {
+  const auto scenario = cli::demoScenario(rack);
+  if (!scenario) {
+    std::cerr << scenario.error().text() << '\n';
+    return cli::kBadUse;
+  }
   std::vector<double> before, after, scaled;
   std::map<std::string, std::pair<int, int>> byChannel;  // inside, all
   int inside = 0, total = 0, failed = 0, withFactor = 0;
   for (int seed = first; seed < first + seeds; ++seed) {
     cli::DemoOptions options;
     options.seed = static_cast<std::uint64_t>(seed);
-    auto run = cli::runDemo(rack, sim::Scenario{}, options);
+    auto run = cli::runDemo(rack, *scenario, options);
     if (!run) {
       std::cerr << "seed " << seed << ": " << run.error().text() << '\n';
       return cli::kDeviceFailure;
