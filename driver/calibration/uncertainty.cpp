@@ -1,7 +1,6 @@
 #include "driver/calibration/uncertainty.h"
 
 #include <cmath>
-#include <numbers>
 
 #include "driver/calibration/measurement_model.h"
 #include "driver/metrology/first_order.h"
@@ -14,6 +13,7 @@ using description::Rack;
 using description::Unbalance;
 using metrology::normal;
 using metrology::rectangular;
+using metrology::triangular;
 
 namespace {
 
@@ -61,9 +61,9 @@ Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, co
   addRelative("noise and repeats of the steps", normal(0, 100 * scatter.stepRelative, scatter.stepDegrees));
   const double step = std::abs(scatter.smallestStep.in(volt_per_volt));
   if (step > 0) {
-    // Two readings a step, each off by at most half a digit.
-    const double digits = 0.5 * scatter.resolution.in(volt_per_volt)*std::numbers::sqrt2;
-    addRelative("resolution of the readings", rectangular(0, 100 * digits / step));
+    // Two readings a step, each off by at most half a digit: together a triangle of a whole one.
+    const double digit = scatter.resolution.in(volt_per_volt);
+    addRelative("resolution of the readings", triangular(0, 100 * digit / step));
   }
   return std::move(inputs).model(
       1, [readings, nominal = *nominal](const ChannelModel& model, std::span<double> y) -> Result<void> {
