@@ -1,0 +1,132 @@
+#include "driver/calibration/foresight.h"
+
+#include <algorithm>
+#include <cmath>
+#include <functional>
+#include <memory>
+#include <vector>
+
+#include "driver/calibration/channel_model.h"
+#include "driver/calibration/uncertainty.h"
+
+namespace shuntwright::calibration {
+
+using namespace units;
+using description::Channel;
+using description::Rack;
+
+namespace {
+
+constexpr Fraction kMeasuredGauge = 0.02 * percent, kCertified = 0.01 * percent;
+constexpr Resistance kMeasuredLead = 20.0 * milliohm;
+constexpr double kWorthwhile = 0.9;  ///< of the uncertainty as it is
+
+Result<Budget> budgetOf(const Rack& rack, const Channel& channel) {
+  auto prediction = predictScale(modelWithLeads(rack, channel), Ratio());
+  if (!prediction) return std::unexpected(std::move(prediction.error()));
+  ScaleReadings readings;
+  readings.measured = prediction->steps;
+  readings.scatter.resolution = rack.device(channel.device)->profile->inputs->resolution;
+  for (const Ratio step : readings.measured) {
+    const Ratio size = std::abs(step.in(volt_per_volt)) * volt_per_volt;
+    readings.scatter.smallestStep =
+        readings.scatter.smallestStep == Ratio() ? size : std::min(readings.scatter.smallestStep, size);
+  }
+  return scaleBudget(rack, channel, readings);
+}
+
+/// Something that somebody could do about a channel; false when it is done already.
+struct Remedy {
+  const char* what;
+  std::function<bool(Rack&, Channel&)> apply;
+};
+
+bool measureGauge(Rack& rack, Channel& channel) {
+  if (channel.transducer || channel.measuredResistance) return false;
+  channel.measuredResistance = description::Toleranced{rack.gaugeOf(channel).resistance.value, kMeasuredGauge};
+  return true;
+}
+
+bool certifyShunts(Rack& rack, Channel& channel) {
+  bool any = false;
+  for (const auto& shunt : channel.shunts) {
+    auto& resistor = rack.resistors.at(shunt.resistor);
+    const auto known = resistor.expandedUncertainty > Fraction() ? resistor.expandedUncertainty : resistor.tolerance;
+    if (known <= kCertified) continue;
+    resistor.expandedUncertainty = kCertified;
+    resistor.coverageFactor = 2;
+    any = true;
+  }
+  return any;
+}
+
+bool measureLeads(Rack&, Channel& channel) {
+  bool any = false;
+  for (auto& [terminal, lead] : channel.leads) {
+    if (lead.resistance <= Resistance() || lead.resistance.in(ohm) * lead.tolerance.in(one) <= kMeasuredLead.in(ohm)) continue;
+    lead.tolerance = kMeasuredLead.in(ohm) / lead.resistance.in(ohm) * one;
+    any = true;
+  }
+  return any;
+}
+
+bool measureTemperature(Rack&, Channel& channel) {
+  bool any = false;
+  for (auto& [terminal, lead] : channel.leads) {
+    if (lead.temperatureTolerance <= 1.0 * kelvin) continue;
+    lead.temperatureTolerance = 1.0 * kelvin;
+    any = true;
+  }
+  return any;
+}
+
+bool betterCompletion(Rack& rack, Channel& channel) {
+  const auto device = std::find_if(rack.devices.begin(), rack.devices.end(),
+                                   [&](const auto& d) { return d.name == channel.device; });
+  auto profile = std::make_shared<description::Profile>(*device->profile);
+  bool any = false;
+  for (auto& offered : profile->inputs->completions) {
+    if (!channel.completion || offered.value != *channel.completion || offered.tolerance <= kCertified) continue;
+    offered.tolerance = kCertified;
+    any = true;
+  }
+  device->profile = profile;
+  return any;
+}
+
+}  // namespace
+
+Result<Foresight> foresee(const Rack& rack, const Channel& channel) {
+  if (channel.shunts.empty()) {
+    return fail(ErrorCode::bad_use, "channel " + channel.name + " has no shunt", channel.place.text());
+  }
+  auto budget = budgetOf(rack, channel);
+  if (!budget) return std::unexpected(std::move(budget.error()));
+  Foresight out;
+  out.budget = std::move(*budget);
+  const auto largest = std::max_element(out.budget.lines.begin(), out.budget.lines.end(), [](const auto& a, const auto& b) {
+    return a.contribution_percent < b.contribution_percent;
+  });
+  if (largest != out.budget.lines.end()) out.largest = largest->quantity;
+
+  static const std::vector<Remedy> remedies{
+      {"measure the gauge resistance to 0.02 %", measureGauge},
+      {"have the shunt resistor certified to 0.01 %", certifyShunts},
+      {"measure each lead to 20 mohm", measureLeads},
+      {"know the leads' temperature to 1 K", measureTemperature},
+      {"use a completion resistor of 0.01 %", betterCompletion},
+  };
+  double best = kWorthwhile * out.budget.expandedUncertainty_percent;
+  for (const Remedy& remedy : remedies) {
+    Rack better = rack;
+    Channel changed = channel;
+    if (!remedy.apply(better, changed)) continue;
+    auto then = budgetOf(better, changed);
+    if (!then || then->expandedUncertainty_percent >= best) continue;
+    best = then->expandedUncertainty_percent;
+    out.advice = Advice{remedy.what, best};
+  }
+  return out;
+}
+
+}  // namespace shuntwright::calibration
