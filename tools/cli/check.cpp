@@ -4,6 +4,7 @@
 #include <boost/json/serialize.hpp>
 #include <ostream>
 
+#include "driver/calibration/foresight.h"
 #include "driver/description/load.h"
 #include "driver/rack/prediction.h"
 #include "tools/cli/command.h"
@@ -62,6 +63,7 @@ class Check final : public Command {
   std::string example() const override { return "shuntwright check profiles/racks/gantry_beam.toml"; }
   void configure(CLI::App& app) override {
     app.add_option("FILE", files_, "Profiles and racks (TOML)")->required();
+    app.add_flag("--budget", budget_, "Show the uncertainty that each channel will reach and what limits it");
   }
 
   int run(const Console& console) override {
@@ -81,6 +83,7 @@ class Check final : public Command {
       auto rack = description::loadRack(file, read, diagnostics);
       if (!rack) continue;
       auto predicted = rack::predict(*rack, diagnostics);
+      if (budget_) foreseeAll(*rack, diagnostics);
       std::move(predicted.begin(), predicted.end(), std::back_inserter(channels));
     }
     if (console.json) {
@@ -88,12 +91,17 @@ class Check final : public Command {
       o["ok"] = diagnostics.ok();
       o["problems"] = problemsJson(diagnostics);
       json::array list;
-      for (const auto& channel : channels) list.push_back(channelJson(channel));
+      for (const auto& channel : channels) {
+        json::object one = channelJson(channel);
+        if (budget_) one["budget"] = foresightJson(channel.name);
+        list.push_back(std::move(one));
+      }
       o["channels"] = std::move(list);
       console.out << json::serialize(o) << '\n';
     } else {
       console.err << diagnostics.render(console.colour && console.errIsTerminal);
       print(console, channels);
+      printForesights(console);
       if (diagnostics.ok()) console.out << console.good("ok") << '\n';
     }
     return diagnostics.ok() ? kPassed : kBadUse;
@@ -127,7 +135,49 @@ class Check final : public Command {
     table.print(console);
   }
 
+  void foreseeAll(const description::Rack& rack, description::Diagnostics& diagnostics) {
+    for (const auto& channel : rack.channels) {
+      if (channel.shunts.empty()) continue;
+      if (auto foreseen = calibration::foresee(rack, channel)) {
+        foresights_.emplace_back(channel.name, std::move(*foreseen));
+      } else {
+        diagnostics.error(channel.place, "no budget for channel \"" + channel.name + "\": " + foreseen.error().message,
+                          foreseen.error().remedy);
+      }
+    }
+  }
+
+  json::value foresightJson(const std::string& channel) const {
+    for (const auto& [name, foreseen] : foresights_) {
+      if (name != channel) continue;
+      json::object o;
+      o["expanded_uncertainty_percent"] = foreseen.budget.expandedUncertainty_percent;
+      o["coverage_factor"] = foreseen.budget.coverageFactor;
+      o["largest_input"] = foreseen.largest;
+      o["advice"] = foreseen.advice ? json::value(foreseen.advice->what) : json::value(nullptr);
+      o["expanded_uncertainty_then_percent"] =
+          foreseen.advice ? json::value(foreseen.advice->to_percent) : json::value(nullptr);
+      return o;
+    }
+    return nullptr;
+  }
+
+  void printForesights(const Console& console) const {
+    if (foresights_.empty()) return;
+    using A = Table::Align;
+    console.out << "\nUncertainty to come (95.45 %, of the scale, without the readings' noise)\n";
+    Table table({{"channel", A::left}, {"U %"}, {"limited by", A::left}, {"what would narrow it most", A::left}, {"to %"}});
+    for (const auto& [name, foreseen] : foresights_) {
+      table.row({name, fixed(foreseen.budget.expandedUncertainty_percent, 3), foreseen.largest,
+                 foreseen.advice ? foreseen.advice->what : "nothing by itself",
+                 foreseen.advice ? fixed(foreseen.advice->to_percent, 3) : ""});
+    }
+    table.print(console);
+  }
+
   std::vector<std::string> files_;
+  bool budget_ = false;
+  std::vector<std::pair<std::string, calibration::Foresight>> foresights_;
 };
 
 }  // namespace

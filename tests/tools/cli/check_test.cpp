@@ -144,4 +144,27 @@ TEST_F(Check, mistakesOfMeaningAreAllToldInOneRun) {
   EXPECT_NE(ran.out.find("^"), std::string::npos) << "a caret under the place";
 }
 
+TEST_F(Check, theBudgetToComeNamesWhatLimitsItAndWhatWouldHelp) {
+  const Ran text = run("check --budget " + kRacks + "gantry_beam.toml");
+  EXPECT_EQ(text.code, 0);
+  EXPECT_NE(text.out.find("lead COMP"), std::string::npos) << "long leads in badly measured trays";
+  EXPECT_NE(text.out.find("measure each lead"), std::string::npos);
+
+  const Ran ran = run("check --json --budget " + kRacks + "gantry_beam.toml");
+  ASSERT_EQ(ran.code, 0);
+  const json::value document = json::parse(ran.out);
+  for (const auto& channel : document.at("channels").as_array()) {
+    if (channel.at("shunts").as_array().empty()) {
+      EXPECT_TRUE(channel.at("budget").is_null());
+      continue;
+    }
+    const auto& budget = channel.at("budget");
+    const double now = budget.at("expanded_uncertainty_percent").to_number<double>();
+    EXPECT_GT(now, 0);
+    if (!budget.at("advice").is_null()) {
+      EXPECT_LT(budget.at("expanded_uncertainty_then_percent").to_number<double>(), 0.9 * now);
+    }
+  }
+}
+
 }  // namespace
