@@ -54,6 +54,7 @@ class ChannelReader {
     reader_.take("load_control", channel_.loadControl);
     reader_.take("expected", channel_.expected, {"0 microstrain", "200000 microstrain"});
     reader_.take("group", channel_.group);
+    readChannelEffects(reader_, channel_);
     // Leads and shunts are judged by the circuit; with that unknown, every remark would be a guess.
     const TomlEntry* leads = reader_.neededEntry("leads", "{ length = \"20 m\", awg = 26 }");
     if (leads && reader_.isA(TomlNode::Type::table, *leads) && circuitKnown)

@@ -40,7 +40,7 @@ constexpr UnitWord kFrequency[] = {{"Hz", 1}, {"kHz", 1e3}, {"MHz", 1e6}, {"1/s"
 constexpr UnitWord kArea[] = {
     {"mm2", 1e-6}, {"cm2", 1e-4}, {"m2", 1}, {"mm\u00B2", 1e-6, true}, {"mm^2", 1e-6, true}};
 constexpr UnitWord kDifference[] = {{"K", 1}, {"mK", 1e-3}};
-constexpr UnitWord kCoefficient[] = {{"ppm/K", 1e-6}, {"%/K", 1e-2}, {"1/K", 1, true}, {"/K", 1, true}};
+constexpr UnitWord kCoefficient[] = {{"ppm/K", 1e-6}, {"%/K", 1e-2}, {"%/100K", 1e-4, true}, {"1/K", 1, true}, {"/K", 1, true}};
 constexpr UnitWord kDuration[] = {{"s", 1},         {"ms", 1e-3}, {"us", 1e-6},
                                   {"ns", 1e-9},     {"min", 60},  {"\u00B5s", 1e-6, true},
                                   {"h", 3600, true}};

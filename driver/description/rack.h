@@ -11,6 +11,8 @@
 #include "driver/core/clock.h"
 #include "driver/core/error.h"
 #include "driver/description/profile.h"
+#include "driver/description/rosette.h"
+#include "driver/description/thermal_output.h"
 #include "driver/description/wiring.h"
 #include "driver/units/units.h"
 
@@ -43,6 +45,11 @@ struct GaugeSheet {
   Toleranced resistance{120.0 * units::ohm, 0.3 * units::percent};
   std::optional<units::Area> gridArea;
   std::string specimen;  ///< what it is bonded to, for the heating warning: "steel", "aluminium", ...
+  std::optional<ThermalOutput> thermalOutput;
+  units::TemperatureCoefficient factorSlope;  ///< relative change of the factor per kelvin
+  units::Temperature factorTemperature = units::Temperature::celsius(24);  ///< where `factor` holds
+  std::optional<units::Fraction> transverseSensitivity;
+  double transversePoisson = 0.285;           ///< of the bar on which the maker found the factor
 };
 
 /// A precision resistor that relays switch.
@@ -125,6 +132,10 @@ struct Channel {
   Unbalance unbalance = Unbalance::unknown;
   bool loadControl = false;                  ///< feeds a controller: a shunt on it moves the actuator
   std::optional<units::Strain> expected;     ///< largest strain expected in the test
+  std::string temperature;                   ///< channel that shows the gauge's temperature; empty: none
+  /// Of the gauge when the zero was taken; none: what the temperature channel showed then.
+  std::optional<units::Temperature> zeroTemperature;
+  std::optional<double> fieldRatio;          ///< strain across the grid over strain along it, where it is known
   std::string group;                         ///< free text: "rosette R1", "mid-span"
   std::vector<Shunt> shunts;                 ///< may be empty: the channel is recorded, not calibrated
 };
@@ -154,6 +165,8 @@ struct Rack {
   std::map<std::string, GaugeSheet> gauges;
   std::map<std::string, Resistor> resistors;
   std::vector<Channel> channels;
+  std::vector<Rosette> rosettes;
+  std::vector<Pair> pairs;
   Limits limits;
   CalibrationSettings calibration;
 

@@ -50,6 +50,7 @@ class RackReader {
     if (const TomlNode* limits = root_.table("limits")) readLimits(*limits);
     if (const TomlNode* calibration = root_.table("calibration")) readCalibration(*calibration);
     readChannels();
+    readSpots(root_, rack_, diagnostics_);
     root_.finish();
     if (!root_.has("device"))
       diagnostics_.error(root_.place(), "the rack has no devices",
@@ -209,6 +210,7 @@ class RackReader {
     reader.take("resistance_tolerance", out.resistance.tolerance, {"0 %", "10 %"});
     reader.take("grid_area", out.gridArea, {"0.01 mm2", "10000 mm2"});
     reader.take("specimen", out.specimen);
+    readGaugeEffects(reader, out, diagnostics_);
     reader.finish();
     rack_.gauges.emplace(out.name, std::move(out));
   }

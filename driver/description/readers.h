@@ -30,6 +30,16 @@ void readLeads(const TomlNode& table, const std::string& what, Channel& channel,
 Shunt readShunt(const TomlNode& table, std::size_t number, const Channel& channel, const Rack& rack,
                 Diagnostics& diagnostics);
 
+/// Keys of a gauge that matter behind its bridge: thermal output, slope of the factor, transverse sensitivity.
+void readGaugeEffects(TableReader& reader, GaugeSheet& gauge, Diagnostics& diagnostics);
+
+/// The same of a channel: temperature channel, temperature at zero, ratio of the strain field. That the channels
+/// it names exist is checked by readSpots.
+void readChannelEffects(TableReader& reader, Channel& channel);
+
+/// [[rosette]] and [[pair]] of a rack whose channels are known, and what its channels say of each other.
+void readSpots(TableReader& root, Rack& rack, Diagnostics& diagnostics);
+
 /// True when the entry stands in the file for this very thing and was not merged in from defaults.
 inline bool isOwn(const TomlEntry* entry) {
   return entry && !entry->inherited;

@@ -25,6 +25,15 @@ struct Rosette {
   double poisson = 0.3;  ///< of the specimen
 };
 
+/// Two gauges on opposite faces of a section.
+struct Pair {
+  Place place;
+  std::string name;
+  std::vector<std::string> channels;  ///< two
+  /// Distance of the first gauge to the neutral axis over the distance of both gauges.
+  double firstPart = 0.5;
+};
+
 inline std::size_t gaugesOf(RosetteLayout layout) {
   return layout == RosetteLayout::tee ? 2 : 3;
 }
