@@ -85,8 +85,13 @@ std::vector<Finding> rezero(Record& record, const description::Rack& rack, const
   record.zeroed = when;
   for (auto& result : record.channels) {
     const auto* channel = rack.channel(result.name);
-    if (!channel || isAbsolute(*channel)) continue;
+    if (!channel) continue;
     const auto found = zeros.find(result.name);
+    if (isAbsolute(*channel)) {
+      // Its correction stays, but what it shows now goes with the new zeros: a thermometer's gauges count from it.
+      if (found != zeros.end() && found->second.usable()) result.zero = found->second.mean;
+      continue;
+    }
     if (found == zeros.end() || !found->second.usable()) {
       findings.push_back({"zero-not-taken", result.name + ": no usable zero reading; that of the calibration stays",
                           found == zeros.end() ? "" : std::to_string(found->second.saturated) + " samples saturated, " +

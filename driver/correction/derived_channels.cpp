@@ -42,15 +42,16 @@ struct MechanicalStrain {
   mechanics::ThermalBehaviour behaviour;
   GaugeFactor used;
   Temperature zero;
-  double alongGrid = 1;  ///< factor for strain across the grid
+  TemperatureDifference thermometerError;  ///< by which it was off at the zero, where the rack knows better
+  double alongGrid = 1;                    ///< factor for strain across the grid
 
   float of(float shown, Instant now) const {
     Strain e = static_cast<double>(shown) * microstrain;
     if (thermometer) {
       const float t_C = thermometer->at(now);
       if (std::isnan(t_C)) return kNoValue;
-      e = mechanics::withoutThermalEffects(e, used, behaviour, Temperature::celsius(static_cast<double>(t_C)),
-                                           zero);
+      e = mechanics::withoutThermalEffects(
+          e, used, behaviour, Temperature::celsius(static_cast<double>(t_C)) + -thermometerError, zero);
     }
     return static_cast<float>((e * alongGrid).in(microstrain));
   }
@@ -184,7 +185,7 @@ class Planner {
     const auto own = find(channel.name);
     if (!own || (!thermal && !across)) return {};
     if (thermal) {
-      auto thermometer = thermometerOf(channel, strain.zero);
+      auto thermometer = thermometerOf(channel, strain);
       if (!thermometer) return std::unexpected(std::move(thermometer.error()));
       strain.thermometer = *thermometer;
     }
@@ -199,7 +200,7 @@ class Planner {
     return {};
   }
 
-  Result<Thermometer*> thermometerOf(const description::Channel& channel, Temperature& zero) {
+  Result<Thermometer*> thermometerOf(const description::Channel& channel, MechanicalStrain& strain) {
     const auto at = find(channel.temperature);
     const auto* result = record_.channel(channel.temperature);
     if (!at || !result) {
@@ -208,9 +209,10 @@ class Planner {
                   channel.place.text(), "record the device that it is on, and calibrate the whole rack");
     }
     // Both zeros were taken together, so what it showed then is the gauge's temperature at zero.
-    const double shown_C =
-        result->correction.strainAt(result->zero.in(volt_per_volt)) * result->unitsPerStrain;
-    zero = channel.zeroTemperature.value_or(Temperature::celsius(shown_C));
+    const auto shown = Temperature::celsius(result->correction.strainAt(result->zero.in(volt_per_volt)) *
+                                            result->unitsPerStrain);
+    strain.zero = channel.zeroTemperature.value_or(shown);
+    strain.thermometerError = shown - strain.zero;
     const auto [entry, first] =
         thermometers_.try_emplace(channel.temperature, Thermometer{at->device, at->column});
     if (first) devices_[at->device].thermometers.push_back(&entry->second);

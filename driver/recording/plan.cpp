@@ -1,9 +1,12 @@
 #include "driver/recording/plan.h"
 
+#include <limits>
+
 namespace shuntwright::recording {
 
 RecordingPlan planOf(const description::Rack& rack, const calibration::Record& record, std::string recordJson,
-                     const std::vector<correction::LiveCorrection>& corrections, Instant started) {
+                     const std::vector<correction::LiveCorrection>& corrections, Instant started,
+                     const correction::DerivedChannels& derived) {
   RecordingPlan plan;
   plan.software = "shuntwright " SHUNTWRIGHT_VERSION;
   plan.rackName = rack.name;
@@ -11,7 +14,8 @@ RecordingPlan planOf(const description::Rack& rack, const calibration::Record& r
   plan.calibrationId = record.id;
   plan.calibrationJson = std::move(recordJson);
   plan.started = started;
-  for (const auto& correction : corrections) {
+  for (std::size_t d = 0; d < corrections.size(); ++d) {
+    const auto& correction = corrections[d];
     const auto& described = *rack.device(correction.device());
     RecordedDevice device;
     device.name = correction.device();
@@ -24,6 +28,11 @@ RecordingPlan planOf(const description::Rack& rack, const calibration::Record& r
       if (column.channel.empty()) continue;
       device.channels.push_back({column.channel, column.unit, static_cast<int>(k), column.calibrated, column.map.p,
                                  column.map.q, column.map.w, column.unitsPerStrain});
+    }
+    constexpr double kNone = std::numeric_limits<double>::quiet_NaN();
+    auto place = static_cast<int>(columns.size());
+    for (const auto& column : derived.columns(d)) {
+      device.channels.push_back({column.name, column.unit, place++, column.calibrated, kNone, kNone, kNone});
     }
     plan.devices.push_back(std::move(device));
   }

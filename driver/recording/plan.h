@@ -6,12 +6,14 @@
 
 #include "driver/calibration/record.h"
 #include "driver/core/clock.h"
+#include "driver/correction/derived_channels.h"
 #include "driver/correction/live_correction.h"
 #include "driver/description/rack.h"
 
 namespace shuntwright::recording {
 
-/// One channel as it is kept: which input it was, its unit and the coefficients that join raw and corrected.
+/// One channel as it is kept: which input it was, its unit and the coefficients that join raw and corrected. A
+/// column that follows from others has no raw value of its own: its coefficients are NaN.
 struct RecordedChannel {
   std::string name;
   std::string unit;
@@ -43,6 +45,7 @@ struct RecordingPlan {
 
 /// The plan for a rack with this calibration in force. Errors: those of LiveCorrection.
 RecordingPlan planOf(const description::Rack& rack, const calibration::Record& record, std::string recordJson,
-                     const std::vector<correction::LiveCorrection>& corrections, Instant started);
+                     const std::vector<correction::LiveCorrection>& corrections, Instant started,
+                     const correction::DerivedChannels& derived = {});
 
 }  // namespace shuntwright::recording

@@ -72,6 +72,9 @@ struct Beam {
   double secondMoment_m4 = 4.6e-4;
   double poisson = 0.3;
   units::Area webArea = 6800.0 * units::square_millimetre;
+  units::Temperature temperature = units::Temperature::celsius(21);  ///< at the start of everything
+  units::TemperatureDifference warming = 2.0 * units::kelvin;        ///< by how much it will be warmer in the end
+  Nanoseconds warmingTime = std::chrono::seconds(900);               ///< time constant of that
 };
 
 struct Scenario {

@@ -62,6 +62,9 @@ class ScenarioReader {
     t.take("second_moment_m4", b.secondMoment_m4, {"1e-12", "1e3"});
     t.take("poisson", b.poisson, {"0", "0.5"});
     t.take("web_area", b.webArea, {"1 mm2", ""});
+    t.take("temperature", b.temperature, {"-200 degC", "500 degC"});
+    t.take("warming", b.warming, {"-300 K", "300 K"});
+    t.take("warming_time", b.warmingTime, {"1 s", "100 h"});
     t.finish();
   }
 

@@ -42,21 +42,56 @@ Specimen::Specimen(const description::Rack& rack, const Scenario& scenario, Rand
   for (const auto& channel : rack.channels) {
     const double share = random.uniform(0.8, 1.0);
     followers_[channel.name] = channel.expected ? share * channel.expected->in(strain) : share * 500e-6;
+    if (!channel.gauge.empty()) packets_[channel.name] = rack.gaugeOf(channel);
   }
 }
 
-double Specimen::strainOf(const description::Channel& channel, double loadTime_s, double time_s) const {
+Temperature Specimen::temperature(double time_s) const {
+  const double risen = 1 - std::exp(-std::max(0.0, time_s) / seconds(scenario_.beam.warmingTime));
+  return scenario_.beam.temperature + risen * scenario_.beam.warming;
+}
+
+double Specimen::loadStrainOf(const description::Channel& channel, double loadTime_s, double time_s) const {
   const double part = loadPart(scenario_, loadTime_s);
   if (channel.transducer) {
     const auto& sheet = *channel.transducer;
-    // A thermometer sees the hall warm up; anything else sees the load.
-    if (sheet.unit == "degC") return (21 + 2 * (1 - std::exp(-std::max(0.0, time_s) / 900))) / sheet.ratedValue;
+    // A thermometer sees the beam warm up; anything else sees the load.
+    if (sheet.unit == "degC") return temperature(time_s).celsius() / sheet.ratedValue;
     return part * scenario_.maxLoad.in(sheet.unit == "N" ? newton : kilonewton) / sheet.ratedValue;
   }
   if (const auto place = scenario_.places.find(channel.name); place != scenario_.places.end()) {
     return beamStrain(scenario_.beam, place->second, part * scenario_.maxLoad);
   }
   return part * followers_.at(channel.name);
+}
+
+double Specimen::strainOf(const description::Channel& channel, double loadTime_s, double time_s) const {
+  double seen = loadStrainOf(channel, loadTime_s, time_s);
+  const auto found = packets_.find(channel.name);
+  if (found == packets_.end()) return seen;
+  const auto& packet = found->second;
+  const auto kind = channel.circuit;
+  const bool single = kind == description::CircuitKind::quarter_2_wire || kind == description::CircuitKind::quarter_3_wire;
+  if (const auto place = scenario_.places.find(channel.name);
+      single && packet.transverseSensitivity && place != scenario_.places.end()) {
+    // dR/R = Ka e + Kq q, and the maker found K = Ka + Kq (-nu0) on his bar.
+    auto across = place->second;
+    across.angle_deg += 90;
+    const double q = beamStrain(scenario_.beam, across, loadPart(scenario_, loadTime_s) * scenario_.maxLoad);
+    const double axial = 1 / (1 - packet.transversePoisson * packet.transverseSensitivity->in(one));
+    seen = axial * seen + axial * packet.transverseSensitivity->in(one) * q;
+  }
+  const double now_C = temperature(time_s).celsius();
+  seen += seen * packet.factorSlope.in(per_kelvin) * (now_C - packet.factorTemperature.celsius());
+  if (packet.thermalOutput && (single || kind == description::CircuitKind::half_opposite)) {
+    double power = 1, microstrains = 0;
+    for (const double c : packet.thermalOutput->coefficients_microstrain) {
+      microstrains += c * power;
+      power *= now_C;
+    }
+    seen += 1e-6 * microstrains * packet.thermalOutput->factor.value() / packet.factor.value();
+  }
+  return seen;
 }
 
 }  // namespace shuntwright::sim

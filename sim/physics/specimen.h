@@ -1,5 +1,6 @@
 #pragma once
 
+#include <map>
 #include <string>
 
 #include "driver/core/clock.h"
@@ -18,10 +19,19 @@ double loadPart(const Scenario& scenario, double seconds);  ///< of the largest 
 /// transformation of plane strain: e(a) = e cos^2 a - nu e sin^2 a + g sin a cos a.
 double beamStrain(const Beam& beam, const GaugePlace& place, units::Force load);
 
-/// What a channel's gauge sees: strain, or the fraction of a transducer's rated value.
+/// What the beam does to the channels of a rack.
 class Specimen {
  public:
   Specimen(const description::Rack& rack, const Scenario& scenario, Random random);
+
+  units::Temperature temperature(double time_s) const;
+
+  /// The truth: strain along the grid that the load makes, or the fraction of a transducer's rated value.
+  double loadStrainOf(const description::Channel& channel, double loadTime_s, double time_s) const;
+
+  /// What the gauge answers with, as strain at its sheet's factor: beside the truth the strain across its grid, its
+  /// factor at the beam's temperature and, where its circuit does not cancel it, its thermal output. The packet's
+  /// figures are taken as true; the transverse effect is that of single gauges with a place on the beam.
   /// @param loadTime_s  since the load test began; negative: it has not
   /// @param time_s      since the start of everything
   double strainOf(const description::Channel& channel, double loadTime_s, double time_s) const;
@@ -29,6 +39,7 @@ class Specimen {
  private:
   const Scenario scenario_;
   std::map<std::string, double> followers_;  ///< channels without a place: strain at full load
+  std::map<std::string, description::GaugeSheet> packets_;  ///< by channel
 };
 
 }  // namespace shuntwright::sim

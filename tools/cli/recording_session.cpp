@@ -35,8 +35,21 @@ Result<std::unique_ptr<RecordingSession>> RecordingSession::begin(const descript
     session->liveIndex_.push_back(std::move(places));
     session->corrections_.push_back(std::move(*correction));
   }
+  auto derived = correction::DerivedChannels::of(rack, record, session->corrections_);
+  if (!derived) return std::unexpected(std::move(derived.error()));
+  session->derived_ = std::move(*derived);
+  for (std::size_t d = 0; d < session->corrections_.size(); ++d) {
+    for (const auto& column : session->derived_.columns(d)) {
+      session->liveIndex_[d].push_back(session->live_.size());
+      LiveValue value;
+      value.channel = column.name;
+      value.unit = column.unit;
+      value.calibrated = column.calibrated;
+      session->live_.push_back(std::move(value));
+    }
+  }
   if (path.empty()) return session;
-  auto plan = recording::planOf(rack, record, calibration::recordJson(record), session->corrections_, clock.now());
+  auto plan = recording::planOf(rack, record, calibration::recordJson(record), session->corrections_, clock.now(), session->derived_);
   auto recorder = recording::Recorder::create(path, std::move(plan));
   if (!recorder) return std::unexpected(std::move(recorder.error()));
   session->recorder_ = std::move(*recorder);
@@ -47,8 +60,14 @@ void RecordingSession::take(std::size_t index, device::SampleBlock& block) {
   if (failed_) return;
   corrected_.resize(block.ratio.size());
   corrections_[index].apply(block, corrected_);
+  if (!derived_.wants(index)) return keep(index, block, corrected_);
+  derived_.apply(index, block, corrected_, widened_, widenedValues_);
+  keep(index, widened_, widenedValues_);
+}
+
+void RecordingSession::keep(std::size_t index, const device::SampleBlock& block, const std::vector<float>& corrected) {
   if (recorder_) {
-    if (auto kept = recorder_->append(index, block, corrected_, clock_.now()); !kept) {
+    if (auto kept = recorder_->append(index, block, corrected, clock_.now()); !kept) {
       failed_ = std::move(kept.error());
       return;
     }
@@ -58,7 +77,7 @@ void RecordingSession::take(std::size_t index, device::SampleBlock& block) {
       const std::size_t at = liveIndex_[index][k];
       if (at == kNowhere) continue;
       LiveValue& shown = live_[at];
-      shown.value = corrected_[frame * block.inputs + k];
+      shown.value = corrected[frame * block.inputs + k];
       shown.ratio = block.at(frame, k);
       shown.flags = block.flagsAt(frame, k);
       if (onSample) onSample(at, block.time[frame], shown.ratio, shown.value, shown.flags);

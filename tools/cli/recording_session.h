@@ -7,6 +7,7 @@
 #include <string>
 #include <vector>
 
+#include "driver/correction/derived_channels.h"
 #include "driver/correction/live_correction.h"
 #include "driver/rack/acquisition.h"
 #include "driver/recording/recorder.h"
@@ -48,14 +49,17 @@ class RecordingSession {
  private:
   RecordingSession(Clock& clock) : clock_(clock) {}
   void take(std::size_t index, device::SampleBlock& block);
+  void keep(std::size_t index, const device::SampleBlock& block, const std::vector<float>& corrected);
 
   Clock& clock_;
   std::vector<correction::LiveCorrection> corrections_;
+  correction::DerivedChannels derived_;
   std::map<std::string, std::size_t> index_;
   std::vector<std::vector<std::size_t>> liveIndex_;  ///< per device and column: place in live_, or npos
   std::vector<LiveValue> live_;
   std::unique_ptr<recording::Recorder> recorder_;
-  std::vector<float> corrected_;
+  std::vector<float> corrected_, widenedValues_;
+  device::SampleBlock widened_;  ///< with the derived columns
   std::optional<Error> failed_;
   std::string trouble_;
 };

@@ -111,10 +111,11 @@ TEST(DerivedChannels, ThermalOutputIsTakenOut) {
   EXPECT_NEAR(bench.show(700 - 16.5, 0, 0, 50)[0], 683.5, 1e-3) << "the channel's own column stays";
 }
 
-// Zero at 30 degC by the rack's own word: P(50) - P(30) = 25 - 45 = -20.
+// 30 degC at zero by the rack's own word, where the thermometer showed 20: 50 shown are 60, P(60) - P(30) =
+// -45.
 TEST(DerivedChannels, ZeroTemperatureIsTheRacksWhenItIsGiven) {
   Bench bench(rackText(kPacket, "temperature = \"F1\"\nzero_temperature = \"30 degC\"", ""));
-  EXPECT_NEAR(bench.show(100 - 22, 0, 0, 50)[4], 100, 1e-3);
+  EXPECT_NEAR(bench.show(100 - 49.5, 0, 0, 50)[4], 100, 1e-3);
 }
 
 TEST(DerivedChannels, TheFactorsSlopeIsTakenOut) {

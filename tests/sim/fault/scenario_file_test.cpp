@@ -63,6 +63,9 @@ modulus = "70 GPa"
 second_moment_m4 = 1e-4
 poisson = 0.33
 web_area = "2000 mm2"
+temperature = "15 degC"
+warming = "-5 K"
+warming_time = "10 min"
 [load]
 largest = "50 kN"
 levels = [0.5, 1]
@@ -89,6 +92,9 @@ hold = "2 s"
   EXPECT_DOUBLE_EQ(s.beam.secondMoment_m4, 1e-4);
   EXPECT_DOUBLE_EQ(s.beam.poisson, 0.33);
   EXPECT_DOUBLE_EQ(s.beam.webArea.in(square_millimetre), 2000);
+  EXPECT_DOUBLE_EQ(s.beam.temperature.celsius(), 15);
+  EXPECT_DOUBLE_EQ(s.beam.warming.in(kelvin), -5);
+  EXPECT_EQ(s.beam.warmingTime, 10min);
   EXPECT_DOUBLE_EQ(s.maxLoad.in(kilonewton), 50);
   EXPECT_EQ(s.levels, (std::vector<double>{0.5, 1}));
   EXPECT_EQ(s.ramp, 1s);
