@@ -63,7 +63,6 @@ TEST(Profile, readsEveryField) {
   EXPECT_EQ(relays.operateTime, std::chrono::milliseconds(8));
   EXPECT_EQ(relays.releaseTime, std::chrono::milliseconds(10));  // the default
   EXPECT_EQ(relays.contactTolerance, 50.0 * units::milliohm);
-  EXPECT_EQ(relays.leakage, 10.0 * units::gigaohm);
   EXPECT_EQ(relays.close.ask.source, "CLOSE {relay:02}");
   EXPECT_EQ(relays.open.ask.source, "OPEN {relay:02}");
   EXPECT_EQ(relays.openAll->ask.source, "OPEN ALL");
@@ -148,6 +147,16 @@ TEST(Profile, reportsOneMistakeAtItsPlace) {
     }
     EXPECT_EQ(got, Lines{c.problem}) << "instead of " << c.from;
   }
+}
+
+TEST(Profile, anOpenRelayMayLeak) {
+  Diagnostics diagnostics;
+  const std::string text = sample::spoilt(sample::kProfile, "contact_resistance = \"100 mohm\"",
+                                          "contact_resistance = \"100 mohm\"\nleakage = \"10 Gohm\"");
+  const auto profile = loadProfile("p.toml", sample::reader({{"p.toml", text}}), diagnostics);
+  ASSERT_TRUE(profile) << diagnostics.render(false);
+  EXPECT_EQ(profile->relays->leakage, 10.0 * units::gigaohm);
+  EXPECT_EQ(sample::profileProblems(sample::spoilt(text, "10 Gohm", "10 ohm")).size(), 1u) << "that is no insulation";
 }
 
 TEST(Profile, needsSomethingToDo) {

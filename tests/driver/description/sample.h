@@ -61,7 +61,6 @@ count = 8
 first = 1
 operate_time = "8 ms"
 contact_resistance = "100 mohm"
-leakage = "10 Gohm"
 contact_tolerance = "50 mohm"
 open_all = "OPEN ALL"
 

@@ -47,7 +47,7 @@ class TornRequest : public DeviceTest {
 
   void openTearing() {
     profile(kMuteBoard);
-    transport::Opener opener = [this](const description::Device& device) { return tearing(device); };
+    transport::Opener opener = [this](const description::Device& to) { return tearing(to); };
     run([&]() -> Task<void> {
       auto opened = co_await device::Device::open(described, opener, clock);
       EXPECT_TRUE(opened) << opened.error().text();
