@@ -21,7 +21,7 @@ constexpr Fraction kMeasuredGauge = 0.02 * percent, kCertified = 0.01 * percent;
 constexpr Resistance kMeasuredLead = 20.0 * milliohm;
 constexpr double kWorthwhile = 0.9;  ///< of the uncertainty as it is
 
-Result<Budget> budgetOf(const Rack& rack, const Channel& channel) {
+Result<ScaleReadings> readingsToCome(const Rack& rack, const Channel& channel) {
   auto prediction = predictScale(modelWithLeads(rack, channel), Ratio());
   if (!prediction) return std::unexpected(std::move(prediction.error()));
   ScaleReadings readings;
@@ -32,7 +32,13 @@ Result<Budget> budgetOf(const Rack& rack, const Channel& channel) {
     readings.scatter.smallestStep =
         readings.scatter.smallestStep == Ratio() ? size : std::min(readings.scatter.smallestStep, size);
   }
-  return scaleBudget(rack, channel, readings);
+  return readings;
+}
+
+Result<Budget> budgetOf(const Rack& rack, const Channel& channel) {
+  auto readings = readingsToCome(rack, channel);
+  if (!readings) return std::unexpected(std::move(readings.error()));
+  return scaleBudget(rack, channel, *readings);
 }
 
 /// Something that somebody could do about a channel; false when it is done already.
@@ -126,6 +132,23 @@ Result<Foresight> foresee(const Rack& rack, const Channel& channel) {
     best = then->expandedUncertainty_percent;
     out.advice = Advice{remedy.what, best};
   }
+  return out;
+}
+
+Result<SecondOpinion> secondOpinion(const Rack& rack, const Channel& channel, const Budget& stated, Random& random) {
+  auto readings = readingsToCome(rack, channel);
+  if (!readings) return std::unexpected(std::move(readings.error()));
+  metrology::MonteCarloOptions options;
+  options.digits = 1;
+  options.toleranceShare = 0.2;
+  auto drawn = scaleMonteCarlo(rack, channel, *readings, random, options);
+  if (!drawn) return std::unexpected(std::move(drawn.error()));
+  SecondOpinion out;
+  out.interval = drawn->outputs.front().interval.symmetric;
+  out.trials = drawn->trials;
+  const double half = stated.expandedUncertainty_percent;
+  const double tolerance = metrology::numericalTolerance(stated.standardUncertainty_percent, options.digits);
+  out.agrees = metrology::agreement({-half, half}, out.interval, tolerance).holds();
   return out;
 }
 

@@ -4,7 +4,9 @@
 #include <string>
 
 #include "driver/calibration/record.h"
+#include "driver/core/random.h"
 #include "driver/description/rack.h"
+#include "driver/metrology/monte_carlo.h"
 
 namespace shuntwright::calibration {
 
@@ -26,5 +28,15 @@ struct Foresight {
 /// to 1 K and a completion resistor of 0.01 %, each alone (common practice, no source).
 /// Errors: bad_use when the channel has no shunt or makes no bridge.
 Result<Foresight> foresee(const description::Rack& rack, const description::Channel& channel);
+
+/// A second opinion on the same budget: Monte Carlo of the same measurement (JCGM 101), and whether the stated
+/// uncertainty agrees with its symmetric interval to one digit (JCGM 101 8.1). Errors: as foresee().
+struct SecondOpinion {
+  metrology::Interval interval;  ///< percent of the scale, 95.45 %
+  std::size_t trials = 0;
+  bool agrees = false;
+};
+Result<SecondOpinion> secondOpinion(const description::Rack& rack, const description::Channel& channel,
+                                    const Budget& stated, Random& random);
 
 }  // namespace shuntwright::calibration

@@ -64,6 +64,8 @@ class Check final : public Command {
   void configure(CLI::App& app) override {
     app.add_option("FILE", files_, "Profiles and racks (TOML)")->required();
     app.add_flag("--budget", budget_, "Show the uncertainty that each channel will reach and what limits it");
+    app.add_flag("--monte-carlo", monteCarlo_, "With --budget: a second opinion by drawing random numbers (JCGM 101)")
+        ->needs("--budget");
   }
 
   int run(const Console& console) override {
@@ -139,7 +141,12 @@ class Check final : public Command {
     for (const auto& channel : rack.channels) {
       if (channel.shunts.empty()) continue;
       if (auto foreseen = calibration::foresee(rack, channel)) {
-        foresights_.emplace_back(channel.name, std::move(*foreseen));
+        foresights_.push_back({channel.name, std::move(*foreseen), {}});
+        if (!monteCarlo_) continue;
+        // One seed a channel, so that a channel's figure does not depend on the others.
+        Random random(1);
+        auto second = calibration::secondOpinion(rack, channel, foresights_.back().foresight.budget, random);
+        if (second) foresights_.back().second = *second;
       } else {
         diagnostics.error(channel.place, "no budget for channel \"" + channel.name + "\": " + foreseen.error().message,
                           foreseen.error().remedy);
@@ -148,7 +155,7 @@ class Check final : public Command {
   }
 
   json::value foresightJson(const std::string& channel) const {
-    for (const auto& [name, foreseen] : foresights_) {
+    for (const auto& [name, foreseen, second] : foresights_) {
       if (name != channel) continue;
       json::object o;
       o["expanded_uncertainty_percent"] = foreseen.budget.expandedUncertainty_percent;
@@ -157,6 +164,12 @@ class Check final : public Command {
       o["advice"] = foreseen.advice ? json::value(foreseen.advice->what) : json::value(nullptr);
       o["expanded_uncertainty_then_percent"] =
           foreseen.advice ? json::value(foreseen.advice->to_percent) : json::value(nullptr);
+      if (second) {
+        o["monte_carlo_low_percent"] = second->interval.low;
+        o["monte_carlo_high_percent"] = second->interval.high;
+        o["monte_carlo_trials"] = second->trials;
+        o["monte_carlo_agrees"] = second->agrees;
+      }
       return o;
     }
     return nullptr;
@@ -166,18 +179,34 @@ class Check final : public Command {
     if (foresights_.empty()) return;
     using A = Table::Align;
     console.out << "\nUncertainty to come (95.45 %, of the scale, without the readings' noise)\n";
-    Table table({{"channel", A::left}, {"U %"}, {"limited by", A::left}, {"what would narrow it most", A::left}, {"to %"}});
-    for (const auto& [name, foreseen] : foresights_) {
-      table.row({name, fixed(foreseen.budget.expandedUncertainty_percent, 3), foreseen.largest,
-                 foreseen.advice ? foreseen.advice->what : "nothing by itself",
-                 foreseen.advice ? fixed(foreseen.advice->to_percent, 3) : ""});
+    std::vector<Table::Column> columns{{"channel", A::left}, {"U %"}};
+    if (monteCarlo_) columns.insert(columns.end(), {{"drawn from %"}, {"drawn to %"}, {"agrees", A::left}});
+    columns.insert(columns.end(), {{"limited by", A::left}, {"what would narrow it most", A::left}, {"to %"}});
+    Table table(columns);
+    for (const auto& [name, foreseen, second] : foresights_) {
+      std::vector<std::string> row{name, fixed(foreseen.budget.expandedUncertainty_percent, 3)};
+      if (second) {
+        row.insert(row.end(), {fixed(second->interval.low, 3), fixed(second->interval.high, 3), second->agrees ? "yes" : "NO"});
+      } else if (monteCarlo_) {
+        row.insert(row.end(), {"", "", "no solution"});
+      }
+      row.insert(row.end(), {foreseen.largest, foreseen.advice ? foreseen.advice->what : "nothing by itself",
+                             foreseen.advice ? fixed(foreseen.advice->to_percent, 3) : ""});
+      table.row(row);
     }
     table.print(console);
   }
 
+  struct Foreseen {
+    std::string channel;
+    calibration::Foresight foresight;
+    std::optional<calibration::SecondOpinion> second;
+  };
+
   std::vector<std::string> files_;
   bool budget_ = false;
-  std::vector<std::pair<std::string, calibration::Foresight>> foresights_;
+  bool monteCarlo_ = false;
+  std::vector<Foreseen> foresights_;
 };
 
 }  // namespace

@@ -51,6 +51,23 @@ TEST(Foresight, anUnmeasuredGaugeUnderATabShuntIsToBeMeasured) {
   EXPECT_LT(foreseen->advice->to_percent, 0.5 * foreseen->budget.expandedUncertainty_percent);
 }
 
+TEST(Foresight, aMonteCarloOfTheSameMeasurementAgrees) {
+  const auto rack = test::shippedRack("gantry_beam.toml");
+  Random random(3);
+  for (const char* name : {"S01", "S24", "B1", "F1"}) {
+    const auto& channel = *rack.channel(name);
+    const auto foreseen = foresee(rack, channel);
+    ASSERT_TRUE(foreseen.has_value());
+    const auto second = secondOpinion(rack, channel, foreseen->budget, random);
+    ASSERT_TRUE(second.has_value()) << second.error().text();
+    EXPECT_TRUE(second->agrees) << name << ": " << second->interval.low << " .. " << second->interval.high;
+    // A budget half as wide is contradicted.
+    Budget narrow = foreseen->budget;
+    narrow.expandedUncertainty_percent /= 2;
+    EXPECT_FALSE(secondOpinion(rack, channel, narrow, random)->agrees);
+  }
+}
+
 TEST(Foresight, aChannelWithoutShuntsHasNoCalibrationToForesee) {
   auto rack = test::shippedRack("small_bench.toml");
   rack.channels[0].shunts.clear();

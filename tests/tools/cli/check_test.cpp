@@ -167,4 +167,21 @@ TEST_F(Check, theBudgetToComeNamesWhatLimitsItAndWhatWouldHelp) {
   }
 }
 
+TEST_F(Check, aMonteCarloSecondsTheBudget) {
+  const Ran ran = run("check --json --budget --monte-carlo " + kRacks + "small_bench.toml");
+  ASSERT_EQ(ran.code, 0) << ran.err;
+  const json::value document = json::parse(ran.out);
+  int seconded = 0;
+  for (const auto& channel : document.at("channels").as_array()) {
+    if (channel.at("budget").is_null()) continue;
+    const auto& budget = channel.at("budget");
+    EXPECT_TRUE(budget.at("monte_carlo_agrees").as_bool()) << channel.at("name").as_string();
+    EXPECT_LT(budget.at("monte_carlo_low_percent").to_number<double>(), 0);
+    EXPECT_GE(budget.at("monte_carlo_trials").to_number<int>(), 10'000);
+    ++seconded;
+  }
+  EXPECT_GE(seconded, 3);
+  EXPECT_EQ(run("check --monte-carlo " + kRacks + "small_bench.toml").code, 2) << "of which budget?";
+}
+
 }  // namespace
