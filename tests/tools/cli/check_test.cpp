@@ -169,7 +169,7 @@ TEST_F(Check, theBudgetToComeNamesWhatLimitsItAndWhatWouldHelp) {
 
 TEST_F(Check, aMonteCarloSecondsTheBudget) {
   const Ran ran = run("check --json --budget --monte-carlo " + kRacks + "small_bench.toml");
-  ASSERT_EQ(ran.code, 0) << ran.err;
+  ASSERT_EQ(ran.code, 0) << ran.out;
   const json::value document = json::parse(ran.out);
   int seconded = 0;
   for (const auto& channel : document.at("channels").as_array()) {
