@@ -28,9 +28,17 @@ struct Event::Waiter {
   std::weak_ptr<const void> clockAlive;
   Clock::Ticket ticket = 0;
 
+  ~Waiter() { forgetDeadline(); }
+
+  /// The clock knows a waiter by its address only, so none goes while its ticket stands.
+  void forgetDeadline() {
+    if (ticket != 0 && !clockAlive.expired()) clock->cancel(ticket);
+    ticket = 0;
+  }
+
   void finish(error_code ec, bool notified) {
     if (!handler) return;
-    if (ticket != 0 && !clockAlive.expired()) clock->cancel(ticket);
+    forgetDeadline();
     asio::post(executor, [h = std::exchange(handler, nullptr), ec, notified]() mutable {
       std::move(h)(ec, notified);
     });
@@ -38,8 +46,13 @@ struct Event::Waiter {
 
   /// Ends the wait from outside the notifications: by cancellation or at its deadline.
   void give(error_code ec) {
+    std::shared_ptr<Waiter> alive;
     if (const auto list = waiters.lock()) {
-      std::erase_if(*list, [this](const auto& one) { return one.get() == this; });
+      const auto own = std::find_if(list->begin(), list->end(), [this](const auto& one) { return one.get() == this; });
+      if (own != list->end()) {
+        alive = std::move(*own);
+        list->erase(own);
+      }
     }
     finish(ec, false);
   }
@@ -71,8 +84,10 @@ Task<bool> Event::waitOn(const std::shared_ptr<Waiters>& waiters, Clock* clock, 
     if (clock && deadline != Instant::max()) {
       waiter->clock = clock;
       waiter->clockAlive = clock->alive();
-      waiter->ticket = clock->at(deadline, [weak] {
-        if (const auto pending = weak.lock()) pending->give({});
+      // A pointer fits into the function without memory of its own.
+      waiter->ticket = clock->at(deadline, [pending = waiter.get()] {
+        pending->ticket = 0;
+        pending->give({});
       });
     }
   };
@@ -89,8 +104,12 @@ Task<bool> Event::wait(Clock& clock, Instant deadline) {
 }
 
 void Event::notifyAll() {
-  const auto woken = std::exchange(*waiters_, {});
+  if (waiters_->empty()) return;
+  // Waking only posts, so nobody comes back here meanwhile; the list keeps its room.
+  static thread_local Waiters woken;
+  woken.swap(*waiters_);
   for (const auto& waiter : woken) waiter->finish({}, true);
+  woken.clear();
 }
 
 AsyncMutex::Lock& AsyncMutex::Lock::operator=(Lock&& other) noexcept {
