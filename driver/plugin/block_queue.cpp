@@ -49,6 +49,8 @@ void BlockQueue::dropOldest(const std::string& device, std::size_t most) {
 void BlockQueue::end(Error error) {
   const std::lock_guard lock(mutex_);
   error_ = std::move(error);
+  // To the host a time-out means "try again"; this one is final.
+  if (error_->code == ErrorCode::timeout) error_->code = ErrorCode::io;
   arrived_.notify_all();
 }
 

@@ -11,6 +11,7 @@
 #include <boost/asio/io_context.hpp>
 #include <boost/asio/post.hpp>
 #include <boost/system/system_error.hpp>
+#include <algorithm>
 #include <atomic>
 #include <chrono>
 #include <condition_variable>
@@ -137,7 +138,7 @@ struct Session::Thread {
     const double rate_Hz = rack::LiveRack::rateOf(*rack.device(device)).in(units::hertz);
     const bool keepAll = virtualClock != nullptr;
     blocks.push(std::move(block), keepAll ? std::numeric_limits<std::size_t>::max()
-                                          : static_cast<std::size_t>(kQueuedSeconds * rate_Hz));
+                                          : std::max<std::size_t>(1, static_cast<std::size_t>(kQueuedSeconds * rate_Hz)));
   }
 };
 
@@ -250,14 +251,20 @@ Result<void> Session::calibrate(std::function<void(const calibration::Progress&)
   auto done = t->spawn([t, permit = *permit, seed, wanted, record]() -> Task<Result<void>> {
     return Run::run(t, permit, seed, wanted, record);
   }, true);
+  std::exception_ptr thrown;  // by the host; what the thread still uses must stay until it has ended
   const auto tell = [&] {
     std::deque<calibration::Progress> now;
     {
       const std::lock_guard lock(mutex);
       now = told;
     }
-    for (const auto& p : now) {
-      if (progress) progress(p);
+    try {
+      for (const auto& p : now) {
+        if (progress && !thrown) progress(p);
+      }
+    } catch (...) {
+      thrown = std::current_exception();
+      cancel();
     }
     const std::lock_guard lock(mutex);
     told.erase(told.begin(), told.begin() + static_cast<std::ptrdiff_t>(now.size()));
@@ -265,7 +272,9 @@ Result<void> Session::calibrate(std::function<void(const calibration::Progress&)
   };
   while (done.wait_for(std::chrono::microseconds(patient ? 100 : 5000)) != std::future_status::ready) tell();
   tell();
-  if (auto ended = done.get(); !ended) {
+  auto ended = done.get();
+  if (thrown) std::rethrow_exception(thrown);
+  if (!ended) {
     const auto left = t->live->relays().maybeClosed();
     for (const auto& relay : left) ended.error().message += "; relay " + rack::text(relay) + " may still be closed";
     if (!left.empty()) ended.error().remedy = "call release";

@@ -149,6 +149,8 @@ int readBlock(shuntwright_session* session, uint32_t timeout_ms, shuntwright_blo
   bool timedOut = false;
   const int code = guarded(session, [&](auto& s) -> Result<void> {
     out->frames = 0;
+    out->lost = 0;
+    out->device = "";
     auto got = s.next(timeout_ms);
     if (!got) {
       timedOut = got.error().code == ErrorCode::timeout;
@@ -189,8 +191,12 @@ int releaseRelays(shuntwright_session* session) {
 /// Beside another call: touches nothing of the handle that one may change.
 int cancelCall(shuntwright_session* session) {
   if (!session || !session->session) return SHUNTWRIGHT_BAD_USE;
-  session->session->cancel();
-  return SHUNTWRIGHT_OK;
+  try {
+    session->session->cancel();
+    return SHUNTWRIGHT_OK;
+  } catch (...) {
+    return SHUNTWRIGHT_INTERNAL;
+  }
 }
 
 void closeSession(shuntwright_session* session) {

@@ -118,12 +118,13 @@ typedef struct {
   int (*start)(shuntwright_session* session);
   /* Waits up to timeout_ms for samples of any device. */
   int (*read)(shuntwright_session* session, uint32_t timeout_ms, shuntwright_block* block);
+  /* Samples that were not read yet are gone afterwards. */
   int (*stop)(shuntwright_session* session);
 
   int (*release)(shuntwright_session* session); /* opens every relay */
   void (*close)(shuntwright_session* session);  /* NULL is ignored */
 
-  /* From any thread, and from within the progress callback: a calibration under way opens its relays and ends with
+  /* From any thread, and from within the progress callback, but not beside open or close: a calibration under way opens its relays and ends with
    * SHUNTWRIGHT_CANCELLED; what was in force stays. Without one nothing happens. */
   int (*cancel)(shuntwright_session* session);
 } shuntwright_table;

@@ -217,25 +217,4 @@ Result<FileLayout> createFile(const std::string& path, const RecordingPlan& plan
   }
 }
 
-Result<void> trimFile(const std::string& path, const RecordingPlan& plan, const std::vector<std::uint64_t>& rows) {
-  quietHdf5();
-  try {
-    Handle file(check(H5Fopen(path.c_str(), H5F_ACC_RDWR, H5P_DEFAULT), "opening the file"), H5Fclose);
-    for (std::size_t d = 0; d < plan.devices.size(); ++d) {
-      const auto& device = plan.devices[d];
-      if (device.channels.empty()) continue;
-      for (const char* name : {"time", "ratio", "corrected", "flags"}) {
-        const std::string where = "/devices/" + device.name + "/" + name;
-        Handle data(check(H5Dopen2(file, where.c_str(), H5P_DEFAULT), where.c_str()), H5Dclose);
-        const hsize_t size[] = {rows[d], device.channels.size()};
-        check(H5Dset_extent(data, size), where.c_str());
-      }
-    }
-    return {};
-  } catch (const Hdf5Failure& failure) {
-    return fail(ErrorCode::io, "cannot trim the recording: HDF5 failed at " + failure.what, path,
-                "the file is whole all the same; its row counters say how far it goes");
-  }
-}
-
 }  // namespace shuntwright::recording

@@ -37,8 +37,4 @@ struct FileLayout {
 /// Errors: io; refused when the file exists.
 Result<FileLayout> createFile(const std::string& path, const RecordingPlan& plan, int part);
 
-/// Sets the extents of a finished file to the rows it holds, so that plain readers see no spare room.
-/// Errors: io.
-Result<void> trimFile(const std::string& path, const RecordingPlan& plan, const std::vector<std::uint64_t>& rows);
-
 }  // namespace shuntwright::recording

@@ -15,6 +15,7 @@ namespace shuntwright::recording {
 namespace {
 
 constexpr std::size_t kStagedRows = 1024;
+constexpr int kMostParts = 9999;
 
 Error systemError(const char* what, const std::string& path) {
   const int number = errno;
@@ -67,6 +68,11 @@ Recorder::~Recorder() {
 
 Result<std::unique_ptr<Recorder>> Recorder::create(const std::string& path, RecordingPlan plan) {
   std::unique_ptr<Recorder> recorder(new Recorder(path, std::move(plan)));
+  // Found out now and not an hour later, when the first part is full.
+  if (const std::string next = partPath(path, 2); ::access(next.c_str(), F_OK) == 0) {
+    return fail(ErrorCode::refused, "a further part of an earlier recording is still there", next,
+                "move it away with its first part, or choose another name");
+  }
   if (auto opened = recorder->openPart(); !opened) return std::unexpected(std::move(opened.error()));
   return recorder;
 }
@@ -75,6 +81,11 @@ Result<void> Recorder::openPart() {
   ++part_;
   path_ = partPath(basePath_, part_);
   auto layout = createFile(path_, plan_, part_);
+  // A test under way does not end because somebody put a file in its way.
+  while (!layout && layout.error().code == ErrorCode::refused && part_ > 1 && part_ < kMostParts) {
+    path_ = partPath(basePath_, ++part_);
+    layout = createFile(path_, plan_, part_);
+  }
   if (!layout) return std::unexpected(std::move(layout.error()));
   layout_ = std::move(*layout);
   descriptor_ = ::open(path_.c_str(), O_WRONLY | O_CLOEXEC);
@@ -164,9 +175,7 @@ Result<void> Recorder::endPart(Instant now) {
   if (auto done = sync(); !done) return done;
   ::close(descriptor_);
   descriptor_ = -1;
-  std::vector<std::uint64_t> rows;
-  for (const auto& device : devices_) rows.push_back(device->written);
-  return trimFile(path_, plan_, rows);
+  return {};
 }
 
 Result<void> Recorder::append(std::size_t index, const device::SampleBlock& block, std::span<const float> corrected,
@@ -181,6 +190,12 @@ Result<void> Recorder::append(std::size_t index, const device::SampleBlock& bloc
         !noted && noted.error().code != ErrorCode::refused) {
       return noted;
     }
+  }
+  if (block.damagedBefore > 0) {
+    const Instant when = block.frames() > 0 ? block.time.front() : now;
+    auto noted = event("damaged", when, "lines that could not be read before this moment", plan_.devices[index].name,
+                       block.damagedBefore);
+    if (!noted && noted.error().code != ErrorCode::refused) return noted;
   }
   for (std::size_t frame = 0; frame < block.frames(); ++frame) {
     if (device.written + device.staged >= layout_.devices[index].capacity) {
@@ -200,6 +215,10 @@ Result<void> Recorder::append(std::size_t index, const device::SampleBlock& bloc
       if (auto done = flush(index); !done) return done;
     }
   }
+  return commitIfDue(now);
+}
+
+Result<void> Recorder::commitIfDue(Instant now) {
   return now - lastCommit_ >= plan_.commitEvery ? commit(now) : Result<void>{};
 }
 

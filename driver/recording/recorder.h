@@ -39,8 +39,10 @@ class Recorder {
 
   /// Writes and syncs what is staged. append() does so by itself when it is due.
   Result<void> commit(Instant now);
+  /// The same when `commitEvery` has passed: for times when no samples come but marks and faults may.
+  Result<void> commitIfDue(Instant now);
 
-  /// Commits, marks the file complete and trims it to its rows.
+  /// Commits and marks the file complete; its size stays what it was.
   Result<void> finish(Instant now);
 
   std::uint64_t rows(std::size_t index) const;   ///< recorded so far, all parts

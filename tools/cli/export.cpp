@@ -4,6 +4,7 @@
 #include <boost/json/serialize.hpp>
 #include <fstream>
 #include <ostream>
+#include <string_view>
 
 #include "driver/recording/csv.h"
 #include "driver/recording/load_steps.h"
@@ -15,6 +16,14 @@ namespace shuntwright::cli {
 namespace {
 
 namespace json = boost::json;
+
+/// HDF5 files begin with these eight bytes (HDF5 file format specification).
+bool isRecording(const std::string& path) {
+  std::ifstream in(path, std::ios::binary);
+  char start[8] = {};
+  in.read(start, sizeof start);
+  return in.gcount() == sizeof start && std::string_view(start, sizeof start) == "\x89HDF\r\n\x1a\n";
+}
 
 class Export final : public Command {
  public:
@@ -35,6 +44,10 @@ class Export final : public Command {
     if (console.json) return describe(console, **reader);
     std::ofstream file;
     if (!out_.empty()) {
+      if (isRecording(out_)) {
+        return console.fail(Error(ErrorCode::refused, "the output would overwrite a recording", out_,
+                                  "give --out another name, such as run.csv"));
+      }
       file.open(out_, std::ios::binary);
       if (!file) return console.fail(Error(ErrorCode::io, "the file cannot be written", out_, "check the folder"));
     }

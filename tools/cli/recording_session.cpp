@@ -101,14 +101,23 @@ Task<Result<void>> RecordingSession::run(rack::LiveRack& live, rack::LoadPathPer
     trouble_.clear();
     if (recorder_) (void)recorder_->event("recovered", clock_.now(), "samples come again", device);
   };
-  const std::function<bool()> stop = [this, stopWanted] { return failed_.has_value() || stopWanted(); };
+  const std::function<bool()> stop = [this, stopWanted] {
+    // Marks and faults reach the disk while no samples come, too.
+    if (recorder_ && !failed_) {
+      if (auto kept = recorder_->commitIfDue(clock_.now()); !kept) failed_ = std::move(kept.error());
+    }
+    return failed_.has_value() || stopWanted();
+  };
   auto done = co_await rack::acquire(live, permit, sink, stop);
   if (failed_) co_return std::unexpected(*failed_);
   co_return done;
 }
 
 Result<void> RecordingSession::mark(std::string_view kind, std::string_view text) {
-  return recorder_ ? recorder_->event(kind, clock_.now(), text) : Result<void>{};
+  if (!recorder_) return {};
+  auto kept = recorder_->event(kind, clock_.now(), text);
+  if (!kept) trouble_ = kept.error().message;
+  return kept;
 }
 
 Result<void> RecordingSession::finish() { return recorder_ ? recorder_->finish(clock_.now()) : Result<void>{}; }

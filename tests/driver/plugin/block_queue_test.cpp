@@ -56,6 +56,12 @@ TEST(BlockQueue, theEndIsToldAfterTheLastBlock) {
   EXPECT_EQ(queue.take(0ms).error().code, ErrorCode::timeout);
 }
 
+TEST(BlockQueue, anAcquisitionThatTimedOutIsOverAndNotToBeTriedAgain) {
+  BlockQueue queue;
+  queue.end(Error(ErrorCode::timeout, "amp1 does not answer"));
+  EXPECT_EQ(queue.take(0ms).error().code, ErrorCode::io);
+}
+
 TEST(BlockQueue, waitsForRoomOnlyWhenManyBlocksStandThere) {
   BlockQueue queue;
   for (int k = 0; k < 63; ++k) queue.push(block("a", 1), 1000);

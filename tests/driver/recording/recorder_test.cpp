@@ -132,6 +132,14 @@ TEST_F(RecorderTest, nothingIsEverOverwritten) {
   EXPECT_EQ(again.error().code, ErrorCode::refused);
 }
 
+TEST_F(RecorderTest, aLaterPartOfAnOlderRecordingIsFoundOutAtTheStart) {
+  std::ofstream(partPath(path_, 2)) << "an older recording's";
+  auto recorder = Recorder::create(path_, plan(1));
+  ASSERT_FALSE(recorder.has_value());
+  EXPECT_EQ(recorder.error().code, ErrorCode::refused);
+  EXPECT_NE(recorder.error().where.find("-0002"), std::string::npos) << recorder.error().text();
+}
+
 TEST_F(RecorderTest, aFullFileRollsOverAndNoRowIsLost) {
   auto recorder = Recorder::create(path_, plan(0.5));
   ASSERT_TRUE(recorder.has_value());

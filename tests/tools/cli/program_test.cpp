@@ -59,6 +59,17 @@ TEST_F(Program, theDemoTellsNoRowsWhenNoRecordingIsKept) {
   EXPECT_GT(demo("--out " + folder_ + "/demo.h5").at("rows").to_number<double>(), 0);
 }
 
+TEST_F(Program, exportNeverOverwritesARecording) {
+  const std::string file = folder_ + "/demo.h5";
+  ASSERT_EQ(runShuntwright("demo --out " + file).code, 0);
+  const auto size = fs::file_size(file);
+  const Ran ran = runShuntwright("export " + file + " --out " + file + " 2>&1");
+  EXPECT_NE(ran.code, 0);
+  EXPECT_NE(ran.out.find("would overwrite a recording"), std::string::npos) << ran.out;
+  EXPECT_EQ(fs::file_size(file), size);
+  EXPECT_EQ(runShuntwright("export " + file + " --steps --out " + folder_ + "/steps.csv").code, 0);
+}
+
 // The demo and shuntwright-sim load one beam: half the second moment of area doubles the bending strain
 // (M y / (E I)) of a channel that has a place on it, and leaves one that has none.
 TEST_F(Program, theDemoLoadsTheBeamOfTheShippedScenario) {
