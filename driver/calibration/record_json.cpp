@@ -89,6 +89,11 @@ json::object channelJson(const ChannelResult& c) {
   correction["p"] = number(c.correction.p);
   correction["q"] = number(c.correction.q);
   correction["w"] = number(c.correction.w);
+  if (!c.correction.isMoebius()) {
+    json::array bend;
+    for (const double b : c.correction.bend) bend.push_back(number(b));
+    correction["bend"] = std::move(bend);
+  }
   o["correction"] = std::move(correction);
   o["worst_map_error_microstrain"] = number(c.worstMapError.in(microstrain));
   o["budget"] = budgetJson(c.budget);
@@ -199,6 +204,11 @@ ChannelResult channelFrom(const json::object& o) {
   for (const auto& s : o.at("shunts").as_array()) c.shunts.push_back(shuntFrom(s.as_object()));
   const auto& correction = o.at("correction").as_object();
   c.correction = {get(correction, "p"), get(correction, "q"), get(correction, "w")};
+  if (const auto* bend = correction.if_contains("bend")) {
+    for (std::size_t b = 0; b < c.correction.bend.size(); ++b) {
+      c.correction.bend[b] = bend->as_array().at(b).to_number<double>();
+    }
+  }
   c.worstMapError = get(o, "worst_map_error_microstrain") * microstrain;
   c.budget = budgetFrom(o.at("budget").as_object());
   return c;

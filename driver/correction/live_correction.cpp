@@ -16,6 +16,11 @@ std::vector<Coefficients> coefficientsOf(const std::vector<Column>& columns) {
       k.p = static_cast<float>(column.map.p * column.unitsPerStrain);
       k.c = static_cast<float>(-column.map.q / column.map.p);
       k.w = static_cast<float>(column.map.w);
+      double unit = 1;  // of the shown value, by the power of u that each coefficient goes with
+      for (std::size_t b = 0; b < k.bend.size(); ++b) {
+        unit *= column.unitsPerStrain;
+        k.bend[b] = static_cast<float>(column.map.bend[b] / unit);
+      }
     }
     out.push_back(k);
   }

@@ -141,6 +141,7 @@ DevicePlaces createDevice(Writer& writer, const RecordingPlan& plan, const Recor
   writer.numbers(group, "rate_Hz", {device.rate_Hz});
   std::vector<std::string> names, units;
   std::vector<double> columns, p, q, w, scale, calibrated;
+  std::array<std::vector<double>, 4> bend;
   for (const auto& c : device.channels) {
     names.push_back(c.name);
     units.push_back(c.unit);
@@ -149,6 +150,7 @@ DevicePlaces createDevice(Writer& writer, const RecordingPlan& plan, const Recor
     q.push_back(c.q);
     w.push_back(c.w);
     scale.push_back(c.unitsPerStrain);
+    for (std::size_t k = 0; k < bend.size(); ++k) bend[k].push_back(c.bend[k]);
     calibrated.push_back(c.calibrated ? 1 : 0);
   }
   writer.texts(group, "channels", names);
@@ -157,9 +159,10 @@ DevicePlaces createDevice(Writer& writer, const RecordingPlan& plan, const Recor
   writer.numbers(group, "p", p);
   writer.numbers(group, "q", q);
   writer.numbers(group, "w", w);
+  for (std::size_t k = 0; k < bend.size(); ++k) writer.numbers(group, kBendNames[k], bend[k]);
   writer.numbers(group, "units_per_strain", scale);
   writer.numbers(group, "calibrated", calibrated);
-  writer.text(group, "correction", "value = units_per_strain * (p * ratio + q) / (1 + w * ratio)");
+  writer.text(group, "correction", "u = (p * ratio + q) / (1 + w * ratio); value = units_per_strain * (u + b2 u^2 + b3 u^3 + b4 u^4 + b5 u^5)");
 
   DevicePlaces places;
   places.capacity = static_cast<std::uint64_t>(std::ceil(std::max(1.0, device.rate_Hz * plan.secondsPerFile))) + 64;

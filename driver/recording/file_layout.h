@@ -1,5 +1,6 @@
 #pragma once
 
+#include <array>
 #include <cstdint>
 #include <string>
 #include <vector>
@@ -8,6 +9,9 @@
 #include "driver/recording/plan.h"
 
 namespace shuntwright::recording {
+
+/// Attributes of a device that hold what bends the maps of its channels.
+inline constexpr std::array<const char*, 4> kBendNames{"b2", "b3", "b4", "b5"};
 
 /// Where a dataset's rows lie in the file: chunks of equal size, in order.
 struct RowPlaces {

@@ -27,7 +27,7 @@ RecordingPlan planOf(const description::Rack& rack, const calibration::Record& r
       const auto& column = columns[k];
       if (column.channel.empty()) continue;
       device.channels.push_back({column.channel, column.unit, static_cast<int>(k), column.calibrated, column.map.p,
-                                 column.map.q, column.map.w, column.unitsPerStrain});
+                                 column.map.q, column.map.w, column.unitsPerStrain, column.map.bend});
     }
     constexpr double kNone = std::numeric_limits<double>::quiet_NaN();
     auto place = static_cast<int>(columns.size());

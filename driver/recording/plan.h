@@ -1,5 +1,6 @@
 #pragma once
 
+#include <array>
 #include <cstdint>
 #include <string>
 #include <vector>
@@ -19,8 +20,9 @@ struct RecordedChannel {
   std::string unit;
   int column = 0;            ///< of the device's sample blocks
   bool calibrated = false;
-  double p = 0, q = 0, w = 0;  ///< value = unitsPerStrain (p r + q) / (1 + w r), r in V/V
+  double p = 0, q = 0, w = 0;  ///< u = (p r + q) / (1 + w r), r in V/V
   double unitsPerStrain = 1;
+  std::array<double, 4> bend{};  ///< value = unitsPerStrain (u + b2 u^2 + b3 u^3 + b4 u^4 + b5 u^5)
 };
 
 struct RecordedDevice {

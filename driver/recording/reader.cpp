@@ -5,6 +5,7 @@
 #include <boost/json/value.hpp>
 #include <cstring>
 
+#include "driver/recording/file_layout.h"
 #include "driver/recording/hdf5_handle.h"
 
 namespace shuntwright::recording {
@@ -100,9 +101,16 @@ RecordedDevice deviceAt(hid_t file, const std::string& name) {
   const auto columns = numbers(group, "columns"), p = numbers(group, "p"), q = numbers(group, "q"),
              w = numbers(group, "w"), scale = numbers(group, "units_per_strain"),
              calibrated = numbers(group, "calibrated");
+  std::array<std::vector<double>, 4> bend;
+  for (std::size_t b = 0; b < bend.size(); ++b) {
+    if (H5Aexists(group, kBendNames[b]) > 0) bend[b] = numbers(group, kBendNames[b]);
+  }
   for (std::size_t k = 0; k < names.size(); ++k) {
     device.channels.push_back({names[k], units.at(k), static_cast<int>(columns.at(k)), calibrated.at(k) != 0, p.at(k),
                                q.at(k), w.at(k), scale.at(k)});
+    for (std::size_t b = 0; b < bend.size(); ++b) {
+      if (!bend[b].empty()) device.channels.back().bend[b] = bend[b].at(k);
+    }
   }
   return device;
 }

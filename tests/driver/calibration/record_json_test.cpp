@@ -37,7 +37,7 @@ Record example() {
   shunt.measuredStep = 0.5 * millivolt_per_volt;
   shunt.repeats = 2;
   c.shunts.push_back(shunt);
-  c.correction = {2003.25, -0.5, -1.99};
+  c.correction = {2003.25, -0.5, -1.99, {0.5, -0.25, 1e-3, 2e-5}};
   record.channels.push_back(c);
   ChannelResult bare;
   bare.name = "T1";
@@ -54,6 +54,7 @@ TEST(RecordJson, whatIsWrittenReadsBackAndWritesTheSameAgain) {
   ASSERT_TRUE(back.has_value()) << back.error().text();
   EXPECT_EQ(recordJson(*back), text);
   EXPECT_EQ(back->channels[0].correction.p, 2003.25);
+  EXPECT_EQ(back->channels[0].correction.bend, (std::array<double, 4>{0.5, -0.25, 1e-3, 2e-5}));
   EXPECT_EQ(back->channels[0].verdict, Verdict::fail);
 }
 

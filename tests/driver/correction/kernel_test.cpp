@@ -65,6 +65,31 @@ TEST(Kernel, givesTheStrainOfAQuarterBridge) {
   EXPECT_NEAR(out[1], -1000, 1e-3);
 }
 
+// Bent columns next to straight ones; a full bridge in bending with Poisson gauges bends by up to 1e-4 of u.
+TEST(Kernel, bendsTheColumnsThatAreBent) {
+  auto columns = someColumns(5);
+  columns[1].bend = {1e-9f, -2e-12f, 3e-18f, 1e-22f};
+  columns[4].bend = {0, -5e-10f, 0, 0};
+  const Kernel kernel(columns);
+  Random random(3);
+  const std::size_t frames = 300;
+  std::vector<float> ratio(frames * 5), out(ratio.size());
+  std::vector<double> reference(ratio.size());
+  for (auto& r : ratio) r = static_cast<float>(random.uniform(-4e-3, 4e-3));
+  kernel.apply(ratio.data(), out.data(), frames);
+  applyReference(columns, ratio.data(), reference.data(), frames);
+  for (std::size_t k = 0; k < out.size(); ++k) EXPECT_NEAR(out[k], reference[k], 6 * 6e-8 * 13000);
+  auto straight = columns;
+  for (auto& column : straight) column.bend = {};
+  std::vector<float> unbent(ratio.size());
+  Kernel(straight).apply(ratio.data(), unbent.data(), frames);
+  for (std::size_t k = 0; k < out.size(); ++k) {
+    if (k % 5 == 1 || k % 5 == 4) continue;
+    EXPECT_EQ(out[k], unbent[k]) << "a straight column is not touched by its neighbours";
+  }
+  EXPECT_GT(std::abs(out[4] - unbent[4]), 1e-3f);
+}
+
 TEST(Kernel, missingStaysMissing) {
   const Coefficients column{2e6f, 0, -2.0f};
   const Kernel kernel(std::span(&column, 1));
