@@ -46,8 +46,14 @@ struct ShuntPath {
 /// The circuit of a rack's channel with every value nominal (measured gauge resistance where the rack gives
 /// one, leads at their stated temperature). A transducer is four arms of its output resistance with
 /// (R_in - R_out)/2 in each excitation line; its "strain" is the fraction of the rated value and the arms'
-/// relativePerStrain is such that strain 1 gives the stated sensitivity at the transducer's own terminals.
+/// relativePerStrain is such that strain 1 gives the stated sensitivity at the transducer's own terminals. With a
+/// certificate's shunt the arms are as that shunt sees them (armOf).
 Circuit circuitOf(const description::Rack& rack, const description::Channel& channel);
+
+/// Resistance of each of a transducer's four arms: its output resistance, or, where the certificate has a shunt,
+/// the one at which that shunt gives the certificate's step at no load (trimming resistors inside included).
+/// Errors: bad_use when no resistance within a factor of 2 of the output resistance gives it.
+Result<units::Resistance> armOf(const description::TransducerSheet& sheet);
 
 /// The shunt's path: resistor value plus the relay's contact resistance.
 ShuntPath pathOf(const description::Rack& rack, const description::Shunt& shunt);

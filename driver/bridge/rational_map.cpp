@@ -20,8 +20,8 @@ constexpr int kGrid = 400;
 constexpr std::array<double, 4> kBendStates{-0.9238795325112867, -0.3826834323650898, 0.3826834323650898,
                                             0.9238795325112867};
 
-// What a Moebius map is off by rounding alone, relative to the range: no reason to bend it.
-constexpr double kRounding = 1e-12;
+// What a ratio may be off by rounding alone: no reason to bend a map.
+constexpr double kRounding_V_per_V = 4e-15;
 
 using Polynomial = std::array<double, 6>;  // by rising powers
 
@@ -142,7 +142,7 @@ Result<FittedMap> mapOf(const Circuit& circuit, units::Strain centre, units::Str
   RationalMap map = centred(s1 + w * e1, w, ratio0);
   std::array<double, 4> left{};
   if (auto misses = missesOf(circuit, map, e0, width, left); !misses) return std::unexpected(misses.error());
-  if (std::ranges::any_of(left, [&](double e) { return std::abs(e) > kRounding * width; })) {
+  if (std::ranges::any_of(left, [&](double e) { return std::abs(e) > kRounding_V_per_V * std::abs(s1); })) {
     // Bent: the Moebius part keeps the exact slope at the centre, so that what it leaves begins with u^2.
     const auto state = stateOf(circuit, e0);
     if (!state) return std::unexpected(state.error());

@@ -150,14 +150,28 @@ StepFigures figuresOf(const description::Shunt& shunt, const ShuntReadings& read
   return f;
 }
 
+/// Half-width for the whole bridge: its gauges by their shares in the signal, all off the same way (one batch).
+double factorTolerance_percent(const Rack& rack, const Channel& channel) {
+  const auto weights = description::armWeights(channel.circuit, channel.poisson);
+  double sum = 0, whole = 0;
+  for (std::size_t arm = 0; arm < weights.size(); ++arm) {
+    if (weights[arm] == 0) continue;
+    const auto gauge = rack.gaugeOf(channel, arm);
+    const double share = std::abs(weights[arm]) * gauge.factor.value();
+    sum += share * gauge.factorTolerance.in(percent);
+    whole += share;
+  }
+  return sum / whole;
+}
+
 void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& result) {
   result.name = channel.name;
   if (channel.transducer) {
     result.unit = channel.transducer->unit;
     result.unitsPerStrain = channel.transducer->ratedValue;
   }
-  const double factor_percent = channel.transducer ? channel.transducer->sensitivityTolerance.in(percent)
-                                                   : rack.gaugeOf(channel).factorTolerance.in(percent);
+  const double factor_percent =
+      channel.transducer ? channel.transducer->sensitivityTolerance.in(percent) : factorTolerance_percent(rack, channel);
   const Component rectangle{Shape::rectangular, factor_percent / std::sqrt(3.0)};
   result.factorUncertainty_percent = coverageHalfWidth(std::span(&rectangle, 1));
   if (channel.leads.empty()) return;

@@ -178,6 +178,20 @@ void addTransducer(const description::TransducerSheet& sheet, std::vector<Uncert
   const double input = sheet.inputResistance.in(ohm), output = sheet.outputResistance.in(ohm);
   out.push_back({{"input resistance of the transducer", "ohm", rectangular(input, input * sheet.inputTolerance.in(one))},
                  [](ChannelModel& m, double delta) { shiftTransducer(m, delta, 0); }});
+  if (sheet.certificateShunt) {
+    const double step = sheet.certificateShunt->step.in(millivolt_per_volt);
+    const double share = sheet.certificateShunt->tolerance.in(one);
+    // The arm that explains a step other than the certificate's.
+    const auto shift = [sheet, step](ChannelModel& m, double delta) {
+      const auto arm = bridge::armOf(sheet);
+      description::TransducerSheet other = sheet;
+      other.certificateShunt->step = (step + delta) * millivolt_per_volt;
+      const auto moved = bridge::armOf(other);
+      if (arm && moved) shiftTransducer(m, 0, (*moved - *arm).in(ohm));
+    };
+    out.push_back({{"step of the certificate's shunt", "mV/V", rectangular(step, step * share)}, shift});
+    return;
+  }
   out.push_back(
       {{"output resistance of the transducer", "ohm", rectangular(output, output * sheet.outputTolerance.in(one))},
        [](ChannelModel& m, double delta) { shiftTransducer(m, 0, delta); }});
@@ -191,14 +205,12 @@ void addArms(const Rack& rack, const Channel& channel, const ChannelModel& model
     const auto shift = [arm](ChannelModel& m, double delta) { shiftArm(m, arm, delta); };
     const std::string number = " of arm " + std::to_string(arm + 1);
     if (part.relativePerStrain != 0) {
-      const auto& nominal = rack.gaugeOf(channel).resistance;
-      if (channel.measuredResistance && arm == 0) {
-        const double u = value * channel.measuredResistance->tolerance.in(one) / 2;  // expanded, k = 2
-        out.push_back({{"gauge resistance" + number + ", measured", "ohm", normal(value, u)}, shift});
-      } else {
-        out.push_back(
-            {{"gauge resistance" + number, "ohm", rectangular(value, value * nominal.tolerance.in(one))}, shift});
-      }
+      const auto gauge = rack.gaugeOf(channel, arm);
+      const double share = gauge.resistance.tolerance.in(one);
+      out.push_back(gauge.measured
+                        ? UncertainInput{{"gauge resistance" + number + ", measured", "ohm", normal(value, value * share / 2)},
+                                         shift}  // expanded, k = 2
+                        : UncertainInput{{"gauge resistance" + number, "ohm", rectangular(value, value * share)}, shift});
     } else if (arm == 1 || (arm == 3 && channel.circuit == description::CircuitKind::half_opposite)) {
       double tolerance = 0;
       for (const auto& offered : inputs.completions) {

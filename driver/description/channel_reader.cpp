@@ -40,6 +40,7 @@ class ChannelReader {
     const bool circuitKnown = readCircuit();
     if (circuitKnown) checkHalfBridge();
     readGauge();
+    if (circuitKnown) readGaugesOfArms();
     readTransducer();
     readCompletion();
     readExcitation();
@@ -158,6 +159,16 @@ class ChannelReader {
                            "check the reading and the gauge's name");
   }
 
+  void readGaugesOfArms() {
+    const TomlEntry* entry = reader_.entry("arms");
+    if (!entry) return;
+    if (channel_.circuit == CircuitKind::transducer) {
+      if (isOwn(entry)) refuse("arms", "has no gauges of its own", "take \"arms\" out");
+      return;
+    }
+    if (reader_.isA(TomlNode::Type::table, *entry)) readArms(entry->value, rack_, channel_, diagnostics_);
+  }
+
   void readTransducer() {
     const bool wanted = channel_.circuit == CircuitKind::transducer;
     const TomlEntry* entry = reader_.entry("transducer");
@@ -171,23 +182,7 @@ class ChannelReader {
       return;
     }
     if (!reader_.isA(TomlNode::Type::table, *entry)) return;
-    TransducerSheet out;
-    TableReader inner(entry->value, "\"transducer\"", diagnostics_);
-    inner.take("input_resistance", out.inputResistance, {"10 ohm", "100 kohm"});
-    inner.take("output_resistance", out.outputResistance, {"10 ohm", "100 kohm"});
-    inner.take("input_resistance_tolerance", out.inputTolerance, {"0 %", "20 %"});
-    inner.take("output_resistance_tolerance", out.outputTolerance, {"0 %", "20 %"});
-    if (out.inputResistance < out.outputResistance)
-      diagnostics_.error(entry->value.place,
-                         "the input resistance " + show(out.inputResistance) +
-                             " is below the output resistance " + show(out.outputResistance),
-                         "swap them: the compensation resistors stand in the excitation lines");
-    inner.need("sensitivity", out.sensitivity, {"0.01 mV/V", "100 mV/V"}, "\"2 mV/V\"");
-    inner.take("sensitivity_tolerance", out.sensitivityTolerance, {"0 %", "20 %"});
-    inner.need("rated_value", out.ratedValue, {"1e-9", "1e12"}, "50");
-    inner.need("unit", out.unit, {}, "\"kN\"");
-    inner.finish();
-    channel_.transducer = out;
+    channel_.transducer = description::readTransducer(entry->value, diagnostics_);
   }
 
   void readCompletion() {

@@ -52,6 +52,21 @@ struct GaugeSheet {
   double transversePoisson = 0.285;           ///< of the bar on which the maker found the factor
 };
 
+/// What a channel says of the gauge in one arm, where it differs from the others.
+struct ArmGauge {
+  std::optional<Toleranced> resistance;  ///< measured: value and expanded uncertainty as fraction
+  std::optional<units::GaugeFactor> factor;
+  std::optional<units::Fraction> factorTolerance;
+};
+
+/// The gauge in one arm with everything filled in.
+struct GaugeOfArm {
+  units::GaugeFactor factor;
+  units::Fraction factorTolerance;
+  Toleranced resistance;  ///< tolerance of the packet, or expanded uncertainty (k = 2) where measured
+  bool measured = false;
+};
+
 /// A precision resistor that relays switch.
 struct Resistor {
   Place place;
@@ -101,6 +116,15 @@ enum class LeadLoss {
 /// Why the bridge is off zero with nothing applied. It decides the scale at the working point.
 enum class Unbalance { unknown, standing_strain, gauge_off_nominal, completion };
 
+/// What a transducer's certificate says of one resistor across two of its own terminals: by how much it moves the
+/// output at no load.
+struct CertificateShunt {
+  units::Resistance resistance;
+  std::pair<Terminal, Terminal> across;
+  units::Ratio step;  ///< its size; the sign follows from the terminals
+  units::Fraction tolerance;
+};
+
 /// Data of a bought transducer.
 struct TransducerSheet {
   units::Resistance inputResistance = 380.0 * units::ohm;
@@ -111,6 +135,7 @@ struct TransducerSheet {
   units::Fraction sensitivityTolerance = 0.1 * units::percent;
   double ratedValue = 0;
   std::string unit;  ///< "kN", "degC", ...
+  std::optional<CertificateShunt> certificateShunt;  ///< says what the arms look like from outside, trimming included
 };
 
 struct Channel {
@@ -123,6 +148,7 @@ struct Channel {
   std::string gauge;                         ///< key of Rack::gauges; empty for a transducer
   /// Gauge resistance as measured on the specimen, if it was: value and expanded uncertainty as fraction.
   std::optional<Toleranced> measuredResistance;
+  std::array<std::optional<ArmGauge>, 4> arms;  ///< index 0..3: arms 1..4
   double poisson = 0.3;
   std::optional<TransducerSheet> transducer;
   std::map<Terminal, Lead> leads;            ///< exactly the circuit's leads
@@ -173,6 +199,8 @@ struct Rack {
   const Device* device(const std::string& name) const;
   const Channel* channel(const std::string& name) const;
   const GaugeSheet& gaugeOf(const Channel& channel) const;  ///< channel.gauge must not be empty
+  /// The gauge in one arm (0..3): the arm's own figures, else the channel's measured resistance, else the sheet's.
+  GaugeOfArm gaugeOf(const Channel& channel, std::size_t arm) const;
   const Resistor& resistorOf(const Shunt& shunt) const;
 };
 

@@ -26,6 +26,13 @@ Channel readChannel(const TomlNode& table, const Rack& rack, Diagnostics& diagno
 /// `leads = {...}` as one lead for every terminal of the circuit.
 void readLeads(const TomlNode& table, const std::string& what, Channel& channel, Diagnostics& diagnostics);
 
+/// `arms = {...}` of a channel whose circuit, gauge and measured resistance are known: what the gauges of one bridge
+/// differ in.
+void readArms(const TomlNode& table, const Rack& rack, Channel& channel, Diagnostics& diagnostics);
+
+/// `transducer = {...}`.
+TransducerSheet readTransducer(const TomlNode& table, Diagnostics& diagnostics);
+
 /// One item of `shunts = [...]`.
 Shunt readShunt(const TomlNode& table, std::size_t number, const Channel& channel, const Rack& rack,
                 Diagnostics& diagnostics);

@@ -29,6 +29,33 @@ void checkLeadLoss(const description::Channel& channel, const description::Shunt
                     "resistance and use lead_loss = \"in prediction\"");
 }
 
+/// A maker's gauge factor is a straight line through a curve: metal gauges depart from it by about 1 % at 20 000
+/// microstrain (common practice, no source). No shunt sees that.
+void warnOfLargeStrain(const description::Channel& channel, description::Diagnostics& diagnostics) {
+  constexpr Strain kLarge = 10000.0 * microstrain;
+  if (channel.transducer || !channel.expected || *channel.expected < kLarge) return;
+  diagnostics.warning(channel.place,
+                      "channel \"" + channel.name +
+                          "\" expects more than 10000 microstrain, where gauges themselves depart from their gauge factor "
+                          "(by about 1 % at 20000)",
+                      "the correction is exact for the circuit only; use a factor that was found at such strains");
+}
+
+void checkCertificateShunt(const description::Channel& channel, description::Diagnostics& diagnostics) {
+  if (!channel.transducer || !channel.transducer->certificateShunt) return;
+  const auto arm = bridge::armOf(*channel.transducer);
+  if (!arm) {
+    diagnostics.error(channel.place, "channel \"" + channel.name + "\": " + arm.error().message, arm.error().remedy);
+    return;
+  }
+  const double off = *arm / channel.transducer->outputResistance - 1;
+  if (std::abs(off) < 0.05) return;
+  diagnostics.warning(channel.place,
+                      "channel \"" + channel.name + "\": the certificate's shunt sees arms that are " +
+                          percent3(100 * off) + " off the output resistance",
+                      "check the resistor, the terminals and the step in the certificate");
+}
+
 }  // namespace
 
 std::vector<ChannelPrediction> predict(const description::Rack& rack, description::Diagnostics& diagnostics) {
@@ -42,6 +69,8 @@ std::vector<ChannelPrediction> predict(const description::Rack& rack, descriptio
       prediction.unit = channel.transducer->unit;
       prediction.unitsPerStrain = channel.transducer->ratedValue;
     }
+    warnOfLargeStrain(channel, diagnostics);
+    checkCertificateShunt(channel, diagnostics);
     const bridge::Circuit circuit = bridge::circuitOf(rack, channel);
     if (auto zero = bridge::ratio(circuit, {}); !zero) {
       diagnostics.error(channel.place, "channel \"" + channel.name + "\" makes no bridge: " + zero.error().message,

@@ -64,16 +64,16 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
       if (channel.completion && offered.value == *channel.completion) completion_tolerance = offered.tolerance.in(one);
     }
     for (std::size_t k = 0; k < 4; ++k) {
-      relativePerStrain_[k] = weights[k] * gaugeFactor_;
       if (weights[k] != 0) {
-        if (k == 0 && channel.measuredResistance) {
-          // The meter's expanded uncertainty, k = 2.
-          const double u = channel.measuredResistance->tolerance.in(one) / 2;
-          arms_[k] = channel.measuredResistance->value.in(ohm) * (1 + imperfections.gauges * u * random.normal());
-        } else {
-          arms_[k] = off(random, sheet.resistance.value.in(ohm),
-                         imperfections.gauges * sheet.resistance.tolerance.in(one));
-        }
+        const auto gauge = rack.gaugeOf(channel, k);
+        const double share = gauge.resistance.tolerance.in(one);
+        // A meter's uncertainty is expanded, k = 2.
+        arms_[k] = gauge.resistance.value.in(ohm);
+        arms_[k] = gauge.measured ? arms_[k] * (1 + imperfections.gauges * share / 2 * random.normal())
+                                  : off(random, arms_[k], imperfections.gauges * share);
+        // One deviation for all: gauges of one packet.
+        relativePerStrain_[k] = weights[k] * gauge.factor.value() *
+                                (1 + imperfections.gaugeFactors * gauge.factorTolerance.in(one) * deviation);
       } else if (k == 1 || (k == 3 && channel.circuit == CircuitKind::half_opposite)) {
         const double nominal = channel.completion ? channel.completion->in(ohm) : sheet.resistance.value.in(ohm);
         arms_[k] = off(random, nominal, imperfections.completions * completion_tolerance);

@@ -262,6 +262,46 @@ TEST(CircuitOf, PutsGaugesCompletionsAndHalfBridgeInTheirArms) {
   }
 }
 
+TEST(CircuitOf, GivesEachGaugeItsOwnResistanceAndFactor) {
+  Bench bench;
+  bench.channel.circuit = CircuitKind::full_bending;
+  bench.channel.measuredResistance = description::Toleranced{351.0 * ohm, {}};
+  bench.channel.arms[1] = description::ArmGauge{description::Toleranced{349.2 * ohm, {}}, {}, {}};
+  bench.channel.arms[3] = description::ArmGauge{{}, units::GaugeFactor(2.02), {}};
+  const Circuit c = circuitOf(bench.rack, bench.channel);
+  const double resistances[] = {351, 349.2, 351, 351}, factors[] = {2.08, -2.08, 2.08, -2.02};
+  for (std::size_t i = 0; i < 4; ++i) {
+    EXPECT_EQ(c.arms[i].resistance, resistances[i] * ohm);
+    EXPECT_EQ(c.arms[i].relativePerStrain, factors[i]);
+  }
+}
+
+// A resistor R_c across one arm of four of R: step R / (4 R_c + 2 R), so R = 4 R_c s / (1 - 2 s) (Ohm's law).
+TEST(CircuitOf, TransducerTakesItsArmsFromTheCertificatesShunt) {
+  Bench bench;
+  bench.channel.circuit = CircuitKind::transducer;
+  description::TransducerSheet sheet;
+  sheet.inputResistance = sheet.outputResistance = 350.0 * ohm;
+  sheet.certificateShunt = {100e3 * ohm, {Terminal::sig_minus, Terminal::exc_minus}, 0.88 * millivolt_per_volt, {}};
+  const auto arm = armOf(sheet);
+  ASSERT_TRUE(arm) << arm.error().text();
+  EXPECT_NEAR(arm->in(ohm), 4 * 100e3 * 0.88e-3 / (1 - 2 * 0.88e-3), 1e-9);
+
+  sheet.inputResistance = 400.0 * ohm;  // now the resistor reaches over the compensation in EXC- as well
+  bench.channel.transducer = sheet;
+  const Circuit c = circuitOf(bench.rack, bench.channel);
+  const ShuntPath shunt = path(Terminal::sig_minus, Terminal::exc_minus, Side::gauge, 100e3);
+  Circuit unloaded = c;
+  unloaded.inputResistance = kInfinite * ohm;
+  EXPECT_NEAR(millivolts(unloaded, 0, {&shunt, 1}), 0.88, 1e-12);
+  EXPECT_NEAR(ratioAt(unloaded, 1), 2e-3, 1e-15) << "the sensitivity is the certificate's, whatever the arms";
+
+  sheet.certificateShunt->step = 8.8 * millivolt_per_volt;
+  const auto none = armOf(sheet);
+  ASSERT_FALSE(none);
+  EXPECT_THAT(none.error().text(), HasSubstr("cannot give 8.8 mV/V on a transducer of 350 ohm"));
+}
+
 // A data sheet's input resistance, output resistance and sensitivity must come back out of the network.
 TEST(CircuitOf, TransducerGivesItsDataSheetBack) {
   Bench bench;

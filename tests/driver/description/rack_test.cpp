@@ -205,6 +205,25 @@ TEST(Rack, reportsOneMistakeAtItsPlace) {
        "24:1: unknown key \"guage\" in channel \"S01\" | did you mean \"gauge\"?"},
       {"gauge = \"G350\"", "gauge = \"G350\"\ngauge_resistance = { value = \"350.1 ohm\" }",
        "25:20: \"uncertainty\" is missing from \"gauge_resistance\" | add it: uncertainty = \"0.02 %\""},
+      {"gauge = \"G350\"", "gauge = \"G350\"\narms = { 2 = { factor = 2.1 } }",
+       "25:10: arm 2 of a quarter 3-wire is no gauge | its gauges are in arms 1"},
+      {"gauge = \"G350\"", "gauge = \"G350\"\narms = { 5 = { factor = 2.1 } }",
+       "25:10: a bridge has no arm \"5\" | its gauges are in arms 1"},
+      {"gauge = \"G350\"", "gauge = \"G350\"\narms = { 1 = 2.1 }",
+       "25:14: arm 1 must be a table | write it like 1 = { resistance = \"350.4 ohm\", uncertainty = \"0.02 %\" }"},
+      {"gauge = \"G350\"", "gauge = \"G350\"\narms = { 1 = { resistance = \"350.2 ohm\" } }",
+       "25:14: \"uncertainty\" is missing from arm 1 of channel \"S01\" | add it: uncertainty = \"0.02 %\""},
+      {"gauge = \"G350\"", "gauge = \"G350\"\narms = { 1 = { uncertainty = \"0.1 %\" } }",
+       "25:16: an uncertainty without the resistance it belongs to | add resistance = \"350.4 ohm\""},
+      {"gauge = \"G350\"", "gauge = \"G350\"\narms = { 1 = { factor_tolerance = \"0.1 %\" } }",
+       "25:16: a tolerance without the factor it belongs to | add factor = 2.08, or take it out: the gauge's own "
+       "tolerance holds"},
+      {"gauge = \"G350\"", "gauge = \"G350\"\narms = { 1 = { factor = 0.1 } }",
+       "25:25: \"factor\" is out of range: 0.1 | it must be between 0.5 and 200"},
+      {"gauge = \"G350\"",
+       "gauge = \"G350\"\ngauge_resistance = { value = \"350 ohm\", uncertainty = \"0.02 %\" }\n"
+       "arms = { 1 = { resistance = \"350 ohm\", uncertainty = \"0.02 %\" } }",
+       "26:16: the resistance of arm 1 is given twice: here and by \"gauge_resistance\" | keep one of the two"},
       {"gauge = \"G350\"", "gauge = \"G350\"\ncompletion = \"1 kohm\"",
        "25:14: device \"amp1\" has no completion resistor of 1 kohm | its completion resistors are 120 ohm, "
        "350 ohm"},
@@ -261,6 +280,23 @@ TEST(Rack, reportsOneMistakeAtItsPlace) {
        "mV/V\", "
        "rated_value = 50, "
        "unit = \"kN\" }"},
+      {"leads = { each = \"0.5 ohm\" }", "leads = { each = \"0.5 ohm\" }\narms = { 1 = { factor = 2 } }",
+       "36:1: a transducer circuit has no gauges of its own | take \"arms\" out"},
+      {"unit = \"kN\" }",
+       "unit = \"kN\", certificate_shunt = { resistance = \"100 kohm\", step = \"0.873 mV/V\", tolerance = \"0.1 %\", "
+       "across = [\"SIG-\", \"SENSE+\"] } }",
+       "34:178: a transducer has no terminal \"SENSE+\" to put a resistor on | it can be \"EXC+\", \"EXC-\", \"SIG+\" or "
+       "\"SIG-\""},
+      {"unit = \"kN\" }",
+       "unit = \"kN\", certificate_shunt = { resistance = \"100 kohm\", step = \"0.873 mV/V\", tolerance = \"0.1 %\", "
+       "across = [\"EXC+\", \"EXC-\"] } }",
+       "34:169: a resistor there is across no arm of the transducer | name one excitation and one signal terminal: "
+       "[\"SIG-\", \"EXC-\"]"},
+      {"unit = \"kN\" }",
+       "unit = \"kN\", output_resistance_tolerance = \"1 %\", certificate_shunt = { resistance = \"100 kohm\", step = "
+       "\"0.873 mV/V\", tolerance = \"0.1 %\", across = [\"SIG-\", \"EXC-\"] } }",
+       "34:71: the certificate's shunt says what the output resistance does to a step, and how well | take "
+       "\"output_resistance_tolerance\" out"},
       {"{ each = \"0.5 ohm\" }",
        "{ each = \"0.5 ohm\" }\nshunts = [{ resistor = \"RC\", relay = \"amp1/2\", across = "
        "\"half bridge upper\" }]",
@@ -306,6 +342,26 @@ TEST(Rack, reportsOneMistakeAtItsPlace) {
           got, [](const std::string& line) { return line.find("is called \"amp1\"") != std::string::npos; });
     EXPECT_EQ(got, Lines{c.problem}) << "instead of " << c.from;
   }
+}
+
+TEST(Rack, gaugesOfOneBridgeMayDiffer) {
+  std::string text = sample::spoilt(sample::kRack, "\"quarter 3-wire\"", "\"half bending\"");
+  text = sample::spoilt(text, "\"completion\"", "\"gauge\"");
+  text = sample::spoilt(text, "gauge = \"G350\"",
+                        "gauge = \"G350\"\n"
+                        "arms = { 1 = { resistance = \"350.4 ohm\", uncertainty = \"0.02 %\" }, "
+                        "2 = { factor = 2.05, factor_tolerance = \"0.5 %\" } }");
+  const Rack rack = load(text);
+  const Channel& channel = *rack.channel("S01");
+  const GaugeOfArm first = rack.gaugeOf(channel, 0), second = rack.gaugeOf(channel, 1);
+  EXPECT_TRUE(first.measured);
+  EXPECT_EQ(first.resistance.value, 350.4 * units::ohm);
+  EXPECT_EQ(first.resistance.tolerance, 0.02 * units::percent);
+  EXPECT_EQ(first.factor.value(), 2.1);
+  EXPECT_FALSE(second.measured);
+  EXPECT_EQ(second.resistance.value, 350.0 * units::ohm);
+  EXPECT_EQ(second.factor.value(), 2.05);
+  EXPECT_EQ(second.factorTolerance, 0.5 * units::percent);
 }
 
 TEST(Rack, warnsOfAGaugeFarOffItsNominal) {
