@@ -57,14 +57,16 @@ Result<units::Resistance> armOf(const description::TransducerSheet& sheet) {
   if (!least) return std::unexpected(least.error());
   if (!most) return std::unexpected(most.error());
   if (!(*least <= wanted && wanted <= *most)) {
-    return fail(ErrorCode::bad_use,
-                fmt::format("the certificate's shunt of {:.6g} ohm cannot give {:.6g} mV/V on a transducer of {:.6g} "
-                            "ohm; that would be about {:.6g} mV/V",
-                            shunt.resistance.in(units::ohm), wanted * 1e3, nominal,
-                            250 * nominal / shunt.resistance.in(units::ohm)),
-                {}, "check the resistor, the step and the output resistance in the certificate");
+    return fail(
+        ErrorCode::bad_use,
+        fmt::format("the certificate's shunt of {:.6g} ohm cannot give {:.6g} mV/V on a transducer of {:.6g} "
+                    "ohm; that would be about {:.6g} mV/V",
+                    shunt.resistance.in(units::ohm), wanted * 1e3, nominal,
+                    250 * nominal / shunt.resistance.in(units::ohm)),
+        {}, "check the resistor, the step and the output resistance in the certificate");
   }
-  for (double middle = low + (high - low) / 2; low < middle && middle < high; middle = low + (high - low) / 2) {
+  for (double middle = low + (high - low) / 2; low < middle && middle < high;
+       middle = low + (high - low) / 2) {
     const auto step = stepAt(middle);
     if (!step) return std::unexpected(step.error());
     (*step < wanted ? low : high) = middle;

@@ -16,7 +16,8 @@ namespace {
 constexpr double kOuterState = 0.8660254037844386;
 constexpr int kGrid = 400;
 
-// Chebyshev points for the bend. None of them is near the centre, where it vanishes and would be divided by 0.
+// Chebyshev points for the bend. None of them is near the centre, where it vanishes and would be divided by
+// 0.
 constexpr std::array<double, 4> kBendStates{-0.9238795325112867, -0.3826834323650898, 0.3826834323650898,
                                             0.9238795325112867};
 
@@ -43,7 +44,8 @@ Polynomial shifted(Polynomial c, double by) {
   return c;
 }
 
-/// The same map with its strain counted from where u has this value: u shrinks such that its own slope stays 1.
+/// The same map with its strain counted from where u has this value: u shrinks such that its own slope
+/// stays 1.
 RationalMap countedFrom(const RationalMap& map, double u) {
   const Polynomial c = shifted(polynomialOf(map), u);
   const double slope = c[1];
@@ -100,8 +102,8 @@ RationalMap centred(double slope, double w, double ratio0) {
 }
 
 /// u of the Moebius part at the states for the bend; `misses` becomes what it is short of the strain there.
-Result<std::array<double, 4>> missesOf(const Circuit& circuit, const RationalMap& map, double centre, double width,
-                                       std::array<double, 4>& misses) {
+Result<std::array<double, 4>> missesOf(const Circuit& circuit, const RationalMap& map, double centre,
+                                       double width, std::array<double, 4>& misses) {
   std::array<double, 4> u{};
   for (std::size_t k = 0; k < 4; ++k) {
     const double e = kBendStates[k] * width;

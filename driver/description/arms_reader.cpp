@@ -19,7 +19,8 @@ class ArmReader {
     reader_.take("factor", out.factor, {"0.5", "200"});
     const bool toleranced = reader_.take("factor_tolerance", out.factorTolerance, {"0 %", "20 %"});
     if (toleranced && !reader_.has("factor"))
-      diagnostics_.error(reader_.entry("factor_tolerance")->place, "a tolerance without the factor it belongs to",
+      diagnostics_.error(reader_.entry("factor_tolerance")->place,
+                         "a tolerance without the factor it belongs to",
                          "add factor = 2.08, or take it out: the gauge's own tolerance holds");
     reader_.finish();
     return out;
@@ -29,7 +30,8 @@ class ArmReader {
   void readResistance(const Rack& rack, ArmGauge& out) {
     if (!reader_.has("resistance")) {
       if (reader_.has("uncertainty"))
-        diagnostics_.error(reader_.entry("uncertainty")->place, "an uncertainty without the resistance it belongs to",
+        diagnostics_.error(reader_.entry("uncertainty")->place,
+                           "an uncertainty without the resistance it belongs to",
                            "add resistance = \"350.4 ohm\"");
       return;
     }
@@ -40,7 +42,8 @@ class ArmReader {
     out.resistance = measured;
     const TomlEntry& entry = *reader_.entry("resistance");
     if (arm_ == 0 && channel_.measuredResistance)
-      diagnostics_.error(entry.place, "the resistance of arm 1 is given twice: here and by \"gauge_resistance\"",
+      diagnostics_.error(entry.place,
+                         "the resistance of arm 1 is given twice: here and by \"gauge_resistance\"",
                          "keep one of the two");
     const auto sheet = rack.gauges.find(channel_.gauge);
     if (sheet == rack.gauges.end()) return;
@@ -71,15 +74,17 @@ void readArms(const TomlNode& table, const Rack& rack, Channel& channel, Diagnos
     const std::size_t arm = isArm ? static_cast<std::size_t>(entry.key[0] - '1') : 0;
     if (!isArm || weights[arm] == 0) {
       if (entry.inherited) continue;
-      diagnostics.error(entry.place,
-                        isArm ? "arm " + entry.key + " of a " + std::string(name(channel.circuit)) + " is no gauge"
-                              : "a bridge has no arm \"" + entry.key + '"',
-                        "its gauges are in arms " + gauges);
+      diagnostics.error(
+          entry.place,
+          isArm ? "arm " + entry.key + " of a " + std::string(name(channel.circuit)) + " is no gauge"
+                : "a bridge has no arm \"" + entry.key + '"',
+          "its gauges are in arms " + gauges);
       continue;
     }
     if (entry.value.type != TomlNode::Type::table) {
-      diagnostics.error(entry.value.place, "arm " + entry.key + " must be a table",
-                        "write it like " + entry.key + " = { resistance = \"350.4 ohm\", uncertainty = \"0.02 %\" }");
+      diagnostics.error(
+          entry.value.place, "arm " + entry.key + " must be a table",
+          "write it like " + entry.key + " = { resistance = \"350.4 ohm\", uncertainty = \"0.02 %\" }");
       continue;
     }
     channel.arms[arm] = ArmReader(entry, arm, channel, diagnostics).read(rack);

@@ -63,8 +63,8 @@ TransducerSheet readTransducer(const TomlNode& table, Diagnostics& diagnostics) 
   reader.take("output_resistance_tolerance", out.outputTolerance, {"0 %", "20 %"});
   if (out.inputResistance < out.outputResistance)
     diagnostics.error(table.place,
-                      "the input resistance " + show(out.inputResistance) + " is below the output resistance " +
-                          show(out.outputResistance),
+                      "the input resistance " + show(out.inputResistance) +
+                          " is below the output resistance " + show(out.outputResistance),
                       "swap them: the compensation resistors stand in the excitation lines");
   reader.need("sensitivity", out.sensitivity, {"0.01 mV/V", "100 mV/V"}, "\"2 mV/V\"");
   reader.take("sensitivity_tolerance", out.sensitivityTolerance, {"0 %", "20 %"});
@@ -73,9 +73,10 @@ TransducerSheet readTransducer(const TomlNode& table, Diagnostics& diagnostics) 
   if (const TomlNode* shunt = reader.table("certificate_shunt")) {
     out.certificateShunt = readCertificateShunt(*shunt, diagnostics);
     if (reader.has("output_resistance_tolerance"))
-      diagnostics.error(reader.entry("output_resistance_tolerance")->place,
-                        "the certificate's shunt says what the output resistance does to a step, and how well",
-                        "take \"output_resistance_tolerance\" out");
+      diagnostics.error(
+          reader.entry("output_resistance_tolerance")->place,
+          "the certificate's shunt says what the output resistance does to a step, and how well",
+          "take \"output_resistance_tolerance\" out");
   }
   reader.finish();
   return out;

@@ -1,3 +1,4 @@
+// proves P-14
 #include <gtest/gtest.h>
 
 #include <algorithm>
