@@ -5,44 +5,19 @@
 #include <limits>
 
 #include "driver/calibration/channel_model.h"
+#include "driver/calibration/linearity.h"
+#include "driver/calibration/step_figures.h"
 #include "driver/calibration/uncertainty.h"
 
 namespace shuntwright::calibration {
 
 using namespace units;
+using description::Channel;
+using description::Rack;
 using metrology::Component;
 using metrology::coverageHalfWidth;
 using metrology::Shape;
 using metrology::studentFactor;
-using description::Channel;
-using description::Rack;
-
-namespace {
-
-/// Weight of the later of two open windows in the line through both, at the middle of the closed one between them.
-double laterWeight(const ShuntReadings& readings, std::size_t k) {
-  const auto middle_s = [&](const Window& w) {
-    return seconds(w.start - readings.opened[k].start) + 0.5 * seconds(w.end - w.start);
-  };
-  const double before = middle_s(readings.opened[k]), after = middle_s(readings.opened[k + 1]);
-  return after > before ? (middle_s(readings.closed[k]) - before) / (after - before) : 0.5;
-}
-
-std::size_t stepCount(const ShuntReadings& readings) {
-  return readings.opened.empty() ? 0 : std::min(readings.closed.size(), readings.opened.size() - 1);
-}
-
-}  // namespace
-
-std::vector<Ratio> stepsOf(const ShuntReadings& readings) {
-  std::vector<Ratio> steps;
-  for (std::size_t k = 0; k < stepCount(readings); ++k) {
-    const double later = laterWeight(readings, k);
-    const Ratio line = (1 - later) * readings.opened[k].mean + later * readings.opened[k + 1].mean;
-    steps.push_back(readings.closed[k].mean - line);
-  }
-  return steps;
-}
 
 double correlationFactor(const Rack& rack, const Channel& channel) {
   const auto& device = *rack.device(channel.device);
@@ -58,13 +33,15 @@ double correlationFactor(const Rack& rack, const Channel& channel) {
   return (1 + rho) / (1 - rho);
 }
 
-bool isAbsolute(const Channel& channel) { return channel.transducer && channel.shunts.empty(); }
+bool isAbsolute(const Channel& channel) {
+  return channel.transducer && channel.shunts.empty();
+}
 
 Result<void> correct(const Channel& channel, const ChannelModel& model, double span, Ratio zero,
                      ChannelResult& result) {
   const Strain range = channel.transducer ? 1.2 * strain : 20000.0 * microstrain;
   auto point = isAbsolute(channel) ? Result<WorkingPoint>(WorkingPoint{model.inTest, {}})
-                        : explain(model.inTest, zero / span, model.cause);
+                                   : explain(model.inTest, zero / span, model.cause);
   if (!point) return std::unexpected(std::move(point.error()));
   auto fitted = bridge::mapOf(point->circuit, point->standing, range);
   if (!fitted) return std::unexpected(std::move(fitted.error()));
@@ -76,81 +53,12 @@ Result<void> correct(const Channel& channel, const ChannelModel& model, double s
 
 namespace {
 
-template <class Get>
-double meanOf(const std::vector<Window>& windows, Get get) {
-  double sum = 0;
-  for (const auto& w : windows) sum += get(w);
-  return windows.empty() ? 0 : sum / static_cast<double>(windows.size());
+double valueOf(Ratio r) {
+  return r.in(volt_per_volt);
 }
 
-double valueOf(Ratio r) { return r.in(volt_per_volt); }
-
-/// Figures of one shunt, and the standard uncertainty of its mean step.
-struct StepFigures {
-  ShuntResult result;
-  double u_V_per_V = 0;
-  double degrees = 1;
-};
-
-StepFigures figuresOf(const description::Shunt& shunt, const ShuntReadings& readings, double correlation) {
-  StepFigures f;
-  ShuntResult& r = f.result;
-  r.name = shunt.name;
-  r.settling = readings.settling;
-  r.repeats = static_cast<int>(readings.closed.size());
-  const Ratio unknown = std::numeric_limits<double>::quiet_NaN() * volt_per_volt;
-  r.before = r.returned = r.after = r.measuredStep = unknown;
-  if (readings.opened.empty()) return f;
-  r.before = readings.opened.front().mean;
-  r.returned = readings.opened.back().mean;
-  if (readings.closed.empty()) return f;
-  r.after = meanOf(readings.closed, [](const Window& w) { return valueOf(w.mean); }) * volt_per_volt;
-  const auto steps = stepsOf(readings);
-  if (steps.empty()) return f;
-  const auto count = static_cast<double>(steps.size());
-  double mean = 0;
-  for (const auto step : steps) mean += valueOf(step) / count;
-  r.measuredStep = mean * volt_per_volt;
-  double square = 0;
-  for (const auto step : steps) square += (valueOf(step) - mean) * (valueOf(step) - mean);
-  const double repeatDeviation = steps.size() > 1 ? std::sqrt(square / (count - 1)) : 0;
-  r.stepDeviation = repeatDeviation * volt_per_volt;
-
-  double variance = 0, degrees = 0, samples = 0;
-  for (const auto* windows : {&readings.opened, &readings.closed}) {
-    for (const auto& w : *windows) {
-      const double own = std::max(1, w.samples - 2);
-      variance += own * valueOf(w.deviation) * valueOf(w.deviation);
-      degrees += own;
-      samples += w.samples;
-    }
-  }
-  variance /= std::max(1.0, degrees);
-  r.noise = std::sqrt(variance) * volt_per_volt;
-  const double perWindow =
-      variance * correlation / std::max(1.0, samples / static_cast<double>(readings.opened.size() + readings.closed.size()));
-  // Each window by its weight in the mean step; two neighbouring steps share an open one.
-  std::vector<double> weights(steps.size() + 1, 0.0);
-  double squares = 1 / count;
-  for (std::size_t k = 0; k < steps.size(); ++k) {
-    const double later = laterWeight(readings, k);
-    weights[k] += (1 - later) / count;
-    weights[k + 1] += later / count;
-  }
-  for (const double weight : weights) squares += weight * weight;
-  f.u_V_per_V = std::sqrt(perWindow * squares);
-  // Samples that a filter makes alike say less about their scatter, too.
-  f.degrees = std::max(1.0, degrees / correlation);
-  // Repeats that scatter far more than the noise explains speak for themselves.
-  const double expected = std::sqrt(perWindow * 1.5);
-  if (repeatDeviation > 3 * expected && repeatDeviation > 0) {
-    f.u_V_per_V = repeatDeviation / std::sqrt(count);
-    f.degrees = count - 1;
-  }
-  return f;
-}
-
-/// Half-width for the whole bridge: its gauges by their shares in the signal, all off the same way (one batch).
+/// Half-width for the whole bridge: its gauges by their shares in the signal, all off the same way (one
+/// batch).
 double factorTolerance_percent(const Rack& rack, const Channel& channel) {
   const auto weights = description::armWeights(channel.circuit, channel.poisson);
   double sum = 0, whole = 0;
@@ -170,8 +78,8 @@ void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& re
     result.unit = channel.transducer->unit;
     result.unitsPerStrain = channel.transducer->ratedValue;
   }
-  const double factor_percent =
-      channel.transducer ? channel.transducer->sensitivityTolerance.in(percent) : factorTolerance_percent(rack, channel);
+  const double factor_percent = channel.transducer ? channel.transducer->sensitivityTolerance.in(percent)
+                                                   : factorTolerance_percent(rack, channel);
   const Component rectangle{Shape::rectangular, factor_percent / std::sqrt(3.0)};
   result.factorUncertainty_percent = coverageHalfWidth(std::span(&rectangle, 1));
   if (channel.leads.empty()) return;
@@ -188,98 +96,176 @@ void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& re
   result.leadUncertainty = worst * ohm;
 }
 
+/// One channel's way from readings to correction, budget and verdict.
+class Analysis {
+ public:
+  Analysis(const Rack& rack, const Channel& channel, const ChannelReadings& readings)
+      : rack_(rack),
+        channel_(channel),
+        readings_(readings),
+        model_(modelOf(rack, channel)),
+        correlation_(correlationFactor(rack, channel)),
+        digit_(rack.device(channel.device)->profile->inputs->resolution) {}
+
+  ChannelResult run() {
+    describeChannel(rack_, channel_, result_);
+    takeZero();
+    takeSteps();
+    auto done = solve();
+    // Limits in microstrain speak of strain gauges; for a transducer they are taken as the indicated strain
+    // of a quarter bridge of factor 2.
+    judge(result_, readings_, rack_.limits, channel_.transducer ? 0.5 : slope_);
+    if (!done) {
+      result_.findings.push_back({"no-solution", done.error().message, done.error().remedy});
+      result_.verdict = Verdict::fail;
+      if (auto nominal = bridge::mapOf(model_.inTest)) result_.correction = nominal->map;
+    }
+    return std::move(result_);
+  }
+
+ private:
+  void takeZero() {
+    if (readings_.zero) {
+      const Window& zero = *readings_.zero;
+      result_.zero = zero.mean;
+      result_.lostSamples += zero.lost;
+      zeroNoise_ = zero.deviation * std::sqrt(correlation_ / std::max(1, zero.samples));
+    } else if (!readings_.shunts.empty() && !readings_.shunts.front().opened.empty()) {
+      // No zero could be read; the first reading of all was taken with every relay open, too.
+      result_.zero = readings_.shunts.front().opened.front().mean;
+    }
+    result_.zeroReadingUncertainty = studentFactor(metrology::kInfinity) * zeroNoise_;
+  }
+
+  void takeSteps() {
+    for (std::size_t k = 0; k < readings_.shunts.size(); ++k) {
+      StepFigures f = figuresOf(channel_.shunts[k], readings_.shunts[k], correlation_);
+      scale_.measured.push_back(f.result.measuredStep);
+      const double digits = valueOf(resolutionOfStep(digit_));
+      noise_.push_back(std::hypot(f.u_V_per_V, digits) * volt_per_volt);
+      for (const auto* windows : {&readings_.shunts[k].opened, &readings_.shunts[k].closed}) {
+        for (const auto& w : *windows) result_.lostSamples += w.lost;
+      }
+      if (f.result.measured()) {
+        ++measured_;
+        const double step = std::abs(valueOf(f.result.measuredStep));
+        smallest_ = smallest_ == 0 ? step : std::min(smallest_, step);
+        worstReturn_ = std::max(worstReturn_, std::abs(valueOf(f.result.returned - f.result.before)));
+      }
+      result_.shunts.push_back(f.result);
+      figures_.push_back(std::move(f));
+    }
+  }
+
+  Result<void> solve() {
+    if (auto done = findSpan(); !done) return done;
+    const double usable = usableSpan();
+    if (auto done = correct(channel_, model_, usable, result_.zero, result_); !done) return done;
+    if (measured_ > 0) {
+      if (auto done = budgetScale(usable); !done) return done;
+      if (auto done = findStraightness(); !done) return done;
+    }
+    if (readings_.zero) budgetZero(usable);
+    return {};
+  }
+
+  double usableSpan() const {
+    return result_.spanRatio > 0.2 && result_.spanRatio < 5 ? result_.spanRatio : 1;
+  }
+
+  /// Span and working point depend a little on each other (zero = reading / span): a few rounds settle it.
+  Result<void> findSpan() {
+    for (int round = 0; round < 4; ++round) {
+      auto prediction = predictScale(model_, result_.zero / result_.spanRatio);
+      if (!prediction) return std::unexpected(std::move(prediction.error()));
+      slope_ = prediction->slope_per_strain;
+      for (std::size_t k = 0; k < result_.shunts.size(); ++k) {
+        result_.shunts[k].predictedStep = prediction->steps[k];
+      }
+      if (measured_ > 0 && scale_.weights.empty()) {
+        auto uncertain = predictedSteps(rack_, channel_, result_.zero / result_.spanRatio);
+        if (!uncertain) return std::unexpected(std::move(uncertain.error()));
+        predicted_ = std::move(*uncertain);
+        scale_.weights = stepWeights(predicted_, noise_);
+      }
+      result_.spanRatio = spanOf(scale_.measured, prediction->steps, scale_.weights);
+      if (usableSpan() != result_.spanRatio) break;  // judged later; not a span to correct with
+    }
+    return {};
+  }
+
+  Result<void> budgetScale(double usable) {
+    std::vector<metrology::WeightedDegrees> parts;
+    double variance = 0, whole = 0;
+    for (std::size_t k = 0; k < figures_.size(); ++k) {
+      if (!figures_[k].result.measured()) continue;
+      const double step = std::abs(valueOf(result_.shunts[k].predictedStep));
+      const double u = scale_.weights[k] * step * figures_[k].u_V_per_V;
+      parts.push_back({u, figures_[k].degrees});
+      variance += u * u;
+      whole += scale_.weights[k] * step * std::abs(valueOf(result_.shunts[k].measuredStep));
+    }
+    scale_.zero = result_.zero / usable;
+    scale_.scatter.stepRelative = whole > 0 ? std::sqrt(variance) / whole : 0;
+    scale_.scatter.stepDegrees = metrology::effectiveDegrees(parts);
+    scale_.scatter.resolution = digit_;
+    scale_.scatter.smallestStep = smallest_ * volt_per_volt;
+    auto budget = scaleBudget(rack_, channel_, scale_);
+    if (!budget) return std::unexpected(std::move(budget.error()));
+    result_.budget = std::move(*budget);
+    return {};
+  }
+
+  Result<void> findStraightness() {
+    for (std::size_t k = 0; k < result_.shunts.size(); ++k)
+      predicted_.steps[k] = result_.shunts[k].predictedStep;
+    const auto line = linearityOf(predicted_, scale_.measured, noise_);
+    if (!line) return std::unexpected(line.error());
+    for (std::size_t k = 0; k < result_.shunts.size(); ++k) {
+      ShuntResult& shunt = result_.shunts[k];
+      shunt.residual = line->residuals[k];
+      const double step = std::abs(valueOf(shunt.predictedStep));
+      const double u = std::hypot(std::sqrt(predicted_.covariance(k, k)), valueOf(noise_[k]));
+      if (step > 0) shunt.deviationUncertainty = studentFactor(metrology::kInfinity) * u / step * one;
+    }
+    if (measured_ < 2) return {};
+    result_.straightness =
+        Straightness{line->worst_percent, line->worstExpanded_percent, line->lackOfFit.statistic,
+                     line->lackOfFit.degrees, line->lackOfFit.probability};
+    return {};
+  }
+
+  void budgetZero(double usable) {
+    ZeroScatter scatter;
+    scatter.standardUncertainty = zeroNoise_ / usable;
+    scatter.resolution = digit_ / usable;
+    scatter.returnSpread = worstReturn_ / usable * volt_per_volt;
+    scatter.stability = rack_.device(channel_.device)->profile->inputs->zeroStability / usable;
+    if (auto u = zeroUncertainty(rack_, channel_, result_.zero / usable, scatter)) {
+      result_.zeroExpandedUncertainty = studentFactor(metrology::kInfinity) * *u;
+    }
+  }
+
+  const Rack& rack_;
+  const Channel& channel_;
+  const ChannelReadings& readings_;
+  const ChannelModel model_;
+  const double correlation_;
+  const Ratio digit_;
+  ChannelResult result_;
+  std::vector<StepFigures> figures_;
+  std::vector<Ratio> noise_;  ///< of each step, with the resolution
+  PredictedSteps predicted_;
+  ScaleReadings scale_;
+  Ratio zeroNoise_;
+  int measured_ = 0;
+  double slope_ = 0, smallest_ = 0, worstReturn_ = 0;
+};
+
 }  // namespace
 
 ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelReadings& readings) {
-  ChannelResult result;
-  describeChannel(rack, channel, result);
-  const ChannelModel model = modelOf(rack, channel);
-  const double correlation = correlationFactor(rack, channel);
-  if (readings.zero) {
-    result.zero = readings.zero->mean;
-    result.lostSamples += readings.zero->lost;
-  } else if (!readings.shunts.empty() && !readings.shunts.front().opened.empty()) {
-    // No zero could be read; the first reading of all was taken with every relay open, too.
-    result.zero = readings.shunts.front().opened.front().mean;
-  }
-
-  std::vector<Ratio> measured;
-  std::vector<metrology::WeightedDegrees> weighted;
-  double variance = 0, squares = 0, worstReturn = 0, smallest = 0;
-  for (std::size_t k = 0; k < readings.shunts.size(); ++k) {
-    StepFigures f = figuresOf(channel.shunts[k], readings.shunts[k], correlation);
-    measured.push_back(f.result.measuredStep);
-    for (const auto* windows : {&readings.shunts[k].opened, &readings.shunts[k].closed}) {
-      for (const auto& w : *windows) result.lostSamples += w.lost;
-    }
-    if (f.result.measured()) {
-      const double step = std::abs(valueOf(f.result.measuredStep));
-      const double u = step * f.u_V_per_V;
-      weighted.push_back({u, f.degrees});
-      variance += u * u;
-      squares += step * step;
-      smallest = smallest == 0 ? step : std::min(smallest, step);
-      worstReturn = std::max(worstReturn, std::abs(valueOf(f.result.returned - f.result.before)));
-    }
-    result.shunts.push_back(std::move(f.result));
-  }
-
-  // Span and working point depend a little on each other (zero = reading / span): a few rounds settle it.
-  double span = 1, slope = 0;
-  std::optional<Error> trouble;
-  for (int round = 0; round < 4; ++round) {
-    auto prediction = predictScale(model, result.zero / span);
-    if (!prediction) {
-      trouble = std::move(prediction.error());
-      break;
-    }
-    slope = prediction->slope_per_strain;
-    for (std::size_t k = 0; k < result.shunts.size(); ++k) result.shunts[k].predictedStep = prediction->steps[k];
-    span = spanOf(measured, prediction->steps);
-    if (!(span > 0.2 && span < 5)) break;  // judged below; not a span to correct with
-  }
-  result.spanRatio = span;
-  const double usable = span > 0.2 && span < 5 ? span : 1;
-  if (!trouble) {
-    if (auto corrected = correct(channel, model, usable, result.zero, result); !corrected) {
-      trouble = std::move(corrected.error());
-    }
-  }
-  const Ratio resolution = rack.device(channel.device)->profile->inputs->resolution;
-  if (!trouble && squares > 0) {
-    ScaleReadings scale{result.zero / usable, measured, {}};
-    scale.scatter.stepRelative = std::sqrt(variance) / squares;
-    scale.scatter.stepDegrees = metrology::effectiveDegrees(weighted);
-    scale.scatter.resolution = resolution;
-    scale.scatter.smallestStep = smallest * volt_per_volt;
-    auto budget = scaleBudget(rack, channel, scale);
-    if (budget) {
-      result.budget = std::move(*budget);
-    } else {
-      trouble = std::move(budget.error());
-    }
-  }
-  if (!trouble && readings.zero) {
-    const Window& zero = *readings.zero;
-    ZeroScatter scatter;
-    scatter.standardUncertainty =
-        zero.deviation * std::sqrt(correlation / std::max(1, zero.samples)) / usable;
-    scatter.resolution = resolution / usable;
-    scatter.returnSpread = worstReturn / usable * volt_per_volt;
-    scatter.stability = rack.device(channel.device)->profile->inputs->zeroStability / usable;
-    if (auto u = zeroUncertainty(rack, channel, result.zero / usable, scatter)) {
-      result.zeroExpandedUncertainty = studentFactor(std::numeric_limits<double>::infinity()) * *u;
-    }
-  }
-  // Limits in microstrain speak of strain gauges; for a transducer they are taken as the indicated strain of a
-  // quarter bridge of factor 2.
-  judge(result, readings, rack.limits, channel.transducer ? 0.5 : slope);
-  if (trouble) {
-    result.findings.push_back({"no-solution", trouble->message, trouble->remedy});
-    result.verdict = Verdict::fail;
-    if (auto nominal = bridge::mapOf(model.inTest)) result.correction = nominal->map;
-  }
-  return result;
+  return Analysis(rack, channel, readings).run();
 }
 
 }  // namespace shuntwright::calibration

@@ -5,30 +5,17 @@
 
 #include "driver/calibration/channel_model.h"
 #include "driver/calibration/record.h"
+#include "driver/calibration/step_figures.h"
 #include "driver/calibration/window.h"
 #include "driver/core/error.h"
 #include "driver/description/rack.h"
 
 namespace shuntwright::calibration {
 
-/// All readings of one shunt: open, closed, open, closed, ... open. Shape: opened has one window more than
-/// closed, unless the relay would not work.
-struct ShuntReadings {
-  std::vector<Window> opened;
-  std::vector<Window> closed;
-  Nanoseconds settling{0};
-  bool steady = true;
-  std::optional<Error> relayError;
-};
-
 struct ChannelReadings {
   std::vector<ShuntReadings> shunts;  ///< as the channel lists them
   std::optional<Window> zero;         ///< at no load, every relay open
 };
-
-/// Steps with linear drift removed: each closed window against the straight line through the open ones beside it, at
-/// its own time (A-B-A). Settling makes the waits unequal; the plain mean of the two would leave part of the drift.
-std::vector<units::Ratio> stepsOf(const ShuntReadings& readings);
 
 /// By how much the variance of a mean exceeds that of independent samples, when an input filter of time
 /// constant tau makes neighbours alike: (1 + rho) / (1 - rho), rho = exp(-T / tau).
@@ -38,8 +25,8 @@ double correlationFactor(const description::Rack& rack, const description::Chann
 bool isAbsolute(const description::Channel& channel);
 
 /// Sets the correction for a span and a zero reading. Errors: as explain() and bridge::mapOf().
-Result<void> correct(const description::Channel& channel, const ChannelModel& model, double span, units::Ratio zero,
-                     ChannelResult& result);
+Result<void> correct(const description::Channel& channel, const ChannelModel& model, double span,
+                     units::Ratio zero, ChannelResult& result);
 
 /// Turns a channel's readings into its correction, budget and verdict. Never fails as a whole: what cannot be
 /// worked out is a finding and a failed verdict, and the correction is then the nominal one.

@@ -3,7 +3,6 @@
 #include <array>
 #include <cmath>
 
-#include "driver/metrology/least_squares.h"
 #include "driver/units/copper.h"
 
 namespace shuntwright::calibration {
@@ -137,15 +136,17 @@ Result<ScalePrediction> predictScale(const ChannelModel& model, Ratio zero) {
   return prediction;
 }
 
-double spanOf(const std::vector<Ratio>& measured, const std::vector<Ratio>& predicted) {
-  std::vector<double> x, y;
+double spanOf(const std::vector<Ratio>& measured, const std::vector<Ratio>& predicted,
+              const std::vector<double>& weights) {
+  double top = 0, bottom = 0;
   for (std::size_t k = 0; k < measured.size(); ++k) {
-    if (!std::isfinite(measured[k].in(volt_per_volt))) continue;
-    x.push_back(predicted[k].in(volt_per_volt));
-    y.push_back(measured[k].in(volt_per_volt));
+    const double y = measured[k].in(volt_per_volt), x = predicted[k].in(volt_per_volt);
+    if (!std::isfinite(y)) continue;
+    const double weight = weights.empty() ? 1 : weights[k];
+    top += weight * x * y;
+    bottom += weight * x * x;
   }
-  const auto fit = metrology::fitLinear(metrology::throughOrigin(x), y);
-  return fit ? fit->parameters.front() : 1;
+  return bottom > 0 ? top / bottom : 1;
 }
 
 // ---------------------------------------------------------------- what is not known exactly

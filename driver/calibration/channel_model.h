@@ -43,9 +43,11 @@ struct ScalePrediction {
 };
 Result<ScalePrediction> predictScale(const ChannelModel& model, units::Ratio zero);
 
-/// Amplifier's span from all shunts: least squares of measured against predicted steps through the origin; a
-/// measured step that is NaN counts for nothing. 1 when they cannot give one (no shunt measured, no predicted step).
-double spanOf(const std::vector<units::Ratio>& measured, const std::vector<units::Ratio>& predicted);
+/// Amplifier's span from all shunts: weighted least squares of measured against predicted steps through the origin,
+/// each by its weight (empty: all alike); a measured step that is NaN counts for nothing. 1 when they cannot give one
+/// (no shunt measured, no predicted step).
+double spanOf(const std::vector<units::Ratio>& measured, const std::vector<units::Ratio>& predicted,
+              const std::vector<double>& weights = {});
 
 /// One value that is not known exactly: what is known of it, and what moving it does to the model. Shifts are
 /// applied in the order in which inputsOf() lists them.

@@ -7,6 +7,7 @@
 #include <vector>
 
 #include "driver/calibration/channel_model.h"
+#include "driver/calibration/linearity.h"
 #include "driver/calibration/uncertainty.h"
 
 namespace shuntwright::calibration {
@@ -24,9 +25,13 @@ constexpr double kWorthwhile = 0.9;  ///< of the uncertainty as it is
 Result<ScaleReadings> readingsToCome(const Rack& rack, const Channel& channel) {
   auto prediction = predictScale(modelWithLeads(rack, channel), Ratio());
   if (!prediction) return std::unexpected(std::move(prediction.error()));
+  const auto uncertain = predictedSteps(rack, channel, Ratio());
+  if (!uncertain) return std::unexpected(uncertain.error());
   ScaleReadings readings;
   readings.measured = prediction->steps;
   readings.scatter.resolution = rack.device(channel.device)->profile->inputs->resolution;
+  readings.weights = stepWeights(
+      *uncertain, std::vector<Ratio>(readings.measured.size(), resolutionOfStep(readings.scatter.resolution)));
   for (const Ratio step : readings.measured) {
     const Ratio size = std::abs(step.in(volt_per_volt)) * volt_per_volt;
     readings.scatter.smallestStep =

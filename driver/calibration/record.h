@@ -51,9 +51,22 @@ struct ShuntResult {
   units::Ratio predictedStep;            ///< at the before state
   units::Ratio stepDeviation;            ///< standard deviation of the repeated steps; 0 for one repeat
   units::Ratio noise;                    ///< standard deviation of a sample
+  units::Ratio residual;                 ///< measured - span x predicted
+  // Expanded, 95.45 %; a guard band asks for them.
+  units::Fraction deviationUncertainty;  ///< of measured / predicted, 1 being nominal
+  units::Ratio returnUncertainty;        ///< of returned - before
+  units::Ratio noiseUncertainty;         ///< of the noise
   bool measured() const;                 ///< there is a step
   Nanoseconds settling{0};               ///< longest time until a window was steady
   int repeats = 0;
+};
+
+/// How straight the chain is as several shunts show it, and whether they agree within what is stated of them.
+struct Straightness {
+  double worst_percent = 0;               ///< largest |residual|, in percent of the largest step
+  double expandedUncertainty_percent = 0; ///< of that
+  double chiSquared = 0, degreesOfFreedom = 0;
+  double probability = 1;                 ///< of a chi-square this large or larger if all is as stated
 };
 
 struct ChannelResult {
@@ -65,8 +78,10 @@ struct ChannelResult {
   std::optional<units::Resistance> leadResistance;      ///< as used: entered (mean of the leads)
   std::optional<units::Resistance> leadUncertainty;     ///< expanded
   units::Ratio zero;                     ///< reading at no load
+  units::Ratio zeroReadingUncertainty;   ///< expanded, of that reading alone
   int lostSamples = 0;                   ///< frames lost or damaged inside the windows
   std::vector<ShuntResult> shunts;
+  std::optional<Straightness> straightness;  ///< with two measured shunts or more
   bridge::RationalMap correction;        ///< reading in V/V -> strain (or fraction of rated value), zeroed
   units::Strain worstMapError;           ///< of the correction's form against the exact circuit, within its range
   units::Strain zeroExpandedUncertainty; ///< how far the zero may move until the test

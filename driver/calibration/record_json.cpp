@@ -14,9 +14,13 @@ using namespace units;
 
 namespace {
 
-json::value number(double value) { return std::isfinite(value) ? json::value(value) : json::value(nullptr); }
+json::value number(double value) {
+  return std::isfinite(value) ? json::value(value) : json::value(nullptr);
+}
 
-json::value mVperV(Ratio r) { return number(r.in(millivolt_per_volt)); }
+json::value mVperV(Ratio r) {
+  return number(r.in(millivolt_per_volt));
+}
 
 json::object shuntJson(const ShuntResult& s) {
   json::object o;
@@ -28,6 +32,10 @@ json::object shuntJson(const ShuntResult& s) {
   o["predicted_step_mV_per_V"] = mVperV(s.predictedStep);
   o["step_deviation_mV_per_V"] = mVperV(s.stepDeviation);
   o["noise_mV_per_V"] = mVperV(s.noise);
+  o["residual_mV_per_V"] = mVperV(s.residual);
+  o["step_expanded_uncertainty_percent"] = number(s.deviationUncertainty.in(percent));
+  o["return_expanded_uncertainty_mV_per_V"] = mVperV(s.returnUncertainty);
+  o["noise_expanded_uncertainty_mV_per_V"] = mVperV(s.noiseUncertainty);
   o["settling_s"] = number(seconds(s.settling));
   o["repeats"] = s.repeats;
   return o;
@@ -57,6 +65,16 @@ json::object budgetJson(const Budget& b) {
   return o;
 }
 
+json::value straightnessJson(const Straightness& line) {
+  json::object o;
+  o["worst_residual_percent"] = number(line.worst_percent);
+  o["expanded_uncertainty_percent"] = number(line.expandedUncertainty_percent);
+  o["chi_squared"] = number(line.chiSquared);
+  o["degrees_of_freedom"] = number(line.degreesOfFreedom);
+  o["probability"] = number(line.probability);
+  return o;
+}
+
 json::object channelJson(const ChannelResult& c) {
   json::object o;
   o["name"] = c.name;
@@ -70,13 +88,17 @@ json::object channelJson(const ChannelResult& c) {
     findings.push_back(std::move(one));
   }
   o["findings"] = std::move(findings);
-  const bool calibrated = std::any_of(c.shunts.begin(), c.shunts.end(), [](const auto& s) { return s.measured(); });
+  const bool calibrated =
+      std::any_of(c.shunts.begin(), c.shunts.end(), [](const auto& s) { return s.measured(); });
   o["span_ratio"] = calibrated ? number(c.spanRatio) : json::value(nullptr);
-  o["span_expanded_uncertainty_percent"] =
-      calibrated && !c.budget.lines.empty() ? number(c.budget.expandedUncertainty_percent) : json::value(nullptr);
+  o["span_expanded_uncertainty_percent"] = calibrated && !c.budget.lines.empty()
+                                               ? number(c.budget.expandedUncertainty_percent)
+                                               : json::value(nullptr);
   o["lead_resistance_ohm"] = c.leadResistance ? number(c.leadResistance->in(ohm)) : json::value(nullptr);
-  o["lead_expanded_uncertainty_ohm"] = c.leadUncertainty ? number(c.leadUncertainty->in(ohm)) : json::value(nullptr);
+  o["lead_expanded_uncertainty_ohm"] =
+      c.leadUncertainty ? number(c.leadUncertainty->in(ohm)) : json::value(nullptr);
   o["zero_mV_per_V"] = mVperV(c.zero);
+  o["zero_reading_expanded_uncertainty_mV_per_V"] = mVperV(c.zeroReadingUncertainty);
   o["zero_expanded_uncertainty_microstrain"] = number(c.zeroExpandedUncertainty.in(microstrain));
   o["gauge_factor_expanded_uncertainty_percent"] = number(c.factorUncertainty_percent);
   o["unit"] = c.unit;
@@ -85,6 +107,7 @@ json::object channelJson(const ChannelResult& c) {
   json::array shunts;
   for (const auto& s : c.shunts) shunts.push_back(shuntJson(s));
   o["shunts"] = std::move(shunts);
+  o["straightness"] = c.straightness ? straightnessJson(*c.straightness) : json::value(nullptr);
   json::object correction;
   correction["p"] = number(c.correction.p);
   correction["q"] = number(c.correction.q);
@@ -116,7 +139,8 @@ std::string recordJson(const Record& record) {
   o["windows"] = record.windows;
   o["duration_s"] = number(seconds(record.duration));
   o["zeroed"] = record.zeroed ? json::value(rfc3339(*record.zeroed)) : json::value(nullptr);
-  o["zeroed_unix_ns"] = record.zeroed ? json::value(record.zeroed->time_since_epoch().count()) : json::value(nullptr);
+  o["zeroed_unix_ns"] =
+      record.zeroed ? json::value(record.zeroed->time_since_epoch().count()) : json::value(nullptr);
   json::array relays;
   for (const auto& relay : record.relaysMaybeClosed) relays.push_back(json::value(relay));
   o["relays_maybe_closed"] = std::move(relays);
@@ -132,9 +156,13 @@ double get(const json::object& o, const char* key) {
   return v.is_null() ? std::numeric_limits<double>::quiet_NaN() : v.to_number<double>();
 }
 
-std::string word(const json::object& o, const char* key) { return std::string(o.at(key).as_string()); }
+std::string word(const json::object& o, const char* key) {
+  return std::string(o.at(key).as_string());
+}
 
-Ratio ratioIn(const json::object& o, const char* key) { return get(o, key) * millivolt_per_volt; }
+Ratio ratioIn(const json::object& o, const char* key) {
+  return get(o, key) * millivolt_per_volt;
+}
 
 Verdict verdictNamed(const std::string& text) {
   for (const Verdict v : {Verdict::pass, Verdict::fail, Verdict::not_calibrated}) {
@@ -153,6 +181,10 @@ ShuntResult shuntFrom(const json::object& o) {
   s.predictedStep = ratioIn(o, "predicted_step_mV_per_V");
   s.stepDeviation = ratioIn(o, "step_deviation_mV_per_V");
   s.noise = ratioIn(o, "noise_mV_per_V");
+  s.residual = ratioIn(o, "residual_mV_per_V");
+  s.deviationUncertainty = get(o, "step_expanded_uncertainty_percent") * percent;
+  s.returnUncertainty = ratioIn(o, "return_expanded_uncertainty_mV_per_V");
+  s.noiseUncertainty = ratioIn(o, "noise_expanded_uncertainty_mV_per_V");
   s.settling = fromSeconds(get(o, "settling_s"));
   s.repeats = static_cast<int>(o.at("repeats").to_number<int>());
   return s;
@@ -196,12 +228,18 @@ ChannelResult channelFrom(const json::object& o) {
     c.leadUncertainty = get(o, "lead_expanded_uncertainty_ohm") * ohm;
   }
   c.zero = ratioIn(o, "zero_mV_per_V");
+  c.zeroReadingUncertainty = ratioIn(o, "zero_reading_expanded_uncertainty_mV_per_V");
   c.zeroExpandedUncertainty = get(o, "zero_expanded_uncertainty_microstrain") * microstrain;
   c.factorUncertainty_percent = get(o, "gauge_factor_expanded_uncertainty_percent");
   c.unit = word(o, "unit");
   c.unitsPerStrain = get(o, "units_per_strain");
   c.lostSamples = o.at("lost_samples").to_number<int>();
   for (const auto& s : o.at("shunts").as_array()) c.shunts.push_back(shuntFrom(s.as_object()));
+  if (!o.at("straightness").is_null()) {
+    const auto& line = o.at("straightness").as_object();
+    c.straightness = {get(line, "worst_residual_percent"), get(line, "expanded_uncertainty_percent"),
+                      get(line, "chi_squared"), get(line, "degrees_of_freedom"), get(line, "probability")};
+  }
   const auto& correction = o.at("correction").as_object();
   c.correction = {get(correction, "p"), get(correction, "q"), get(correction, "w")};
   if (const auto* bend = correction.if_contains("bend")) {
@@ -240,7 +278,8 @@ Result<Record> parseRecordJson(std::string_view text, const std::string& where) 
     }
     return record;
   } catch (const std::exception& e) {
-    return fail(ErrorCode::bad_file, std::string("this calibration record lacks something: ") + e.what(), where, remedy);
+    return fail(ErrorCode::bad_file, std::string("this calibration record lacks something: ") + e.what(),
+                where, remedy);
   }
 }
 

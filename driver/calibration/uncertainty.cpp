@@ -18,20 +18,20 @@ using metrology::triangular;
 namespace {
 
 /// ln of the correction's scale for given steps.
-Result<double> logScale(const ChannelModel& model, Ratio zero, const std::vector<Ratio>& measured) {
-  auto prediction = predictScale(model, zero);
+Result<double> logScale(const ChannelModel& model, const ScaleReadings& readings) {
+  auto prediction = predictScale(model, readings.zero);
   if (!prediction) return std::unexpected(std::move(prediction.error()));
-  return -std::log(std::abs(prediction->slope_per_strain * spanOf(measured, prediction->steps)));
+  const double span = spanOf(readings.measured, prediction->steps, readings.weights);
+  return -std::log(std::abs(prediction->slope_per_strain * span));
 }
 
 /// What it would cost if the unbalance had another cause than the one taken: half-width, relative.
-double costOfCause(const ChannelModel& model, Ratio zero, const std::vector<Ratio>& measured,
-                   double nominal) {
+double costOfCause(const ChannelModel& model, const ScaleReadings& readings, double nominal) {
   double worst = 0;
   for (const Unbalance cause : {Unbalance::standing_strain, Unbalance::completion}) {
     ChannelModel other = model;
     other.cause = cause;
-    if (auto scale = logScale(other, zero, measured)) worst = std::max(worst, std::abs(*scale - nominal));
+    if (auto scale = logScale(other, readings)) worst = std::max(worst, std::abs(*scale - nominal));
   }
   return worst;
 }
@@ -39,9 +39,9 @@ double costOfCause(const ChannelModel& model, Ratio zero, const std::vector<Rati
 }  // namespace
 
 Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, const ScaleReadings& readings) {
-  const auto& [zero, measured, scatter] = readings;
+  const ReadingScatter& scatter = readings.scatter;
   const ChannelModel nominalModel = modelWithLeads(rack, channel);
-  auto nominal = logScale(nominalModel, zero, measured);
+  auto nominal = logScale(nominalModel, readings);
   if (!nominal) return std::unexpected(std::move(nominal.error()));
   MeasurementInputs inputs(nominalModel);
   for (auto& in : inputsOf(rack, channel)) inputs.add(std::move(in));
@@ -50,12 +50,12 @@ Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, co
   };
   if (channel.leadLoss == description::LeadLoss::in_span) {
     // The correction is worked out with no leads: what is left of them is the part the steps do not carry.
-    if (auto without = logScale(modelOf(rack, channel), zero, measured)) {
+    if (auto without = logScale(modelOf(rack, channel), readings)) {
       addRelative("lead loss not carried by the steps", rectangular(0, 100 * std::abs(*without - *nominal)));
     }
   }
   if (channel.unbalance == Unbalance::unknown) {
-    const double cost = costOfCause(nominalModel, zero, measured, *nominal);
+    const double cost = costOfCause(nominalModel, readings, *nominal);
     addRelative("cause of unbalance", rectangular(0, 100 * cost));
   }
   addRelative("noise and repeats of the steps", normal(0, 100 * scatter.stepRelative, scatter.stepDegrees));
@@ -67,7 +67,7 @@ Result<metrology::Model> scaleModel(const Rack& rack, const Channel& channel, co
   }
   return std::move(inputs).model(
       1, [readings, nominal = *nominal](const ChannelModel& model, std::span<double> y) -> Result<void> {
-        auto scale = logScale(model, readings.zero, readings.measured);
+        auto scale = logScale(model, readings);
         if (!scale) return std::unexpected(std::move(scale.error()));
         y[0] = 100 * (*scale - nominal);
         return {};

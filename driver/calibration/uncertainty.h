@@ -21,7 +21,8 @@ struct ReadingScatter {
 struct ScaleReadings {
   units::Ratio zero;  ///< true ratio at no load (reading over span)
   std::vector<units::Ratio>
-      measured;  ///< steps, one a shunt; their size does not matter, only their proportion
+      measured;                 ///< steps, one a shunt; their size does not matter, only their proportion
+  std::vector<double> weights;  ///< of the shunts in the span (spanOf); empty: all alike
   ReadingScatter scatter;
 };
 

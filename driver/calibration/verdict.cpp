@@ -1,5 +1,8 @@
+#include <algorithm>
 #include <cmath>
 #include <cstdio>
+#include <initializer_list>
+#include <string_view>
 
 #include "driver/calibration/analysis.h"
 
@@ -15,7 +18,31 @@ std::string number(double value, int decimals) {
   return out;
 }
 
-std::string mVperV(Ratio r) { return number(r.in(millivolt_per_volt), 5) + " mV/V"; }
+/// A limit on the size of a figure, and what counts against it.
+class Bound {
+ public:
+  Bound(double limit, const description::Limits& limits) : limit_(limit), guarded_(limits.guardBand) {}
+
+  bool holds(double size, double expandedUncertainty) const {
+    return size + (guarded_ ? expandedUncertainty : 0) <= limit_;
+  }
+
+  /// "0.52 %, limit 0.50 %", with a guard band "0.45 % +- 0.10 %, limit 0.50 % with its guard band".
+  std::string text(double size, double expandedUncertainty, int decimals, const std::string& unit) const {
+    const auto with = [&](double value) { return number(value, decimals) + unit; };
+    if (!guarded_) return with(size) + ", limit " + with(limit_);
+    return with(size) + " +- " + with(expandedUncertainty) + ", limit " + with(limit_) +
+           " with its guard band";
+  }
+
+ private:
+  double limit_;
+  bool guarded_;
+};
+
+std::string mVperV(Ratio r) {
+  return number(r.in(millivolt_per_volt), 5) + " mV/V";
+}
 
 /// Judges one shunt of a channel.
 class ShuntJudge {
@@ -36,22 +63,24 @@ class ShuntJudge {
            "still moving after " + number(seconds(shunt_.settling), 2) + " s");
     }
     if (step()) repeats();
-    const double back = microstrainOf(shunt_.returned - shunt_.before);
-    if (back > limits_.zeroReturn.in(microstrain)) {
+    const Bound back(limits_.zeroReturn.in(microstrain), limits_);
+    const double off = microstrainOf(shunt_.returned - shunt_.before);
+    if (const double u = microstrainOf(shunt_.returnUncertainty); !back.holds(off, u)) {
       find("no-zero-return", "the reading does not come back after shunt \"" + shunt_.name + "\"",
-           "off by " + number(back, 1) + " microstrain, limit " +
-               number(limits_.zeroReturn.in(microstrain), 1));
+           "off by " + back.text(off, u, 1, " microstrain"));
     }
+    const Bound quiet(limits_.noise.in(microstrain), limits_);
     const double noise = microstrainOf(shunt_.noise);
-    if (noise > limits_.noise.in(microstrain)) {
+    if (const double u = microstrainOf(shunt_.noiseUncertainty); !quiet.holds(noise, u)) {
       find("noisy", "the channel is noisy",
-           "standard deviation " + number(noise, 2) + " microstrain a sample, limit " +
-               number(limits_.noise.in(microstrain), 2));
+           "standard deviation of a sample " + quiet.text(noise, u, 2, " microstrain"));
     }
   }
 
  private:
-  double microstrainOf(Ratio r) const { return slope_ > 0 ? std::abs(r.in(volt_per_volt)) / slope_ * 1e6 : 0; }
+  double microstrainOf(Ratio r) const {
+    return slope_ > 0 ? std::abs(r.in(volt_per_volt)) / slope_ * 1e6 : 0;
+  }
 
   void find(const char* code, std::string message, std::string evidence) {
     channel_.findings.push_back({code, std::move(message), std::move(evidence)});
@@ -81,9 +110,10 @@ class ShuntJudge {
   bool step() {
     const double measured = shunt_.measuredStep.in(volt_per_volt);
     const double predicted = shunt_.predictedStep.in(volt_per_volt);
-    const double noise = shunt_.noise.in(volt_per_volt);
-    const std::string evidence = "measured " + mVperV(shunt_.measuredStep) + ", predicted " + mVperV(shunt_.predictedStep);
-    if (std::abs(measured) < std::max(0.1 * std::abs(predicted), 3 * noise)) {
+    const double noise = shunt_.returnUncertainty.in(volt_per_volt);
+    const std::string evidence =
+        "measured " + mVperV(shunt_.measuredStep) + ", predicted " + mVperV(shunt_.predictedStep);
+    if (std::abs(measured) < std::max(0.1 * std::abs(predicted), 1.5 * noise)) {
       find("step-missing",
            "closing the relay of shunt \"" + shunt_.name +
                "\" changes nothing: a dead relay, relays swapped, or a shunt that is "
@@ -99,11 +129,12 @@ class ShuntJudge {
            evidence);
       return true;
     }
-    const double deviation = measured / predicted - 1;
-    if (std::abs(deviation) > limits_.spanDeviation.in(one)) {
+    const Bound bound(limits_.spanDeviation.in(percent), limits_);
+    const double deviation = 100 * std::abs(measured / predicted - 1);
+    if (const double u = shunt_.deviationUncertainty.in(percent); !bound.holds(deviation, u)) {
       find("span-deviates", "the step of shunt \"" + shunt_.name + "\" is out of limits",
-           evidence + ": " + number(100 * deviation, 2) + " %, limit " +
-               number(limits_.spanDeviation.in(percent), 2) + " %");
+           evidence + (std::abs(measured) < std::abs(predicted) ? ", too small by " : ", too large by ") +
+               bound.text(deviation, u, 2, " %"));
     }
     return true;
   }
@@ -126,7 +157,36 @@ class ShuntJudge {
   double slope_;
 };
 
-/// A few lost samples cost a window nothing and are only counted; with more, something is wrong with the wire.
+bool has(const ChannelResult& result, std::initializer_list<std::string_view> codes) {
+  return std::ranges::any_of(
+      result.findings, [&](const Finding& f) { return std::ranges::find(codes, f.code) != codes.end(); });
+}
+
+/// Do several shunts tell of one straight chain?
+void straightness(ChannelResult& result, const description::Limits& limits) {
+  // A step that is not what it seems bends every line; it has been told already.
+  if (!result.straightness || has(result, {"relay-error", "step-missing", "wrong-sign", "saturated"})) return;
+  const Straightness& line = *result.straightness;
+  const Bound bound(limits.linearity.in(percent), limits);
+  if (!bound.holds(line.worst_percent, line.expandedUncertainty_percent)) {
+    result.findings.push_back(
+        {"not-linear", "the steps of the shunts do not lie on one line",
+         "off by up to " +
+             bound.text(line.worst_percent, line.expandedUncertainty_percent, 3, " % of the largest step")});
+  }
+  constexpr double kUnlikely = 1e-4;  // common practice, no source; one false alarm in 10 000 channels
+  if (line.probability < kUnlikely) {
+    result.findings.push_back({"shunts-disagree",
+                               "the shunts disagree by more than their stated tolerances: a resistor is not "
+                               "what the rack says, an arm is "
+                               "wired otherwise, or the amplifier is not linear",
+                               "chi-square " + number(line.chiSquared, 1) + " with " +
+                                   number(line.degreesOfFreedom, 0) + " degrees of freedom"});
+  }
+}
+
+/// A few lost samples cost a window nothing and are only counted; with more, something is wrong with the
+/// wire.
 void lostSamples(ChannelResult& result, const ChannelReadings& readings) {
   int taken = readings.zero ? readings.zero->samples : 0;
   for (const auto& shunt : readings.shunts) {
@@ -136,8 +196,9 @@ void lostSamples(ChannelResult& result, const ChannelReadings& readings) {
   }
   constexpr double kTooMany = 0.1;  // common practice, no source
   if (result.lostSamples <= kTooMany * (taken + result.lostSamples)) return;
-  result.findings.push_back({"lost-samples", "many samples were lost between device and driver",
-                             std::to_string(result.lostSamples) + " lost, " + std::to_string(taken) + " read"});
+  result.findings.push_back(
+      {"lost-samples", "many samples were lost between device and driver",
+       std::to_string(result.lostSamples) + " lost, " + std::to_string(taken) + " read"});
 }
 
 }  // namespace
@@ -152,15 +213,17 @@ void judge(ChannelResult& result, const ChannelReadings& readings, const descrip
                                std::to_string(readings.zero->missing) + " samples"});
   }
   lostSamples(result, readings);
+  straightness(result, limits);
   if (readings.zero && readings.zero->saturated > 0) {
     result.findings.push_back({"saturated", "the input is over range at no load",
                                std::to_string(readings.zero->saturated) + " samples at full scale"});
   }
   const double off = std::abs(result.zero.in(millivolt_per_volt));
-  if (!result.shunts.empty() && off > limits.unbalance.in(millivolt_per_volt)) {
-    result.findings.push_back({"unbalanced", "the bridge is far off balance",
-                               number(off, 3) + " mV/V, limit " + number(limits.unbalance.in(millivolt_per_volt), 3) +
-                                   " mV/V"});
+  const Bound balanced(limits.unbalance.in(millivolt_per_volt), limits);
+  if (const double u = result.zeroReadingUncertainty.in(millivolt_per_volt);
+      !result.shunts.empty() && !balanced.holds(off, u)) {
+    result.findings.push_back(
+        {"unbalanced", "the bridge is far off balance", balanced.text(off, u, 3, " mV/V")});
   }
   if (result.shunts.empty()) {
     result.verdict = result.findings.empty() ? Verdict::not_calibrated : Verdict::fail;

@@ -173,6 +173,10 @@ struct Limits {
   units::Strain noise = 5.0 * units::microstrain;              ///< standard deviation of a sample
   units::Fraction repeatability = 0.5 * units::percent;        ///< spread of repeated steps
   units::Ratio unbalance = 2.0 * units::millivolt_per_volt;    ///< |before|
+  units::Fraction linearity = 0.5 * units::percent;  ///< worst |residual| of several shunts, of the largest step
+  /// Counts each figure's expanded uncertainty against it, so that a pass is one with the uncertainty counted (JCGM
+  /// 106: guarded acceptance, guard band of one expanded uncertainty).
+  bool guardBand = false;
 };
 
 struct CalibrationSettings {

@@ -245,6 +245,8 @@ class RackReader {
     reader.take("noise", out.noise, {"0.01 microstrain", "100000 microstrain"});
     reader.take("repeatability", out.repeatability, {"0.0001 %", "100 %"});
     reader.take("unbalance", out.unbalance, {"0.001 mV/V", "100 mV/V"});
+    reader.take("linearity", out.linearity, {"0.0001 %", "100 %"});
+    reader.take("guard_band", out.guardBand);
     reader.finish();
   }
 

@@ -99,7 +99,8 @@ double BridgeInput::sample(Instant now) {
   const auto [sine, cosine] = clock_->mains(now);
   const double flicker = flicker_.after(seconds(now - lastSample_));
   lastSample_ = now;
-  return span_ * filtered_ + offset_ + drift_ + flicker + noise + mainsSine_ * sine + mainsCosine_ * cosine;
+  const double bent = filtered_ * (1 + faults_.bend * 1e3 * filtered_);
+  return span_ * bent + offset_ + drift_ + flicker + noise + mainsSine_ * sine + mainsCosine_ * cosine;
 }
 
 }  // namespace shuntwright::sim

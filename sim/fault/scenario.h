@@ -54,6 +54,7 @@ struct ChannelFaults {
   double noiseScale = 1;
   bool openLead = false;      ///< the SIG+ lead (or the first there is)
   bool saturated = false;
+  double bend = 0;            ///< the amplifier's span grows by this share for each mV/V of signal
   units::Strain noReturn;     ///< strain left behind by each closing of a shunt
 };
 

@@ -144,7 +144,7 @@ class ScenarioReader {
   }
 
   enum class What {
-    relay_dead, relay_welded, relays_swapped, wrong_shunt, noisy, open_lead, saturated, no_zero_return,
+    relay_dead, relay_welded, relays_swapped, wrong_shunt, noisy, open_lead, saturated, bent, no_zero_return,
     mute, garbage, half_answer, error_answer, late, lost_frames, silent, unplugged
   };
 
@@ -173,6 +173,7 @@ class ScenarioReader {
                                  {"noisy", What::noisy},
                                  {"open lead", What::open_lead},
                                  {"saturated", What::saturated},
+                                 {"bent", What::bent},
                                  {"no zero return", What::no_zero_return},
                                  {"mute", What::mute},
                                  {"garbage", What::garbage},
@@ -209,6 +210,9 @@ class ScenarioReader {
         break;
       case What::saturated:
         if (auto* c = channel(t)) c->saturated = true;
+        break;
+      case What::bent:
+        if (auto* c = channel(t)) t.need("per_mV_per_V", c->bend, {"-1", "1"});
         break;
       case What::no_zero_return:
         if (auto* c = channel(t)) t.need("strain", c->noReturn);

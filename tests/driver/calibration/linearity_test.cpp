@@ -3,6 +3,7 @@
 #include <gtest/gtest.h>
 
 #include <cmath>
+#include <limits>
 
 #include "driver/core/random.h"
 #include "tests/support/virtual_bench.h"
@@ -37,8 +38,10 @@ struct Bench {
 
   std::vector<Ratio> predicted() const { return predictScale(modelOf(rack, channel), {})->steps; }
 
+  PredictedSteps known() const { return *predictedSteps(rack, channel, {}); }
+
   Linearity of(const std::vector<Ratio>& measured, Ratio noise) const {
-    auto found = linearityOf(rack, channel, {}, measured, std::vector<Ratio>(measured.size(), noise));
+    auto found = linearityOf(known(), measured, std::vector<Ratio>(measured.size(), noise));
     EXPECT_TRUE(found) << found.error().text();
     return found ? *found : Linearity{};
   }
@@ -82,6 +85,40 @@ TEST(Linearity, shuntsOfOneResistorAreOneWitness) {
   EXPECT_GT(shared, 1.05 * independent);
 }
 
+// What a shunt says of the span counts by what is known of it. Two values of one quantity with standard
+// uncertainties u and 2u: the weighted mean has u sqrt(4 / 5) (GUM, and any textbook on least squares).
+TEST(Linearity, theBetterResistorCountsMore) {
+  Bench bench(0.1 * percent);
+  bench.channel.shunts.resize(2);
+  for (auto& shunt : bench.channel.shunts) shunt.resistor = "R60000";
+  bench.rack.resistors["R15000"] = bench.rack.resistors["R60000"];
+  bench.rack.resistors["R15000"].expandedUncertainty = 0.2 * percent;
+  bench.channel.shunts[1].resistor = "R15000";
+  PredictedSteps known = bench.known();
+  known.covariance(0, 1) = known.covariance(1, 0) = 0;  // of the resistors alone
+  const double step = known.steps[0].in(volt_per_volt);
+  known.covariance(0, 0) = step * step * 1e-6 / 4;
+  known.covariance(1, 1) = step * step * 1e-6;
+  const std::vector<Ratio> measured{1.001 * known.steps[0], 0.996 * known.steps[1]};
+  const auto found = linearityOf(known, measured, std::vector<Ratio>(2, 1e-12 * volt_per_volt));
+  ASSERT_TRUE(found);
+  EXPECT_NEAR(found->span, (4 * 1.001 + 0.996) / 5, 1e-9);
+  EXPECT_NEAR(found->standardUncertainty, 0.0005 * std::sqrt(0.8), 2e-6);
+  EXPECT_NEAR(found->residuals[1] / known.steps[1], 0.996 - found->span, 1e-9);
+  // The residual of the second one: 4/5 of the difference of the two.
+  EXPECT_NEAR(found->worstExpanded_percent, 100 * 2 * 0.8 * std::hypot(0.0005, 0.001), 0.001);
+}
+
+TEST(Linearity, aShuntThatWasNotMeasuredCountsForNothing) {
+  const Bench bench(0.05 * percent);
+  auto measured = through(bench.predicted(), 1.02, 0);
+  measured[2] = std::numeric_limits<double>::quiet_NaN() * volt_per_volt;
+  const Linearity found = bench.of(measured, 1e-7 * volt_per_volt);
+  EXPECT_NEAR(found.span, 1.02, 1e-12);
+  EXPECT_EQ(found.lackOfFit.degrees, 2);
+  EXPECT_TRUE(std::isnan(found.residuals[2].in(volt_per_volt)));
+}
+
 // Chains that are straight, with resistors and readings off by what is stated, are rejected at 5 % as often
 // as that.
 TEST(Linearity, lackOfFitIsHonest) {
@@ -113,13 +150,16 @@ TEST(Linearity, lackOfFitIsHonest) {
 
 TEST(Linearity, refusesWhatMakesNoSense) {
   const Bench bench(0.1 * percent);
+  const PredictedSteps known = bench.known();
   const auto steps = bench.predicted();
   const auto noises = [](std::size_t n, double u) { return std::vector<Ratio>(n, u * volt_per_volt); };
-  EXPECT_FALSE(linearityOf(bench.rack, bench.channel, {}, steps, noises(3, 1e-7)));
-  EXPECT_FALSE(linearityOf(bench.rack, bench.channel, {}, {}, {}));
-  const auto silent = linearityOf(bench.rack, bench.channel, {}, steps, noises(4, 0));
+  EXPECT_FALSE(linearityOf(known, steps, noises(3, 1e-7)));
+  EXPECT_FALSE(linearityOf(known, {}, {}));
+  const auto silent = linearityOf(known, steps, noises(4, 0));
   ASSERT_FALSE(silent);
-  EXPECT_NE(silent.error().text().find("S01"), std::string::npos);
+  EXPECT_NE(silent.error().text().find("resolution"), std::string::npos);
+  const std::vector<Ratio> none(4, std::numeric_limits<double>::quiet_NaN() * volt_per_volt);
+  EXPECT_FALSE(linearityOf(known, none, noises(4, 1e-7)));
 }
 
 }  // namespace

@@ -6,6 +6,7 @@
 #include <cmath>
 #include <memory>
 #include <numbers>
+#include <tuple>
 #include <vector>
 
 namespace shuntwright::sim {
@@ -110,8 +111,8 @@ TEST_F(BridgeInputTest, aHeatedGaugeCreepsToItsApparentStrainAndTheTruthDoesNot)
   scenario_.imperfections.selfHeating = 10.0 * microstrain;
   specimen_ = std::make_unique<Specimen>(rack_, scenario_, Random(5).fork(1));
   TrueChannel truth(rack_, rack_.channels[0], scenario_.imperfections, {}, Random(5).fork(2));
-  BridgeInput warm(std::move(truth), *specimen_, clock_, *rack_.devices[0].profile->inputs, scenario_.imperfections, {},
-                   Random(5).fork(3), 2.0);
+  BridgeInput warm(std::move(truth), *specimen_, clock_, *rack_.devices[0].profile->inputs,
+                   scenario_.imperfections, {}, Random(5).fork(3), 2.0);
   // 2 kW/m2 give 20 microstrain, 63 % of them after the time constant of 30 s.
   const double K = warm.channel().gaugeFactor();
   const auto apparent = [&](Nanoseconds after) {
@@ -126,7 +127,8 @@ TEST_F(BridgeInputTest, flickerAddsToTheWhiteNoise) {
   scenario_.imperfections.flicker = 1.0 * microvolt_per_volt;
   auto one = input();
   const auto values = take(*one, 20000, 10ms, clock_.start);
-  // Every time constant from 20 ms to 1000 s, a factor of four apart: eight parts; over 200 s the slowest hardly move.
+  // Every time constant from 20 ms to 1000 s, a factor of four apart: eight parts; over 200 s the slowest
+  // hardly move.
   const double least = std::sqrt(5 * std::log10(4.0)), most = std::sqrt(8 * std::log10(4.0));
   EXPECT_GT(deviation(values), 0.7e-6 * least);
   EXPECT_LT(deviation(values), 1.4e-6 * most);
@@ -200,6 +202,25 @@ TEST_F(BridgeInputTest, theLoadIsFollowed) {
   const auto inHold = take(*fresh, 100, 10ms, held - 1s);
   EXPECT_NEAR(inHold.back() - idle,
               fresh->span() * (fresh->trueRatioAt(held) - fresh->trueRatioAt(clock_.start)), 1e-9);
+}
+
+TEST_F(BridgeInputTest, aBentAmplifierReadsMoreTheMoreThereIs) {
+  const auto closedReading = [&](const ChannelFaults& faults) {
+    auto one = input(faults);
+    take(*one, 1, 10ms, clock_.start + 1s);
+    switchShunt(*one, clock_.start + 2s, true);
+    const double reading = take(*one, 200, 10ms, clock_.start + 2s).back();
+    return std::tuple(reading, one->trueRatioAt(clock_.start + 4s), one->span());
+  };
+  ChannelFaults faults;
+  faults.bend = 0.01;
+  const auto [straight, ratio, span] = closedReading({});
+  const auto [bent, sameRatio, sameSpan] = closedReading(faults);
+  ASSERT_EQ(span, sameSpan);
+  ASSERT_EQ(ratio, sameRatio);
+  // 1 % more for each mV/V.
+  EXPECT_NEAR(bent - straight, span * 0.01 * 1e3 * ratio * ratio, 1e-12);
+  EXPECT_GT(std::abs(ratio), 1e-4);
 }
 
 TEST_F(BridgeInputTest, strainLeftBehindByAClosing) {

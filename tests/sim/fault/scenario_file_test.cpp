@@ -117,6 +117,7 @@ fault = [
   { what = "open lead", channel = "Q2" },
   { what = "saturated", channel = "H1" },
   { what = "no zero return", channel = "F1", strain = "30 microstrain" },
+  { what = "bent", channel = "H1", per_mV_per_V = 0.002 },
   { what = "mute", device = "amp1", request = "stream start", from = 2, count = 3 },
   { what = "garbage", device = "relays1" },
   { what = "half answer", device = "relays1", request = "close" },
@@ -136,6 +137,7 @@ fault = [
   EXPECT_EQ(s.channels.at("Q3").noiseScale, 20);
   EXPECT_TRUE(s.channels.at("Q2").openLead);
   EXPECT_TRUE(s.channels.at("H1").saturated);
+  EXPECT_EQ(s.channels.at("H1").bend, 0.002);
   EXPECT_DOUBLE_EQ(s.channels.at("F1").noReturn.in(microstrain), 30);
   const auto& amp = s.devices.at("amp1");
   ASSERT_EQ(amp.requests.size(), 1u);
