@@ -2,11 +2,11 @@
 
 #include <algorithm>
 #include <cmath>
-#include <limits>
 
 #include "driver/calibration/channel_model.h"
 #include "driver/calibration/linearity.h"
 #include "driver/calibration/step_figures.h"
+#include "driver/calibration/strain_model.h"
 #include "driver/calibration/uncertainty.h"
 
 namespace shuntwright::calibration {
@@ -57,29 +57,13 @@ double valueOf(Ratio r) {
   return r.in(volt_per_volt);
 }
 
-/// Half-width for the whole bridge: its gauges by their shares in the signal, all off the same way (one
-/// batch).
-double factorTolerance_percent(const Rack& rack, const Channel& channel) {
-  const auto weights = description::armWeights(channel.circuit, channel.poisson);
-  double sum = 0, whole = 0;
-  for (std::size_t arm = 0; arm < weights.size(); ++arm) {
-    if (weights[arm] == 0) continue;
-    const auto gauge = rack.gaugeOf(channel, arm);
-    const double share = std::abs(weights[arm]) * gauge.factor.value();
-    sum += share * gauge.factorTolerance.in(percent);
-    whole += share;
-  }
-  return sum / whole;
-}
-
 void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& result) {
   result.name = channel.name;
   if (channel.transducer) {
     result.unit = channel.transducer->unit;
     result.unitsPerStrain = channel.transducer->ratedValue;
   }
-  const double factor_percent = channel.transducer ? channel.transducer->sensitivityTolerance.in(percent)
-                                                   : factorTolerance_percent(rack, channel);
+  const double factor_percent = factorTolerance(rack, channel).in(percent);
   const Component rectangle{Shape::rectangular, factor_percent / std::sqrt(3.0)};
   result.factorUncertainty_percent = coverageHalfWidth(std::span(&rectangle, 1));
   if (channel.leads.empty()) return;
@@ -105,7 +89,8 @@ class Analysis {
         readings_(readings),
         model_(modelOf(rack, channel)),
         correlation_(correlationFactor(rack, channel)),
-        digit_(rack.device(channel.device)->profile->inputs->resolution) {}
+        digit_(rack.device(channel.device)->profile->inputs->resolution),
+        factorTolerance_(factorTolerance(rack, channel)) {}
 
   ChannelResult run() {
     describeChannel(rack_, channel_, result_);
@@ -122,6 +107,8 @@ class Analysis {
     }
     return std::move(result_);
   }
+
+  const StrainReadings& behind() const { return strains_; }
 
  private:
   void takeZero() {
@@ -150,7 +137,10 @@ class Analysis {
         ++measured_;
         const double step = std::abs(valueOf(f.result.measuredStep));
         smallest_ = smallest_ == 0 ? step : std::min(smallest_, step);
-        worstReturn_ = std::max(worstReturn_, std::abs(valueOf(f.result.returned - f.result.before)));
+        // Noise alone moves a reading, too, and is counted already.
+        const double back = valueOf(f.result.returned - f.result.before),
+                     noise = valueOf(f.result.returnUncertainty);
+        worstReturn_ = std::max(worstReturn_, std::sqrt(std::max(0.0, back * back - noise * noise)));
       }
       result_.shunts.push_back(f.result);
       figures_.push_back(std::move(f));
@@ -165,8 +155,7 @@ class Analysis {
       if (auto done = budgetScale(usable); !done) return done;
       if (auto done = findStraightness(); !done) return done;
     }
-    if (readings_.zero) budgetZero(usable);
-    return {};
+    return readings_.zero ? budgetStrain(usable) : Result<void>();
   }
 
   double usableSpan() const {
@@ -235,15 +224,23 @@ class Analysis {
     return {};
   }
 
-  void budgetZero(double usable) {
-    ZeroScatter scatter;
+  Result<void> budgetStrain(double usable) {
+    strains_ = {scale_, {}, zeroNoise_ / usable, 0};
+    ZeroScatter& scatter = strains_.zero;
     scatter.standardUncertainty = zeroNoise_ / usable;
     scatter.resolution = digit_ / usable;
     scatter.returnSpread = worstReturn_ / usable * volt_per_volt;
     scatter.stability = rack_.device(channel_.device)->profile->inputs->zeroStability / usable;
-    if (auto u = zeroUncertainty(rack_, channel_, result_.zero / usable, scatter)) {
-      result_.zeroExpandedUncertainty = studentFactor(metrology::kInfinity) * *u;
-    }
+    const auto zero = zeroUncertainty(rack_, channel_, result_.zero / usable, scatter);
+    if (!zero) return std::unexpected(zero.error());
+    strains_.zeroSecondOrderVariance = zero->secondOrderVariance;
+    result_.zeroExpandedUncertainty = studentFactor(metrology::kInfinity) * zero->standard;
+    if (measured_ == 0) return {};
+    const Strain levels[] = {Strain(), largestStrain(channel_)};
+    auto found = strainUncertainties(rack_, channel_, strains_, levels, factorTolerance_);
+    if (!found) return std::unexpected(std::move(found.error()));
+    result_.strainUncertainty = std::move(*found);
+    return {};
   }
 
   const Rack& rack_;
@@ -257,15 +254,21 @@ class Analysis {
   std::vector<Ratio> noise_;  ///< of each step, with the resolution
   PredictedSteps predicted_;
   ScaleReadings scale_;
+  StrainReadings strains_;
   Ratio zeroNoise_;
+  const Fraction factorTolerance_;
   int measured_ = 0;
   double slope_ = 0, smallest_ = 0, worstReturn_ = 0;
 };
 
 }  // namespace
 
-ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelReadings& readings) {
-  return Analysis(rack, channel, readings).run();
+ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelReadings& readings,
+                      StrainReadings* behind) {
+  Analysis analysis(rack, channel, readings);
+  ChannelResult result = analysis.run();
+  if (behind) *behind = analysis.behind();
+  return result;
 }
 
 }  // namespace shuntwright::calibration

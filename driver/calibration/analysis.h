@@ -6,6 +6,7 @@
 #include "driver/calibration/channel_model.h"
 #include "driver/calibration/record.h"
 #include "driver/calibration/step_figures.h"
+#include "driver/calibration/strain_model.h"
 #include "driver/calibration/window.h"
 #include "driver/core/error.h"
 #include "driver/description/rack.h"
@@ -30,8 +31,9 @@ Result<void> correct(const description::Channel& channel, const ChannelModel& mo
 
 /// Turns a channel's readings into its correction, budget and verdict. Never fails as a whole: what cannot be
 /// worked out is a finding and a failed verdict, and the correction is then the nominal one.
+/// @param behind  when given: what the budget of strain was worked out from, for second opinions.
 ChannelResult analyse(const description::Rack& rack, const description::Channel& channel,
-                      const ChannelReadings& readings);
+                      const ChannelReadings& readings, StrainReadings* behind = nullptr);
 
 /// Findings and verdict against the rack's limits; called by analyse once the figures are there.
 /// @param slope_per_strain  dr/de, to turn ratios into the strain that the limits speak of.

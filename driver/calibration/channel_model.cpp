@@ -107,7 +107,8 @@ Result<double> slopeAt(const WorkingPoint& point) {
   return (*up - *down).in(volt_per_volt) / (2 * half.in(strain));
 }
 
-/// Carries what the zero reading said about one arm over to the circuit as it is in the test.
+}  // namespace
+
 WorkingPoint moved(const WorkingPoint& point, const bridge::Circuit& from, const bridge::Circuit& to) {
   WorkingPoint out{to, point.standing};
   for (std::size_t k = 0; k < 4; ++k) {
@@ -116,8 +117,6 @@ WorkingPoint moved(const WorkingPoint& point, const bridge::Circuit& from, const
   }
   return out;
 }
-
-}  // namespace
 
 Result<ScalePrediction> predictScale(const ChannelModel& model, Ratio zero) {
   auto point = explain(model.atCalibration, zero, model.cause);

@@ -36,6 +36,9 @@ struct WorkingPoint {
 /// Errors: bad_use when no such change gives the ratio (more than 30 % off nominal).
 Result<WorkingPoint> explain(const bridge::Circuit& circuit, units::Ratio zero, description::Unbalance cause);
 
+/// Carries what the zero reading said about one arm of `from` over to the circuit as it is in the test.
+WorkingPoint moved(const WorkingPoint& point, const bridge::Circuit& from, const bridge::Circuit& to);
+
 /// What the model says of a channel whose (true) zero ratio is known.
 struct ScalePrediction {
   std::vector<units::Ratio> steps;  ///< of each shunt, from the working point at calibration

@@ -8,6 +8,7 @@
 
 #include "driver/calibration/channel_model.h"
 #include "driver/calibration/linearity.h"
+#include "driver/calibration/strain_model.h"
 #include "driver/calibration/uncertainty.h"
 
 namespace shuntwright::calibration {
@@ -31,7 +32,8 @@ Result<ScaleReadings> readingsToCome(const Rack& rack, const Channel& channel) {
   readings.measured = prediction->steps;
   readings.scatter.resolution = rack.device(channel.device)->profile->inputs->resolution;
   readings.weights = stepWeights(
-      *uncertain, std::vector<Ratio>(readings.measured.size(), resolutionOfStep(readings.scatter.resolution)));
+      *uncertain,
+      std::vector<Ratio>(readings.measured.size(), resolutionOfStep(readings.scatter.resolution)));
   for (const Ratio step : readings.measured) {
     const Ratio size = std::abs(step.in(volt_per_volt)) * volt_per_volt;
     readings.scatter.smallestStep =
@@ -46,23 +48,49 @@ Result<Budget> budgetOf(const Rack& rack, const Channel& channel) {
   return scaleBudget(rack, channel, *readings);
 }
 
+Result<StrainUncertainty> strainsToCome(const Rack& rack, const Channel& channel) {
+  auto readings = readingsToCome(rack, channel);
+  if (!readings) return std::unexpected(std::move(readings.error()));
+  const auto& inputs = *rack.device(channel.device)->profile->inputs;
+  StrainReadings strains{std::move(*readings), {}, {}, 0};
+  strains.zero.resolution = inputs.resolution;
+  strains.zero.stability = inputs.zeroStability;
+  const auto zero = zeroUncertainty(rack, channel, {}, strains.zero);
+  if (!zero) return std::unexpected(zero.error());
+  strains.zeroSecondOrderVariance = zero->secondOrderVariance;
+  const Strain level = largestStrain(channel);
+  auto found = strainUncertainties(rack, channel, strains, {&level, 1}, factorTolerance(rack, channel));
+  if (!found) return std::unexpected(std::move(found.error()));
+  return found->front();
+}
+
 /// Something that somebody could do about a channel; false when it is done already.
 struct Remedy {
   const char* what;
   std::function<bool(Rack&, Channel&)> apply;
 };
 
-bool measureGauge(Rack& rack, Channel& channel) {
-  if (channel.transducer || channel.measuredResistance) return false;
-  channel.measuredResistance = description::Toleranced{rack.gaugeOf(channel).resistance.value, kMeasuredGauge};
-  return true;
+bool measureGauges(Rack& rack, Channel& channel) {
+  if (channel.transducer) return false;
+  const auto weights = description::armWeights(channel.circuit, channel.poisson);
+  bool any = false;
+  for (std::size_t arm = 0; arm < weights.size(); ++arm) {
+    if (weights[arm] == 0) continue;
+    const auto gauge = rack.gaugeOf(channel, arm);
+    if (gauge.measured && gauge.resistance.tolerance <= kMeasuredGauge) continue;
+    if (!channel.arms[arm]) channel.arms[arm].emplace();
+    channel.arms[arm]->resistance = description::Toleranced{gauge.resistance.value, kMeasuredGauge};
+    any = true;
+  }
+  return any;
 }
 
 bool certifyShunts(Rack& rack, Channel& channel) {
   bool any = false;
   for (const auto& shunt : channel.shunts) {
     auto& resistor = rack.resistors.at(shunt.resistor);
-    const auto known = resistor.expandedUncertainty > Fraction() ? resistor.expandedUncertainty : resistor.tolerance;
+    const auto known =
+        resistor.expandedUncertainty > Fraction() ? resistor.expandedUncertainty : resistor.tolerance;
     if (known <= kCertified) continue;
     resistor.expandedUncertainty = kCertified;
     resistor.coverageFactor = 2;
@@ -74,8 +102,10 @@ bool certifyShunts(Rack& rack, Channel& channel) {
 bool measureLeads(Rack&, Channel& channel) {
   bool any = false;
   for (auto& [terminal, lead] : channel.leads) {
-    if (lead.resistance <= Resistance() || lead.resistance.in(ohm) * lead.tolerance.in(one) <= kMeasuredLead.in(ohm)) continue;
-    lead.tolerance = kMeasuredLead.in(ohm) / lead.resistance.in(ohm) * one;
+    if (lead.resistance <= Resistance() ||
+        lead.resistance.in(ohm)*lead.tolerance.in(one) <= kMeasuredLead.in(ohm))
+      continue;
+    lead.tolerance = kMeasuredLead.in(ohm) / lead.resistance.in(ohm)*one;
     any = true;
   }
   return any;
@@ -97,7 +127,8 @@ bool betterCompletion(Rack& rack, Channel& channel) {
   auto profile = std::make_shared<description::Profile>(*device->profile);
   bool any = false;
   for (auto& offered : profile->inputs->completions) {
-    if (!channel.completion || offered.value != *channel.completion || offered.tolerance <= kCertified) continue;
+    if (!channel.completion || offered.value != *channel.completion || offered.tolerance <= kCertified)
+      continue;
     offered.tolerance = kCertified;
     any = true;
   }
@@ -115,13 +146,17 @@ Result<Foresight> foresee(const Rack& rack, const Channel& channel) {
   if (!budget) return std::unexpected(std::move(budget.error()));
   Foresight out;
   out.budget = std::move(*budget);
-  const auto largest = std::max_element(out.budget.lines.begin(), out.budget.lines.end(), [](const auto& a, const auto& b) {
-    return a.contribution_percent < b.contribution_percent;
-  });
+  const auto largest = std::max_element(
+      out.budget.lines.begin(), out.budget.lines.end(),
+      [](const auto& a, const auto& b) { return a.contribution_percent < b.contribution_percent; });
   if (largest != out.budget.lines.end()) out.largest = largest->quantity;
 
+  auto strains = strainsToCome(rack, channel);
+  if (!strains) return std::unexpected(std::move(strains.error()));
+  out.atLargest = *strains;
+
   static const std::vector<Remedy> remedies{
-      {"measure the gauge resistance to 0.02 %", measureGauge},
+      {"measure each gauge to 0.02 %", measureGauges},
       {"have the shunt resistor certified to 0.01 %", certifyShunts},
       {"measure each lead to 20 mohm", measureLeads},
       {"know the leads' temperature to 1 K", measureTemperature},
@@ -140,7 +175,8 @@ Result<Foresight> foresee(const Rack& rack, const Channel& channel) {
   return out;
 }
 
-Result<SecondOpinion> secondOpinion(const Rack& rack, const Channel& channel, const Budget& stated, Random& random) {
+Result<SecondOpinion> secondOpinion(const Rack& rack, const Channel& channel, const Budget& stated,
+                                    Random& random) {
   auto readings = readingsToCome(rack, channel);
   if (!readings) return std::unexpected(std::move(readings.error()));
   metrology::MonteCarloOptions options;

@@ -61,6 +61,14 @@ struct ShuntResult {
   int repeats = 0;
 };
 
+/// How well a corrected strain is known at one level; 95.45 %.
+struct StrainUncertainty {
+  units::Strain level;
+  units::Strain expanded;  ///< all that the chain can do to it
+  units::Strain
+      expandedWithFactor;  ///< the gauge factor's (a transducer: the sensitivity's) tolerance as well
+};
+
 /// How straight the chain is as several shunts show it, and whether they agree within what is stated of them.
 struct Straightness {
   double worst_percent = 0;               ///< largest |residual|, in percent of the largest step
@@ -85,6 +93,7 @@ struct ChannelResult {
   bridge::RationalMap correction;        ///< reading in V/V -> strain (or fraction of rated value), zeroed
   units::Strain worstMapError;           ///< of the correction's form against the exact circuit, within its range
   units::Strain zeroExpandedUncertainty; ///< how far the zero may move until the test
+  std::vector<StrainUncertainty> strainUncertainty;  ///< at no load and at the largest strain expected
   double factorUncertainty_percent = 0;  ///< expanded, of the gauge factor alone: no shunt sees it
   std::string unit = "microstrain";      ///< what corrected values are shown in
   double unitsPerStrain = 1e6;           ///< shown value = corrected value x this (a transducer: rated value)

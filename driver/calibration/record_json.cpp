@@ -100,6 +100,15 @@ json::object channelJson(const ChannelResult& c) {
   o["zero_mV_per_V"] = mVperV(c.zero);
   o["zero_reading_expanded_uncertainty_mV_per_V"] = mVperV(c.zeroReadingUncertainty);
   o["zero_expanded_uncertainty_microstrain"] = number(c.zeroExpandedUncertainty.in(microstrain));
+  json::array levels;
+  for (const auto& at : c.strainUncertainty) {
+    json::object one;
+    one["level_microstrain"] = number(at.level.in(microstrain));
+    one["expanded_microstrain"] = number(at.expanded.in(microstrain));
+    one["expanded_with_gauge_factor_microstrain"] = number(at.expandedWithFactor.in(microstrain));
+    levels.push_back(std::move(one));
+  }
+  o["strain_uncertainty"] = std::move(levels);
   o["gauge_factor_expanded_uncertainty_percent"] = number(c.factorUncertainty_percent);
   o["unit"] = c.unit;
   o["units_per_strain"] = number(c.unitsPerStrain);
@@ -230,6 +239,12 @@ ChannelResult channelFrom(const json::object& o) {
   c.zero = ratioIn(o, "zero_mV_per_V");
   c.zeroReadingUncertainty = ratioIn(o, "zero_reading_expanded_uncertainty_mV_per_V");
   c.zeroExpandedUncertainty = get(o, "zero_expanded_uncertainty_microstrain") * microstrain;
+  for (const auto& v : o.at("strain_uncertainty").as_array()) {
+    const auto& at = v.as_object();
+    c.strainUncertainty.push_back({get(at, "level_microstrain") * microstrain,
+                                   get(at, "expanded_microstrain") * microstrain,
+                                   get(at, "expanded_with_gauge_factor_microstrain") * microstrain});
+  }
   c.factorUncertainty_percent = get(o, "gauge_factor_expanded_uncertainty_percent");
   c.unit = word(o, "unit");
   c.unitsPerStrain = get(o, "units_per_strain");

@@ -150,15 +150,16 @@ Result<metrology::Model> zeroModel(const Rack& rack, const Channel& channel, Rat
   });
 }
 
-Result<Strain> zeroUncertainty(const Rack& rack, const Channel& channel, Ratio zero,
-                               const ZeroScatter& scatter) {
+Result<ZeroUncertainty> zeroUncertainty(const Rack& rack, const Channel& channel, Ratio zero,
+                                        const ZeroScatter& scatter) {
   auto model = zeroModel(rack, channel, zero, scatter);
   if (!model) return std::unexpected(std::move(model.error()));
   metrology::FirstOrderOptions options;
   options.secondOrder = true;
   auto propagated = metrology::firstOrder(*model, options);
   if (!propagated) return std::unexpected(std::move(propagated.error()));
-  return propagated->outputs.front().standardUncertainty * strain;
+  const metrology::Estimate& zeroes = propagated->outputs.front();
+  return ZeroUncertainty{zeroes.standardUncertainty * strain, zeroes.secondOrderVariance};
 }
 
 }  // namespace shuntwright::calibration

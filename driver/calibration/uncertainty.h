@@ -57,7 +57,7 @@ Result<metrology::MonteCarloResult> scaleMonteCarlo(const description::Rack& rac
 struct ZeroScatter {
   units::Ratio standardUncertainty;  ///< of the mean zero reading
   units::Ratio resolution;
-  units::Ratio returnSpread;  ///< largest |return - before| seen
+  units::Ratio returnSpread;  ///< largest |return - before| seen, less what noise explains
   units::Ratio stability;     ///< half-width by which the offset may wander until the test
   double leadsShare = 1;      ///< how much of the leads' stated change of temperature happens until then
 };
@@ -66,8 +66,12 @@ struct ZeroScatter {
 Result<metrology::Model> zeroModel(const description::Rack& rack, const description::Channel& channel,
                                    units::Ratio zero, const ZeroScatter& scatter);
 
-/// Standard uncertainty of the zero by the GUM, with second-order terms.
-Result<units::Strain> zeroUncertainty(const description::Rack& rack, const description::Channel& channel,
+/// Uncertainty of the zero by the GUM, with second-order terms.
+struct ZeroUncertainty {
+  units::Strain standard;
+  double secondOrderVariance = 0;  ///< what leads that differ and warm add to it, (m/m)^2
+};
+Result<ZeroUncertainty> zeroUncertainty(const description::Rack& rack, const description::Channel& channel,
                                       units::Ratio zero, const ZeroScatter& scatter);
 
 }  // namespace shuntwright::calibration

@@ -6,7 +6,6 @@
 #include <cmath>
 #include <cstdio>
 #include <functional>
-#include <limits>
 
 #include "driver/calibration/analysis.h"
 #include "driver/calibration/uncertainty.h"
@@ -26,8 +25,8 @@ std::string inMicrostrain(double value) {
 }
 
 /// How far the zero may move while it has to hold.
-Result<Strain> uncertaintyOf(const description::Rack& rack, const description::Channel& channel, const Window& zero,
-                             double span, Nanoseconds holds) {
+Result<Strain> uncertaintyOf(const description::Rack& rack, const description::Channel& channel,
+                             const Window& zero, double span, Nanoseconds holds) {
   const auto& inputs = *rack.device(channel.device)->profile->inputs;
   ZeroScatter scatter;
   scatter.standardUncertainty =
@@ -36,8 +35,17 @@ Result<Strain> uncertaintyOf(const description::Rack& rack, const description::C
   scatter.stability = inputs.zeroStability / span;
   scatter.leadsShare = std::clamp(seconds(holds) / 3600, 0.0, 1.0);
   auto standard = zeroUncertainty(rack, channel, zero.mean / span, scatter);
-  if (!standard) return standard;
-  return metrology::studentFactor(std::numeric_limits<double>::infinity()) * *standard;
+  if (!standard) return std::unexpected(std::move(standard.error()));
+  return metrology::studentFactor(metrology::kInfinity) * standard->standard;
+}
+
+/// The same with another zero: its part of the squares is exchanged.
+StrainUncertainty withZero(const StrainUncertainty& at, Strain before, Strain now) {
+  const auto exchanged = [&](Strain whole) {
+    const double w = whole.in(strain), b = before.in(strain), n = now.in(strain);
+    return std::sqrt(std::max(0.0, w * w - b * b) + n * n) * strain;
+  };
+  return {at.level, exchanged(at.expanded), exchanged(at.expandedWithFactor)};
 }
 
 }  // namespace
@@ -49,7 +57,8 @@ Task<Result<Zeros>> takeZeros(rack::LiveRack& live, rack::LoadPathPermit permit,
   }
   std::map<std::string, std::vector<WindowBuilder>> builders;
   for (const auto& device : live.described().devices) {
-    if (const auto& inputs = device.profile->inputs) builders[device.name].resize(static_cast<std::size_t>(inputs->count));
+    if (const auto& inputs = device.profile->inputs)
+      builders[device.name].resize(static_cast<std::size_t>(inputs->count));
   }
   rack::AcquisitionSink sink;
   std::optional<Error> trouble;
@@ -74,7 +83,8 @@ Task<Result<Zeros>> takeZeros(rack::LiveRack& live, rack::LoadPathPermit permit,
   Zeros zeros;
   for (const auto& channel : live.described().channels) {
     const auto first = live.described().device(channel.device)->profile->inputs->first;
-    zeros[channel.name] = builders.at(channel.device)[static_cast<std::size_t>(channel.input - first)].window();
+    zeros[channel.name] =
+        builders.at(channel.device)[static_cast<std::size_t>(channel.input - first)].window();
   }
   co_return zeros;
 }
@@ -88,14 +98,17 @@ std::vector<Finding> rezero(Record& record, const description::Rack& rack, const
     if (!channel) continue;
     const auto found = zeros.find(result.name);
     if (isAbsolute(*channel)) {
-      // Its correction stays, but what it shows now goes with the new zeros: a thermometer's gauges count from it.
+      // Its correction stays, but what it shows now goes with the new zeros: a thermometer's gauges count
+      // from it.
       if (found != zeros.end() && found->second.usable()) result.zero = found->second.mean;
       continue;
     }
     if (found == zeros.end() || !found->second.usable()) {
-      findings.push_back({"zero-not-taken", result.name + ": no usable zero reading; that of the calibration stays",
-                          found == zeros.end() ? "" : std::to_string(found->second.saturated) + " samples saturated, " +
-                                                          std::to_string(found->second.missing) + " missing"});
+      findings.push_back(
+          {"zero-not-taken", result.name + ": no usable zero reading; that of the calibration stays",
+           found == zeros.end() ? ""
+                                : std::to_string(found->second.saturated) + " samples saturated, " +
+                                      std::to_string(found->second.missing) + " missing"});
       continue;
     }
     const Window& zero = found->second;
@@ -124,6 +137,8 @@ std::vector<Finding> rezero(Record& record, const description::Rack& rack, const
     }
     anew.zero = zero.mean;
     anew.zeroExpandedUncertainty = *uncertainty;
+    for (auto& level : anew.strainUncertainty)
+      level = withZero(level, result.zeroExpandedUncertainty, *uncertainty);
     result = std::move(anew);
   }
   return findings;

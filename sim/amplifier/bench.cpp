@@ -69,7 +69,8 @@ Bench::Bench(const description::Rack& rack, const Scenario& scenario, std::uint6
     : state_(std::make_unique<State>(rack, scenario, Random(seed), start)) {
   State& s = *state_;
   s.contactRandom = s.random.fork(2);
-  Shared shared{Hall::drawn(s.random.fork(3))};
+  Shared shared{.hall = Hall::drawn(s.random.fork(3)),
+                .resistors = drawnResistors(rack, s.scenario.imperfections, s.random.fork(5))};
   Random packets = s.random.fork(4);
   std::map<std::string, double> batches;
   for (const auto& [name, sheet] : rack.gauges) batches[name] = packets.uniform(-1, 1);

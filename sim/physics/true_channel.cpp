@@ -30,7 +30,29 @@ constexpr std::uint64_t kLeakageStream = 900;
 
 double off(Random& random, double value, double tolerance) { return value * (1 + random.uniform(-tolerance, tolerance)); }
 
+double drawn(const description::Resistor& resistor, const Imperfections& imperfections, Random& random) {
+  double value = resistor.value.in(ohm);
+  if (resistor.expandedUncertainty.in(one) > 0) {
+    const double u = resistor.expandedUncertainty.in(one) / resistor.coverageFactor;
+    value *= 1 + imperfections.resistors * u * random.normal();
+  } else {
+    value = off(random, value, imperfections.resistors * resistor.tolerance.in(one));
+  }
+  return value * (1 + resistor.temperatureCoefficient.in(per_kelvin) * random.uniform(-1, 1) *
+                          resistor.temperatureSpan.in(kelvin));
+}
+
 }  // namespace
+
+std::map<std::string, double> drawnResistors(const description::Rack& rack, const Imperfections& imperfections,
+                                             const Random& random) {
+  std::map<std::string, double> out;
+  for (const auto& [name, resistor] : rack.resistors) {
+    Random own = random.fork(out.size());
+    out[name] = drawn(resistor, imperfections, own);
+  }
+  return out;
+}
 
 Hall Hall::drawn(Random random) {
   Hall hall;
@@ -47,7 +69,8 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
   const auto weights = description::armWeights(channel.circuit, channel.poisson);
   if (channel.transducer) {
     const auto& sheet = *channel.transducer;
-    const double in = sheet.inputResistance.in(ohm), out = sheet.outputResistance.in(ohm);
+    const double out = off(random, sheet.outputResistance.in(ohm), imperfections.gauges * sheet.outputTolerance.in(one));
+    const double in = off(random, sheet.inputResistance.in(ohm), imperfections.gauges * sheet.inputTolerance.in(one));
     gaugeFactor_ = off(random, 1, imperfections.gaugeFactors * sheet.sensitivityTolerance.in(one));
     excitationSeries_ohm_ = (in - out) / 2;
     const double x = sheet.sensitivity.in(volt_per_volt) * in / out * gaugeFactor_;
@@ -101,15 +124,9 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
     warmTime_s_ = random.uniform(300, 1200);
   }
   for (const auto& shunt : channel.shunts) {
-    const auto& resistor = rack.resistorOf(shunt);
-    double value = resistor.value.in(ohm);
-    if (resistor.expandedUncertainty.in(one) > 0) {
-      value *= 1 + imperfections.resistors * resistor.expandedUncertainty.in(one) / resistor.coverageFactor * random.normal();
-    } else {
-      value = off(random, value, imperfections.resistors * resistor.tolerance.in(one));
-    }
-    value *= 1 + resistor.temperatureCoefficient.in(per_kelvin) *
-                     random.uniform(-1, 1) * resistor.temperatureSpan.in(kelvin);
+    const auto known = shared.resistors.find(shunt.resistor);
+    const double value =
+        known != shared.resistors.end() ? known->second : drawn(rack.resistorOf(shunt), imperfections, random);
     TrueShunt one{shunt, value * faults.shuntScale};
     // Insulation is stated as a lower bound; what it really is lies anywhere above, by decades.
     const auto* board = rack.device(shunt.relay.device);
@@ -118,6 +135,12 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
     }
     shunts_.push_back(one);
   }
+}
+
+void TrueChannel::hangIn(double warmer_K, double warmsBy_K) {
+  warmStart_K_ = warmer_K;
+  warmEnd_K_ = warmer_K + warmsBy_K;
+  warmTime_s_ = 300;
 }
 
 double TrueChannel::leadWarming_K(double time_s) const {

@@ -1,6 +1,8 @@
 #pragma once
 
 #include <array>
+#include <map>
+#include <string>
 #include <vector>
 
 #include "driver/core/random.h"
@@ -30,7 +32,13 @@ struct Hall {
 struct Shared {
   Hall hall;
   double batch = 0;  ///< of its packet of gauges: the factor's deviation in parts of the tolerance, -1..1
+  /// Resistors by name, ohm: shunts of one resistor have one value. One that is not here is drawn by the channel.
+  std::map<std::string, double> resistors = {};
 };
+
+/// The bench's resistors as they are: off by tolerance or certificate, and by their temperature.
+std::map<std::string, double> drawnResistors(const description::Rack& rack, const Imperfections& imperfections,
+                                             const Random& random);
 
 /// One channel's circuit as it really is, drawn from a random source about what rack and profile state.
 class TrueChannel {
@@ -52,6 +60,8 @@ class TrueChannel {
   /// By how much the leads are warmer than stated, at a time since the start: they follow the hall exponentially,
   /// each cable with a share and a lag of its own.
   double leadWarming_K(double seconds) const;
+  /// Puts an end to chance: so much warmer than stated at first, and so much more after some minutes.
+  void hangIn(double warmer_K, double warmsBy_K);
 
  private:
   const description::Channel* channel_;

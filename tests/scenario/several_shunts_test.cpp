@@ -1,4 +1,4 @@
-// proves P-05
+// proves P-15
 // A channel with several shunts, of both polarities and several values: one line through all of them.
 #include <gtest/gtest.h>
 

@@ -1,7 +1,7 @@
-#include <CLI/CLI.hpp>
 #include <boost/json/array.hpp>
 #include <boost/json/object.hpp>
 #include <boost/json/serialize.hpp>
+#include <CLI/CLI.hpp>
 #include <ostream>
 
 #include "driver/calibration/foresight.h"
@@ -64,7 +64,8 @@ class Check final : public Command {
   void configure(CLI::App& app) override {
     app.add_option("FILE", files_, "Profiles and racks (TOML)")->required();
     app.add_flag("--budget", budget_, "Show the uncertainty that each channel will reach and what limits it");
-    app.add_flag("--monte-carlo", monteCarlo_, "With --budget: a second opinion by drawing random numbers (JCGM 101)")
+    app.add_flag("--monte-carlo", monteCarlo_,
+                 "With --budget: a second opinion by drawing random numbers (JCGM 101)")
         ->needs("--budget");
   }
 
@@ -141,26 +142,38 @@ class Check final : public Command {
     for (const auto& channel : rack.channels) {
       if (channel.shunts.empty()) continue;
       if (auto foreseen = calibration::foresee(rack, channel)) {
-        foresights_.push_back({channel.name, std::move(*foreseen), {}});
+        const auto& sheet = channel.transducer;
+        foresights_.push_back({channel.name,
+                               sheet ? sheet->unit : "microstrain",
+                               sheet ? sheet->ratedValue : 1e6,
+                               std::move(*foreseen),
+                               {}});
         if (!monteCarlo_) continue;
         // One seed a channel, so that a channel's figure does not depend on the others.
         Random random(1);
         auto second = calibration::secondOpinion(rack, channel, foresights_.back().foresight.budget, random);
         if (second) foresights_.back().second = *second;
       } else {
-        diagnostics.error(channel.place, "no budget for channel \"" + channel.name + "\": " + foreseen.error().message,
+        diagnostics.error(channel.place,
+                          "no budget for channel \"" + channel.name + "\": " + foreseen.error().message,
                           foreseen.error().remedy);
       }
     }
   }
 
   json::value foresightJson(const std::string& channel) const {
-    for (const auto& [name, foreseen, second] : foresights_) {
+    for (const auto& [name, unit, unitsPerStrain, foreseen, second] : foresights_) {
       if (name != channel) continue;
       json::object o;
       o["expanded_uncertainty_percent"] = foreseen.budget.expandedUncertainty_percent;
       o["coverage_factor"] = foreseen.budget.coverageFactor;
       o["largest_input"] = foreseen.largest;
+      const auto& at = foreseen.atLargest;
+      o["unit"] = unit;
+      o["largest_value"] = at.level.in(strain)*unitsPerStrain;
+      o["largest_value_expanded_uncertainty"] = at.expanded.in(strain)*unitsPerStrain;
+      o["largest_value_expanded_uncertainty_with_gauge_factor"] =
+          at.expandedWithFactor.in(strain)*unitsPerStrain;
       o["advice"] = foreseen.advice ? json::value(foreseen.advice->what) : json::value(nullptr);
       o["expanded_uncertainty_then_percent"] =
           foreseen.advice ? json::value(foreseen.advice->to_percent) : json::value(nullptr);
@@ -178,15 +191,26 @@ class Check final : public Command {
   void printForesights(const Console& console) const {
     if (foresights_.empty()) return;
     using A = Table::Align;
-    console.out << "\nUncertainty to come (95.45 %, of the scale, without the readings' noise)\n";
-    std::vector<Table::Column> columns{{"channel", A::left}, {"U %"}};
+    console.out << "\nUncertainty to come (95.45 %, without the readings' noise): of the scale, and of the "
+                   "largest strain with its zero\n";
+    std::vector<Table::Column> columns{{"channel", A::left}, {"U %"},          {"at"}, {"+-"},
+                                       {"with factor"},      {"unit", A::left}};
     if (monteCarlo_) columns.insert(columns.end(), {{"drawn from %"}, {"drawn to %"}, {"agrees", A::left}});
-    columns.insert(columns.end(), {{"limited by", A::left}, {"what would narrow it most", A::left}, {"to %"}});
+    columns.insert(columns.end(),
+                   {{"limited by", A::left}, {"what would narrow it most", A::left}, {"to %"}});
     Table table(columns);
-    for (const auto& [name, foreseen, second] : foresights_) {
-      std::vector<std::string> row{name, fixed(foreseen.budget.expandedUncertainty_percent, 3)};
+    for (const auto& [name, unit, unitsPerStrain, foreseen, second] : foresights_) {
+      const auto& at = foreseen.atLargest;
+      std::vector<std::string> row{
+          name,
+          fixed(foreseen.budget.expandedUncertainty_percent, 3),
+          fixed(at.level.in(strain)*unitsPerStrain, 0),
+          fixed(at.expanded.in(strain)*unitsPerStrain, unitsPerStrain == 1e6 ? 2 : 4),
+          fixed(at.expandedWithFactor.in(strain)*unitsPerStrain, unitsPerStrain == 1e6 ? 2 : 4),
+          unit};
       if (second) {
-        row.insert(row.end(), {fixed(second->interval.low, 3), fixed(second->interval.high, 3), second->agrees ? "yes" : "NO"});
+        row.insert(row.end(), {fixed(second->interval.low, 3), fixed(second->interval.high, 3),
+                               second->agrees ? "yes" : "NO"});
       } else if (monteCarlo_) {
         row.insert(row.end(), {"", "", "no solution"});
       }
@@ -198,7 +222,8 @@ class Check final : public Command {
   }
 
   struct Foreseen {
-    std::string channel;
+    std::string channel, unit;
+    double unitsPerStrain = 1e6;
     calibration::Foresight foresight;
     std::optional<calibration::SecondOpinion> second;
   };
@@ -211,6 +236,8 @@ class Check final : public Command {
 
 }  // namespace
 
-std::unique_ptr<Command> makeCheck() { return std::make_unique<Check>(); }
+std::unique_ptr<Command> makeCheck() {
+  return std::make_unique<Check>();
+}
 
 }  // namespace shuntwright::cli

@@ -46,7 +46,7 @@ TEST(Foresight, anUnmeasuredGaugeUnderATabShuntIsToBeMeasured) {
   ASSERT_TRUE(foreseen.has_value()) << foreseen.error().text();
   EXPECT_EQ(foreseen->largest, "gauge resistance of arm 1");
   ASSERT_TRUE(foreseen->advice.has_value());
-  EXPECT_EQ(foreseen->advice->what, "measure the gauge resistance to 0.02 %");
+  EXPECT_EQ(foreseen->advice->what, "measure each gauge to 0.02 %");
   EXPECT_GT(foreseen->budget.expandedUncertainty_percent, 0.4);
   EXPECT_LT(foreseen->advice->to_percent, 0.5 * foreseen->budget.expandedUncertainty_percent);
 }

@@ -159,7 +159,7 @@ TEST(ZeroUncertainty, leadsThatDifferMoveTheZeroAsTheyWarm) {
   const double uLead = 2.0 * 0.05 / std::sqrt(3.0), uWarm = 12 / std::sqrt(3.0);
   const double expected = std::sqrt(2.0) * 0.00393 * uWarm * uLead /
                           (circuit.arms[0].relativePerStrain * circuit.arms[0].resistance.in(ohm));
-  EXPECT_NEAR(u->in(strain) / expected, 1, 0.02);
+  EXPECT_NEAR(u->standard.in(strain) / expected, 1, 0.02);
 
   // The distribution drawn in full agrees.
   const auto model = zeroModel(rack, channel, {}, nothingElse);
@@ -169,12 +169,12 @@ TEST(ZeroUncertainty, leadsThatDifferMoveTheZeroAsTheyWarm) {
   options.trials = 50'000;
   const auto drawn = metrology::monteCarlo(*model, random, options);
   ASSERT_TRUE(drawn);
-  EXPECT_NEAR(drawn->outputs[0].standardUncertainty / u->in(strain), 1, 0.02);
+  EXPECT_NEAR(drawn->outputs[0].standardUncertainty / u->standard.in(strain), 1, 0.02);
 
   // And half the time makes half of it.
   ZeroScatter soon;
   soon.leadsShare = 0.5;
-  EXPECT_NEAR(zeroUncertainty(rack, channel, {}, soon)->in(strain) / u->in(strain), 0.5, 1e-3);
+  EXPECT_NEAR(zeroUncertainty(rack, channel, {}, soon)->standard / u->standard, 0.5, 1e-3);
 }
 
 TEST(ZeroUncertainty, combinesWhatTheReadingShows) {
@@ -185,7 +185,8 @@ TEST(ZeroUncertainty, combinesWhatTheReadingShows) {
   scatter.standardUncertainty = 3e-7 * volt_per_volt;
   scatter.stability = 4e-7 * std::sqrt(3.0) * volt_per_volt;
   const auto slope = predictScale(modelWithLeads(rack, channel), {})->slope_per_strain;
-  EXPECT_NEAR(zeroUncertainty(rack, channel, {}, scatter)->in(strain), 5e-7 / slope, 1e-6 * 5e-7 / slope);
+  EXPECT_NEAR(zeroUncertainty(rack, channel, {}, scatter)->standard.in(strain), 5e-7 / slope,
+              1e-6 * 5e-7 / slope);
 }
 
 }  // namespace
