@@ -46,7 +46,8 @@ class ChannelReader {
     readExcitation();
     reader_.take("poisson", channel_.poisson, {"0", "0.5"});
     reader_.choose("lead_loss", channel_.leadLoss,
-                   {{"in prediction", LeadLoss::in_prediction}, {"in span", LeadLoss::in_span}});
+                   {{"in prediction", LeadLoss::in_prediction}, {"in span", LeadLoss::in_span},
+                    {"identified", LeadLoss::identified}});
     reader_.choose("unbalance", channel_.unbalance,
                    {{"unknown", Unbalance::unknown},
                     {"standing strain", Unbalance::standing_strain},
@@ -62,6 +63,7 @@ class ChannelReader {
       readLeads(leads->value, leads->inherited ? "the defaults" : reader_.what(), channel_, diagnostics_);
     const auto shunts = reader_.tables("shunts");
     if (circuitKnown) readShunts(shunts);
+    checkIdentified();
     reader_.finish();
     return std::move(channel_);
   }
@@ -221,6 +223,17 @@ class ChannelReader {
     diagnostics_.error(reader_.entry("excitation")->value.place,
                        "device \"" + channel_.device + "\" has no excitation of " + show(channel_.excitation),
                        "it offers " + offered(choices));
+  }
+
+  void checkIdentified() {
+    if (channel_.leadLoss != LeadLoss::identified) return;
+    const TomlEntry* entry = reader_.entry("lead_loss");
+    if (channel_.shunts.size() < 2)
+      diagnostics_.error(entry->place,
+                         "leads cannot be identified from " + std::to_string(channel_.shunts.size()) +
+                             (channel_.shunts.size() == 1 ? " shunt" : " shunts"),
+                         "add a second position for the same resistor, such as across = [\"COMP\", \"EXC-\"], or use "
+                         "lead_loss = \"in prediction\"");
   }
 
   void readShunts(const std::vector<const TomlNode*>& tables) {

@@ -90,6 +90,7 @@ struct Inputs {
   units::Ratio fullScale = 4.0 * units::millivolt_per_volt;
   units::Ratio resolution = 1e-6 * units::millivolt_per_volt;
   units::Ratio zeroStability;          ///< half-width by which the offset may wander within a test
+  units::Ratio zeroOffset = 0.01 * units::millivolt_per_volt;  ///< half-width of its own offset at zero ratio
   units::Resistance inputResistance = 1.0 * units::gigaohm;
   std::vector<Toleranced> completions;           ///< quarter-bridge completion resistors on offer
   Toleranced halfBridge;                         ///< each of the two inner half-bridge resistors; 0 ohm: it has none

@@ -164,6 +164,7 @@ class ProfileReader {
       out.halfBridge = readToleranced(*half, "\"half_bridge\"");
     takeChoices(reader, "excitations", "[\"5 V\"]", out.excitations, {"0.1 V", "50 V"});
     takeChoices(reader, "rates", "[\"10 Hz\", \"100 Hz\"]", out.rates, {"0.01 Hz", "1 MHz"});
+    reader.take("zero_offset", out.zeroOffset, {"0 mV/V", ""});
     reader.take("zero_stability", out.zeroStability, {"0 mV/V", ""});
     reader.take("filter_time_constant", out.filterTimeConstant, {"0 s", "60 s"});
 

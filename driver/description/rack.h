@@ -111,6 +111,7 @@ struct Shunt {
 enum class LeadLoss {
   in_prediction,  ///< lead resistance is known and lies in the predicted step; the span is the amplifier's own
   in_span,        ///< lead resistance is not known; only allowed for shunts whose step carries the loss
+  identified,     ///< lead resistance and span are found together, from shunts whose steps change with it unlike
 };
 
 /// Why the bridge is off zero with nothing applied. It decides the scale at the working point.

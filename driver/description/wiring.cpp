@@ -103,6 +103,21 @@ bool isFull(CircuitKind kind) {
   }
 }
 
+bool carriesCurrent(CircuitKind kind, Terminal lead) {
+  switch (lead) {
+    case exc_plus:
+    case exc_minus:
+    case comp:
+      return true;
+    case sig_plus:  // of two wires, or between a gauge and its completion
+      return kind == quarter_2_wire || kind == half_opposite;
+    case sig_minus:
+      return kind == half_opposite;
+    default:
+      return false;
+  }
+}
+
 std::vector<Terminal> leadsOf(CircuitKind kind, bool sensed) {
   switch (kind) {
     case quarter_2_wire:

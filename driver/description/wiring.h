@@ -41,6 +41,9 @@ std::vector<std::string_view> circuitNames();
 /// and transducers only).
 std::vector<Terminal> leadsOf(CircuitKind kind, bool sensed);
 
+/// Whether a lead carries the excitation's current: through the gauge or to the bridge, not signal or sense.
+bool carriesCurrent(CircuitKind kind, Terminal lead);
+
 /// All four arms stand outside the instrument: only these can have sense leads.
 bool isFull(CircuitKind kind);
 

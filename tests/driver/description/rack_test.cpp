@@ -229,8 +229,11 @@ TEST(Rack, reportsOneMistakeAtItsPlace) {
        "350 ohm"},
       {"gauge = \"G350\"", "gauge = \"G350\"\nsensed = true",
        "25:1: a quarter 3-wire circuit has no sense leads | sensing needs a full bridge or a transducer"},
+      {"gauge = \"G350\"", "gauge = \"G350\"\nlead_loss = \"identified\"",
+       "25:1: leads cannot be identified from 1 shunt | add a second position for the same resistor, such as across = "
+       "[\"COMP\", \"EXC-\"], or use lead_loss = \"in prediction\""},
       {"gauge = \"G350\"", "gauge = \"G350\"\nlead_loss = \"in the span\"",
-       "25:13: \"lead_loss\" cannot be \"in the span\" | it must be \"in prediction\" or \"in span\""},
+       "25:13: \"lead_loss\" cannot be \"in the span\" | it must be \"in prediction\", \"in span\" or \"identified\""},
       {"leads = { length = \"20 m\", awg = 26 }\n", "",
        "19:1: \"leads\" is missing from channel \"S01\" | add it: leads = { length = \"20 m\", awg = 26 }"},
       {"{ length = \"20 m\", awg = 26 }", "{ length = \"20 m\" }",

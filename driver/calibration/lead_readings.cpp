@@ -1,0 +1,42 @@
+#include "driver/calibration/lead_readings.h"
+
+#include <cmath>
+
+#include "driver/calibration/linearity.h"
+
+namespace shuntwright::calibration {
+
+using namespace units;
+using description::Channel;
+using description::Rack;
+
+LeadReadings leadReadingsOf(const Rack& rack, const Channel& channel, const std::vector<Ratio>& steps,
+                            const std::vector<Ratio>& noise, Ratio zero, Ratio zeroNoise) {
+  LeadReadings out;
+  out.nominal = modelWithLeads(rack, channel);
+  for (const auto& shunt : channel.shunts) out.resistors.push_back(shunt.resistor);
+  out.steps = steps;
+  out.noise = noise;
+  out.zero = zero;
+  const double offset = rack.device(channel.device)->profile->inputs->zeroOffset.in(volt_per_volt);
+  const double least = resolutionOfStep({}).in(volt_per_volt);
+  out.zeroNoise =
+      std::max(least, std::hypot(offset / std::sqrt(3.0), zeroNoise.in(volt_per_volt))) * volt_per_volt;
+  for (auto& in : inputsOf(rack, channel)) {
+    if (!in.input.quantity.starts_with("lead ")) out.known.push_back(std::move(in));
+  }
+  for (const auto& [terminal, lead] : channel.leads) out.inequality[terminal] = lead.tolerance;
+  return out;
+}
+
+Result<LeadIdentification> leadsToBeIdentified(const Rack& rack, const Channel& channel) {
+  const auto prediction = predictScale(modelWithLeads(rack, channel), {});
+  if (!prediction) return std::unexpected(prediction.error());
+  const Ratio digit = resolutionOfStep(rack.device(channel.device)->profile->inputs->resolution);
+  auto fit = LeadFit::of(leadReadingsOf(rack, channel, prediction->steps,
+                                        std::vector<Ratio>(prediction->steps.size(), digit), {}, digit));
+  if (!fit) return std::unexpected(std::move(fit.error()));
+  return identified(*fit);
+}
+
+}  // namespace shuntwright::calibration
