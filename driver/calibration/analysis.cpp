@@ -4,6 +4,8 @@
 #include <cmath>
 
 #include "driver/calibration/channel_model.h"
+#include "driver/calibration/identified_model.h"
+#include "driver/calibration/lead_readings.h"
 #include "driver/calibration/linearity.h"
 #include "driver/calibration/step_figures.h"
 #include "driver/calibration/strain_model.h"
@@ -108,7 +110,7 @@ class Analysis {
     return std::move(result_);
   }
 
-  const StrainReadings& behind() const { return strains_; }
+  Behind behind() const { return {strains_, fit_}; }
 
  private:
   void takeZero() {
@@ -148,6 +150,7 @@ class Analysis {
   }
 
   Result<void> solve() {
+    if (channel_.leadLoss == description::LeadLoss::identified) identifyLeads();
     if (auto done = findSpan(); !done) return done;
     const double usable = usableSpan();
     if (auto done = correct(channel_, model_, usable, result_.zero, result_); !done) return done;
@@ -156,6 +159,36 @@ class Analysis {
       if (auto done = findStraightness(); !done) return done;
     }
     return readings_.zero ? budgetStrain(usable) : Result<void>();
+  }
+
+  /// Leads and span from all steps at once. Where these do not tell, the leads stay as stated and the channel
+  /// fails.
+  void identifyLeads() {
+    auto fit =
+        LeadFit::of(leadReadingsOf(rack_, channel_, scale_.measured, noise_, result_.zero, zeroNoise_));
+    if (!fit) {
+      result_.findings.push_back({"leads-not-identified", fit.error().message, fit.error().remedy});
+      return;
+    }
+    LeadIdentification found = identified(*fit);
+    if (result_.leadResistance) found.stated = *result_.leadResistance;
+    if (found.identifiable) {
+      fit_ = std::move(*fit);
+      const LeadFit::Situation at = fit_->situationAt(fit_->estimate());
+      model_ = at.model;
+      for (const auto& lead : found.leads) {
+        auto& described = channel_.leads.at(lead.terminal);
+        described.resistance = lead.resistance;
+        described.tolerance =
+            lead.resistance > Resistance() ? lead.expandedUncertainty / lead.resistance * one : Fraction();
+      }
+      result_.leadResistance = found.resistance;
+      result_.leadUncertainty = found.expandedUncertainty;
+    } else {
+      result_.findings.push_back(
+          {"leads-not-identified", found.reason, found.advice ? found.advice->what : ""});
+    }
+    result_.leads = std::move(found);
   }
 
   double usableSpan() const {
@@ -176,6 +209,10 @@ class Analysis {
         if (!uncertain) return std::unexpected(std::move(uncertain.error()));
         predicted_ = std::move(*uncertain);
         scale_.weights = stepWeights(predicted_, noise_);
+      }
+      if (fit_) {
+        result_.spanRatio = fit_->situationAt(fit_->estimate()).span;
+        break;
       }
       result_.spanRatio = spanOf(scale_.measured, prediction->steps, scale_.weights);
       if (usableSpan() != result_.spanRatio) break;  // judged later; not a span to correct with
@@ -199,10 +236,16 @@ class Analysis {
     scale_.scatter.stepDegrees = metrology::effectiveDegrees(parts);
     scale_.scatter.resolution = digit_;
     scale_.scatter.smallestStep = smallest_ * volt_per_volt;
-    auto budget = scaleBudget(rack_, channel_, scale_);
+    auto budget = fit_ ? budgetOfIdentified() : scaleBudget(rack_, channel_, scale_);
     if (!budget) return std::unexpected(std::move(budget.error()));
     result_.budget = std::move(*budget);
     return {};
+  }
+
+  Result<Budget> budgetOfIdentified() const {
+    const auto model = identifiedModel(*fit_, rack_, channel_, {scale_, {}, {}, 0}, {});
+    if (!model) return std::unexpected(model.error());
+    return budgetOf(*model, Claims::kScale);
   }
 
   Result<void> findStraightness() {
@@ -217,11 +260,31 @@ class Analysis {
       const double u = std::hypot(std::sqrt(predicted_.covariance(k, k)), valueOf(noise_[k]));
       if (step > 0) shunt.deviationUncertainty = studentFactor(metrology::kInfinity) * u / step * one;
     }
+    if (fit_) {
+      straightnessOfFit();
+      return {};
+    }
     if (measured_ < 2) return {};
     result_.straightness =
         Straightness{line->worst_percent, line->worstExpanded_percent, line->lackOfFit.statistic,
                      line->lackOfFit.degrees, line->lackOfFit.probability};
     return {};
+  }
+
+  /// With the leads free, steps and what was known have to agree with the fit.
+  void straightnessOfFit() {
+    Straightness line{.chiSquared = fit_->chiSquared(),
+                      .degreesOfFreedom = result_.leads->degreesOfFreedom,
+                      .probability = result_.leads->probability};
+    double largest = 0, worst = 0;
+    for (auto& shunt : result_.shunts) {
+      shunt.residual = shunt.measuredStep - result_.spanRatio * shunt.predictedStep;
+      if (!shunt.measured()) continue;
+      largest = std::max(largest, std::abs(valueOf(shunt.measuredStep)));
+      worst = std::max(worst, std::abs(valueOf(shunt.residual)));
+    }
+    if (largest > 0) line.worst_percent = 100 * worst / largest;
+    result_.straightness = line;
   }
 
   Result<void> budgetStrain(double usable) {
@@ -237,16 +300,19 @@ class Analysis {
     result_.zeroExpandedUncertainty = studentFactor(metrology::kInfinity) * zero->standard;
     if (measured_ == 0) return {};
     const Strain levels[] = {Strain(), largestStrain(channel_)};
-    auto found = strainUncertainties(rack_, channel_, strains_, levels, factorTolerance_);
+    const auto model = fit_ ? identifiedModel(*fit_, rack_, channel_, strains_, levels)
+                            : strainModel(rack_, channel_, strains_, levels);
+    if (!model) return std::unexpected(model.error());
+    auto found = strainUncertainties(*model, levels, factorTolerance_, strains_.zeroSecondOrderVariance);
     if (!found) return std::unexpected(std::move(found.error()));
     result_.strainUncertainty = std::move(*found);
     return {};
   }
 
   const Rack& rack_;
-  const Channel& channel_;
+  Channel channel_;  ///< with its leads as identified
   const ChannelReadings& readings_;
-  const ChannelModel model_;
+  ChannelModel model_;
   const double correlation_;
   const Ratio digit_;
   ChannelResult result_;
@@ -255,6 +321,7 @@ class Analysis {
   PredictedSteps predicted_;
   ScaleReadings scale_;
   StrainReadings strains_;
+  std::optional<LeadFit> fit_;
   Ratio zeroNoise_;
   const Fraction factorTolerance_;
   int measured_ = 0;
@@ -264,7 +331,7 @@ class Analysis {
 }  // namespace
 
 ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelReadings& readings,
-                      StrainReadings* behind) {
+                      Behind* behind) {
   Analysis analysis(rack, channel, readings);
   ChannelResult result = analysis.run();
   if (behind) *behind = analysis.behind();

@@ -4,6 +4,7 @@
 #include <vector>
 
 #include "driver/calibration/channel_model.h"
+#include "driver/calibration/lead_fit.h"
 #include "driver/calibration/record.h"
 #include "driver/calibration/step_figures.h"
 #include "driver/calibration/strain_model.h"
@@ -29,11 +30,16 @@ bool isAbsolute(const description::Channel& channel);
 Result<void> correct(const description::Channel& channel, const ChannelModel& model, double span,
                      units::Ratio zero, ChannelResult& result);
 
+/// What a channel's budgets were worked out from, for second opinions.
+struct Behind {
+  StrainReadings readings;
+  std::optional<LeadFit> fit;  ///< where its leads were identified
+};
+
 /// Turns a channel's readings into its correction, budget and verdict. Never fails as a whole: what cannot be
 /// worked out is a finding and a failed verdict, and the correction is then the nominal one.
-/// @param behind  when given: what the budget of strain was worked out from, for second opinions.
 ChannelResult analyse(const description::Rack& rack, const description::Channel& channel,
-                      const ChannelReadings& readings, StrainReadings* behind = nullptr);
+                      const ChannelReadings& readings, Behind* behind = nullptr);
 
 /// Findings and verdict against the rack's limits; called by analyse once the figures are there.
 /// @param slope_per_strain  dr/de, to turn ratios into the strain that the limits speak of.

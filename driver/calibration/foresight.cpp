@@ -7,6 +7,8 @@
 #include <vector>
 
 #include "driver/calibration/channel_model.h"
+#include "driver/calibration/identified_model.h"
+#include "driver/calibration/lead_readings.h"
 #include "driver/calibration/linearity.h"
 #include "driver/calibration/strain_model.h"
 #include "driver/calibration/uncertainty.h"
@@ -42,10 +44,23 @@ Result<ScaleReadings> readingsToCome(const Rack& rack, const Channel& channel) {
   return readings;
 }
 
-Result<Budget> budgetOf(const Rack& rack, const Channel& channel) {
+/// What the claims of a channel would rest on: its steps, or the fit of its leads.
+Result<metrology::Model> modelToCome(const Rack& rack, const Channel& channel, const StrainReadings& readings,
+                                     std::span<const Strain> levels) {
+  if (channel.leadLoss != description::LeadLoss::identified)
+    return strainModel(rack, channel, readings, levels);
+  auto fit = leadFitToCome(rack, channel);
+  if (!fit) return std::unexpected(std::move(fit.error()));
+  return identifiedModel(*fit, rack, channel, readings, levels);
+}
+
+Result<Budget> budgetToCome(const Rack& rack, const Channel& channel) {
   auto readings = readingsToCome(rack, channel);
   if (!readings) return std::unexpected(std::move(readings.error()));
-  return scaleBudget(rack, channel, *readings);
+  if (channel.leadLoss != description::LeadLoss::identified) return scaleBudget(rack, channel, *readings);
+  auto model = modelToCome(rack, channel, {std::move(*readings), {}, {}, 0}, {});
+  if (!model) return std::unexpected(std::move(model.error()));
+  return budgetOf(*model, Claims::kScale);
 }
 
 Result<StrainUncertainty> strainsToCome(const Rack& rack, const Channel& channel) {
@@ -57,9 +72,11 @@ Result<StrainUncertainty> strainsToCome(const Rack& rack, const Channel& channel
   strains.zero.stability = inputs.zeroStability;
   const auto zero = zeroUncertainty(rack, channel, {}, strains.zero);
   if (!zero) return std::unexpected(zero.error());
-  strains.zeroSecondOrderVariance = zero->secondOrderVariance;
   const Strain level = largestStrain(channel);
-  auto found = strainUncertainties(rack, channel, strains, {&level, 1}, factorTolerance(rack, channel));
+  const auto model = modelToCome(rack, channel, strains, {&level, 1});
+  if (!model) return std::unexpected(model.error());
+  auto found =
+      strainUncertainties(*model, {&level, 1}, factorTolerance(rack, channel), zero->secondOrderVariance);
   if (!found) return std::unexpected(std::move(found.error()));
   return found->front();
 }
@@ -142,7 +159,7 @@ Result<Foresight> foresee(const Rack& rack, const Channel& channel) {
   if (channel.shunts.empty()) {
     return fail(ErrorCode::bad_use, "channel " + channel.name + " has no shunt", channel.place.text());
   }
-  auto budget = budgetOf(rack, channel);
+  auto budget = budgetToCome(rack, channel);
   if (!budget) return std::unexpected(std::move(budget.error()));
   Foresight out;
   out.budget = std::move(*budget);
@@ -151,6 +168,11 @@ Result<Foresight> foresee(const Rack& rack, const Channel& channel) {
       [](const auto& a, const auto& b) { return a.contribution_percent < b.contribution_percent; });
   if (largest != out.budget.lines.end()) out.largest = largest->quantity;
 
+  if (channel.leadLoss == description::LeadLoss::identified) {
+    auto leads = leadFitToCome(rack, channel);
+    if (!leads) return std::unexpected(std::move(leads.error()));
+    out.leads = identified(*leads);
+  }
   auto strains = strainsToCome(rack, channel);
   if (!strains) return std::unexpected(std::move(strains.error()));
   out.atLargest = *strains;
@@ -167,7 +189,7 @@ Result<Foresight> foresee(const Rack& rack, const Channel& channel) {
     Rack better = rack;
     Channel changed = channel;
     if (!remedy.apply(better, changed)) continue;
-    auto then = budgetOf(better, changed);
+    auto then = budgetToCome(better, changed);
     if (!then || then->expandedUncertainty_percent >= best) continue;
     best = then->expandedUncertainty_percent;
     out.advice = Advice{remedy.what, best};
@@ -182,10 +204,14 @@ Result<SecondOpinion> secondOpinion(const Rack& rack, const Channel& channel, co
   metrology::MonteCarloOptions options;
   options.digits = 1;
   options.toleranceShare = 0.2;
-  auto drawn = scaleMonteCarlo(rack, channel, *readings, random, options);
+  const bool identified = channel.leadLoss == description::LeadLoss::identified;
+  auto model = identified ? modelToCome(rack, channel, {std::move(*readings), {}, {}, 0}, {})
+                          : scaleModel(rack, channel, *readings);
+  if (!model) return std::unexpected(std::move(model.error()));
+  auto drawn = metrology::monteCarlo(*model, random, options);
   if (!drawn) return std::unexpected(std::move(drawn.error()));
   SecondOpinion out;
-  out.interval = drawn->outputs.front().interval.symmetric;
+  out.interval = drawn->outputs[identified ? Claims::kScale : 0].interval.symmetric;
   out.trials = drawn->trials;
   const double half = stated.expandedUncertainty_percent;
   const double tolerance = metrology::numericalTolerance(stated.standardUncertainty_percent, options.digits);

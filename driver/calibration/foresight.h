@@ -20,6 +20,7 @@ struct Advice {
 struct Foresight {
   Budget budget;                 ///< of the scale, with steps as predicted; the readings' noise is not in it
   std::string largest;           ///< the input that contributes most
+  std::optional<LeadIdentification> leads;  ///< where they are to be identified
   StrainUncertainty atLargest;   ///< of a corrected strain, at the largest expected, zero included
   std::optional<Advice> advice;  ///< nothing when no single measurement takes off a tenth
 };

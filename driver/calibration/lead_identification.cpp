@@ -213,6 +213,7 @@ LeadIdentification identified(const LeadFit& fit) {
   metrology::Fit counted;
   counted.chiSquared = fit.chiSquared();
   counted.degreesOfFreedom = fit.dataRows() > unknown ? fit.dataRows() - unknown : 0;
+  out.degreesOfFreedom = static_cast<double>(counted.degreesOfFreedom);
   if (counted.degreesOfFreedom > 0) out.probability = metrology::lackOfFit(counted).probability;
 
   Advisor advisor(fit, g);

@@ -29,14 +29,15 @@ LeadReadings leadReadingsOf(const Rack& rack, const Channel& channel, const std:
   return out;
 }
 
-Result<LeadIdentification> leadsToBeIdentified(const Rack& rack, const Channel& channel) {
-  const auto prediction = predictScale(modelWithLeads(rack, channel), {});
+Result<LeadFit> leadFitToCome(const Rack& rack, const Channel& channel) {
+  const ChannelModel model = modelWithLeads(rack, channel);
+  const auto zero = bridge::ratio(model.atCalibration, {});
+  if (!zero) return std::unexpected(zero.error());
+  const auto prediction = predictScale(model, *zero);
   if (!prediction) return std::unexpected(prediction.error());
   const Ratio digit = resolutionOfStep(rack.device(channel.device)->profile->inputs->resolution);
-  auto fit = LeadFit::of(leadReadingsOf(rack, channel, prediction->steps,
-                                        std::vector<Ratio>(prediction->steps.size(), digit), {}, digit));
-  if (!fit) return std::unexpected(std::move(fit.error()));
-  return identified(*fit);
+  return LeadFit::of(leadReadingsOf(rack, channel, prediction->steps,
+                                    std::vector<Ratio>(prediction->steps.size(), digit), *zero, digit));
 }
 
 }  // namespace shuntwright::calibration

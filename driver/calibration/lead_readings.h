@@ -19,7 +19,6 @@ LeadReadings leadReadingsOf(const description::Rack& rack, const description::Ch
 
 /// What the shunts will tell of the leads, before any hardware is touched: steps as predicted, noise of the
 /// resolution alone. Errors: those of LeadFit::of().
-Result<LeadIdentification> leadsToBeIdentified(const description::Rack& rack,
-                                               const description::Channel& channel);
+Result<LeadFit> leadFitToCome(const description::Rack& rack, const description::Channel& channel);
 
 }  // namespace shuntwright::calibration

@@ -61,6 +61,50 @@ struct ShuntResult {
   int repeats = 0;
 };
 
+/// One lead as the data show it.
+struct IdentifiedLead {
+  description::Terminal terminal;
+  units::Resistance resistance;
+  units::Resistance expandedUncertainty;
+  bool toldApart = false;  ///< known better than by half of what the rack allows it to be off the others
+};
+
+/// What one input does to the identified resistance.
+struct LeadContribution {
+  std::string quantity;
+  units::Resistance uncertainty;  ///< standard
+};
+
+/// The one reading that would narrow the lead resistance most, and to what.
+struct LeadAdvice {
+  std::string
+      what;  ///< "know the completion resistor of arm 2 to 0.01 %", "switch RC to COMP and EXC- as well"
+  units::Resistance expandedUncertainty;
+};
+
+/// Lead resistance and amplifier's span from shunts at the instrument, with no walk to the gauge.
+struct LeadIdentification {
+  /// Mean of the leads that carry the excitation's current; 95.45 %, the inputs' shapes convolved.
+  units::Resistance resistance;
+  units::Resistance expandedUncertainty;
+  units::Resistance stated;  ///< what the rack said of them
+  double span = 1;
+  double spanStandardUncertainty = 0;
+  double correlation = 0;  ///< of the common lead resistance with the span
+  /// Of the whitened Jacobian for common resistance and span, columns scaled to 1, all else eliminated.
+  double condition = 1;
+  /// The interval is less than a tenth of the gauge's resistance either way; else the shunts do not tell
+  /// leads from span, and the figures above mean nothing.
+  bool identifiable = false;
+  std::string reason;  ///< why not
+  std::vector<IdentifiedLead> leads;
+  std::vector<LeadContribution> budget;  ///< largest first
+  std::optional<LeadAdvice> advice;      ///< nothing where no single reading takes off a tenth
+  double degreesOfFreedom = 0;  ///< steps and zero beyond what is asked of them
+  /// Of steps that fit leads and span this badly or worse if all is as stated; 1 where two steps always fit.
+  double probability = 1;
+};
+
 /// How well a corrected strain is known at one level; 95.45 %.
 struct StrainUncertainty {
   units::Strain level;
@@ -83,8 +127,9 @@ struct ChannelResult {
   std::vector<Finding> findings;
   double spanRatio = 1;                  ///< measured / predicted
   Budget budget;                         ///< of the correction's scale: everything that a shunt can see
-  std::optional<units::Resistance> leadResistance;      ///< as used: entered (mean of the leads)
+  std::optional<units::Resistance> leadResistance;      ///< as used: entered (mean of the leads) or identified
   std::optional<units::Resistance> leadUncertainty;     ///< expanded
+  std::optional<LeadIdentification> leads;              ///< where they were to be identified
   units::Ratio zero;                     ///< reading at no load
   units::Ratio zeroReadingUncertainty;   ///< expanded, of that reading alone
   int lostSamples = 0;                   ///< frames lost or damaged inside the windows

@@ -65,6 +65,36 @@ json::object budgetJson(const Budget& b) {
   return o;
 }
 
+json::value leadsJson(const LeadIdentification& found) {
+  json::object o;
+  o["identifiable"] = found.identifiable;
+  o["reason"] = found.reason;
+  o["resistance_ohm"] = number(found.resistance.in(ohm));
+  o["expanded_uncertainty_ohm"] = number(found.expandedUncertainty.in(ohm));
+  o["stated_ohm"] = number(found.stated.in(ohm));
+  o["span_standard_uncertainty"] = number(found.spanStandardUncertainty);
+  o["correlation_with_span"] = number(found.correlation);
+  o["condition"] = number(found.condition);
+  o["degrees_of_freedom"] = number(found.degreesOfFreedom);
+  o["probability"] = number(found.probability);
+  json::array leads, budget;
+  for (const auto& lead : found.leads) {
+    leads.push_back({{"terminal", std::string(description::name(lead.terminal))},
+                     {"resistance_ohm", number(lead.resistance.in(ohm))},
+                     {"expanded_uncertainty_ohm", number(lead.expandedUncertainty.in(ohm))},
+                     {"told_apart", lead.toldApart}});
+  }
+  for (const auto& line : found.budget) {
+    budget.push_back({{"quantity", line.quantity}, {"contribution_ohm", number(line.uncertainty.in(ohm))}});
+  }
+  o["leads"] = std::move(leads);
+  o["budget"] = std::move(budget);
+  o["advice"] = found.advice ? json::value(found.advice->what) : json::value(nullptr);
+  o["expanded_uncertainty_then_ohm"] =
+      found.advice ? number(found.advice->expandedUncertainty.in(ohm)) : json::value(nullptr);
+  return o;
+}
+
 json::value straightnessJson(const Straightness& line) {
   json::object o;
   o["worst_residual_percent"] = number(line.worst_percent);
@@ -97,6 +127,7 @@ json::object channelJson(const ChannelResult& c) {
   o["lead_resistance_ohm"] = c.leadResistance ? number(c.leadResistance->in(ohm)) : json::value(nullptr);
   o["lead_expanded_uncertainty_ohm"] =
       c.leadUncertainty ? number(c.leadUncertainty->in(ohm)) : json::value(nullptr);
+  o["leads"] = c.leads ? leadsJson(*c.leads) : json::value(nullptr);
   o["zero_mV_per_V"] = mVperV(c.zero);
   o["zero_reading_expanded_uncertainty_mV_per_V"] = mVperV(c.zeroReadingUncertainty);
   o["zero_expanded_uncertainty_microstrain"] = number(c.zeroExpandedUncertainty.in(microstrain));
@@ -199,6 +230,34 @@ ShuntResult shuntFrom(const json::object& o) {
   return s;
 }
 
+LeadIdentification leadsFrom(const json::object& o) {
+  LeadIdentification found;
+  found.identifiable = o.at("identifiable").as_bool();
+  found.reason = word(o, "reason");
+  found.resistance = get(o, "resistance_ohm") * ohm;
+  found.expandedUncertainty = get(o, "expanded_uncertainty_ohm") * ohm;
+  found.stated = get(o, "stated_ohm") * ohm;
+  found.spanStandardUncertainty = get(o, "span_standard_uncertainty");
+  found.correlation = get(o, "correlation_with_span");
+  found.condition = get(o, "condition");
+  found.degreesOfFreedom = get(o, "degrees_of_freedom");
+  found.probability = get(o, "probability");
+  for (const auto& v : o.at("leads").as_array()) {
+    const auto& one = v.as_object();
+    const auto terminal = description::terminalNamed(word(one, "terminal"));
+    found.leads.push_back({terminal.value_or(description::Terminal::exc_plus),
+                           get(one, "resistance_ohm") * ohm, get(one, "expanded_uncertainty_ohm") * ohm,
+                           one.at("told_apart").as_bool()});
+  }
+  for (const auto& v : o.at("budget").as_array()) {
+    found.budget.push_back({word(v.as_object(), "quantity"), get(v.as_object(), "contribution_ohm") * ohm});
+  }
+  if (!o.at("advice").is_null()) {
+    found.advice = LeadAdvice{word(o, "advice"), get(o, "expanded_uncertainty_then_ohm") * ohm};
+  }
+  return found;
+}
+
 Budget budgetFrom(const json::object& o) {
   const double infinite = std::numeric_limits<double>::infinity();
   Budget b;
@@ -236,6 +295,7 @@ ChannelResult channelFrom(const json::object& o) {
   if (!o.at("lead_expanded_uncertainty_ohm").is_null()) {
     c.leadUncertainty = get(o, "lead_expanded_uncertainty_ohm") * ohm;
   }
+  if (!o.at("leads").is_null()) c.leads = leadsFrom(o.at("leads").as_object());
   c.zero = ratioIn(o, "zero_mV_per_V");
   c.zeroReadingUncertainty = ratioIn(o, "zero_reading_expanded_uncertainty_mV_per_V");
   c.zeroExpandedUncertainty = get(o, "zero_expanded_uncertainty_microstrain") * microstrain;

@@ -22,118 +22,79 @@ double valueOf(Ratio r) {
   return r.in(volt_per_volt);
 }
 
-/// What the readings mean for one circuit.
-struct Meaning {
-  double span = 1;
-  WorkingPoint inTest;
-};
-
-Result<Meaning> meaningOf(const ChannelModel& model, const ScaleReadings& readings, double nominalSpan) {
-  auto prediction = predictScale(model, readings.zero);
-  if (!prediction) return std::unexpected(std::move(prediction.error()));
-  Meaning meaning;
-  meaning.span = spanOf(readings.measured, prediction->steps, readings.weights);
-  auto point = explain(model.atCalibration, readings.zero * (nominalSpan / meaning.span), model.cause);
-  if (!point) return std::unexpected(std::move(point.error()));
-  meaning.inTest = moved(*point, model.atCalibration, model.inTest);
-  return meaning;
-}
-
-/// Reading over the span when so much strain has been added.
-Result<double> ratioAt(const Meaning& meaning, double strainValue) {
-  auto r = bridge::ratio(meaning.inTest.circuit, meaning.inTest.standing + strainValue * strain);
-  if (!r) return std::unexpected(std::move(r.error()));
-  return valueOf(*r);
-}
-
-/// The strain at which the circuit shows this ratio, next to a strain at which it almost does.
-Result<double> strainNear(const Meaning& meaning, double ratio, double guess, double slope) {
-  constexpr int kRounds = 8;
-  constexpr double kSmall = 1e-12;
-  for (int round = 0; round < kRounds; ++round) {
-    const auto there = ratioAt(meaning, guess);
-    if (!there) return there;
-    const double by = (ratio - *there) / slope;
-    guess += by;
-    if (std::abs(by) < kSmall) break;
-  }
-  return guess;
-}
-
-/// Evaluates the outputs of a circuit, for readings that the nominal one explains.
-class Outputs {
+/// What the readings mean for one circuit, its span from the steps.
+class FromSteps {
  public:
-  static Result<Outputs> of(const ChannelModel& nominal, const ScaleReadings& readings,
-                            std::span<const Strain> levels) {
-    Outputs out;
+  static Result<FromSteps> of(const ChannelModel& nominal, const ScaleReadings& readings,
+                              std::span<const Strain> levels) {
+    FromSteps out;
     out.readings_ = readings;
     auto prediction = predictScale(nominal, readings.zero);
     if (!prediction) return std::unexpected(std::move(prediction.error()));
-    out.slope_ = prediction->slope_per_strain;
     out.span_ = spanOf(readings.measured, prediction->steps, readings.weights);
-    auto meaning = meaningOf(nominal, readings, out.span_);
+    auto meaning = out.meaning(nominal);
     if (!meaning) return std::unexpected(std::move(meaning.error()));
-    for (const Strain level : levels) {
-      const double e = level.in(strain);
-      const auto r = ratioAt(*meaning, e);
-      if (!r) return std::unexpected(r.error());
-      out.levels_.push_back({e, *r});
-    }
+    auto claims = Claims::of(*meaning, levels);
+    if (!claims) return std::unexpected(std::move(claims.error()));
+    out.claims_ = std::move(*claims);
     return out;
   }
 
   Result<void> evaluate(const ChannelModel& model, std::span<double> y) const {
-    const auto meaning = meaningOf(model, readings_, span_);
-    if (!meaning) return std::unexpected(meaning.error());
-    y[0] = 100 * (meaning->span / span_ - 1);
-    for (std::size_t k = 0; k < levels_.size(); ++k) {
-      const auto e =
-          strainNear(*meaning, levels_[k].ratio * span_ / meaning->span, levels_[k].strain, slope_);
-      if (!e) return std::unexpected(e.error());
-      y[1 + k] = *e - levels_[k].strain;
-    }
-    return {};
+    const auto other = meaning(model);
+    if (!other) return std::unexpected(other.error());
+    return claims_->evaluate(*other, y);
   }
 
-  double slope() const { return slope_; }
+  const Claims& claims() const { return *claims_; }
 
  private:
-  struct Level {
-    double strain, ratio;
-  };
+  Result<Meaning> meaning(const ChannelModel& model) const {
+    auto prediction = predictScale(model, readings_.zero);
+    if (!prediction) return std::unexpected(std::move(prediction.error()));
+    const double span = spanOf(readings_.measured, prediction->steps, readings_.weights);
+    return meaningOf(model, span, readings_.zero * (span_ / span));
+  }
+
   ScaleReadings readings_;
-  std::vector<Level> levels_;
-  double span_ = 1, slope_ = 0;
+  std::optional<Claims> claims_;
+  double span_ = 1;
 };
 
-void addScatter(MeasurementInputs& inputs, const StrainReadings& readings, double slope,
-                std::span<const Strain> levels) {
-  const ReadingScatter& steps = readings.scale.scatter;
-  const ZeroScatter& zero = readings.zero;
-  const auto strainOf = [slope](Ratio r) { return valueOf(r) / std::abs(slope); };
+void addStepScatter(MeasurementInputs& inputs, const ReadingScatter& steps, std::span<const Strain> levels) {
   const double step = std::abs(valueOf(steps.smallestStep));
   const double digits = step > 0 ? valueOf(steps.resolution) / step : 0;
-  inputs.addToOutput("noise and repeats of the steps", "%",
-                     normal(0, 100 * steps.stepRelative, steps.stepDegrees));
-  inputs.addToOutput("resolution of the steps", "%", triangular(0, 100 * digits));
-  for (std::size_t k = 0; k < levels.size(); ++k) {
+  const auto add = [&](const char* unit, double size, std::size_t output) {
+    inputs.addToOutput("noise and repeats of the steps", unit,
+                       normal(0, size * steps.stepRelative, steps.stepDegrees), output);
+    inputs.addToOutput("resolution of the steps", unit, triangular(0, size * digits), output);
+  };
+  add("%", 100, Claims::kSpan);
+  add("%", 100, Claims::kScale);
+  for (std::size_t k = 0; k < levels.size(); ++k)
+    add("m/m", std::abs(levels[k].in(strain)), Claims::kStrains + k);
+}
+
+}  // namespace
+
+std::vector<AddedInput> readingScatter(const StrainReadings& readings, double slope_per_strain,
+                                       std::size_t levels) {
+  const ZeroScatter& zero = readings.zero;
+  const auto strainOf = [&](Ratio r) { return valueOf(r) / std::abs(slope_per_strain); };
+  std::vector<AddedInput> out;
+  for (std::size_t k = 0; k < levels; ++k) {
     const auto add = [&](const char* quantity, const metrology::Distribution& in) {
-      inputs.addToOutput(quantity, "m/m", in, 1 + k);
+      if (in.standardUncertainty > 0) out.push_back({{quantity, "m/m", in}, Claims::kStrains + k});
     };
-    const double level = std::abs(levels[k].in(strain));
-    add("noise and repeats of the steps", normal(0, level * steps.stepRelative, steps.stepDegrees));
-    add("resolution of the steps", triangular(0, level * digits));
     add("noise of the zero reading", normal(0, strainOf(zero.standardUncertainty)));
     add("resolution of zero and reading", triangular(0, strainOf(zero.resolution)));
     add("zero return", rectangular(0, strainOf(zero.returnSpread)));
     add("stability of the amplifier", rectangular(0, strainOf(zero.stability)));
     add("noise of the reading", normal(0, strainOf(readings.noise)));
   }
+  return out;
 }
 
-}  // namespace
-
-/// batch).
 Fraction factorTolerance(const Rack& rack, const Channel& channel) {
   if (channel.transducer) return channel.transducer->sensitivityTolerance;
   const auto weights = description::armWeights(channel.circuit, channel.poisson);
@@ -156,11 +117,10 @@ Strain largestStrain(const Channel& channel) {
 Result<metrology::Model> strainModel(const Rack& rack, const Channel& channel, const StrainReadings& readings,
                                      std::span<const Strain> levels) {
   const ChannelModel withLeads = modelWithLeads(rack, channel);
-  auto outputs = Outputs::of(modelOf(rack, channel), readings.scale, levels);
-  if (!outputs) return std::unexpected(std::move(outputs.error()));
-  std::vector<double> nominal(1 + levels.size());
-  if (auto done = outputs->evaluate(withLeads, nominal); !done)
-    return std::unexpected(std::move(done.error()));
+  auto steps = FromSteps::of(modelOf(rack, channel), readings.scale, levels);
+  if (!steps) return std::unexpected(std::move(steps.error()));
+  std::vector<double> nominal(steps->claims().outputs());
+  if (auto done = steps->evaluate(withLeads, nominal); !done) return std::unexpected(std::move(done.error()));
 
   MeasurementInputs inputs(withLeads);
   for (auto& in : inputsOf(rack, channel)) {
@@ -168,56 +128,56 @@ Result<metrology::Model> strainModel(const Rack& rack, const Channel& channel, c
       in.input.distribution.standardUncertainty *= readings.zero.leadsShare;
     inputs.add(std::move(in));
   }
-  const auto unitOf = [](std::size_t output) { return output == 0 ? "%" : "m/m"; };
-  if (channel.leadLoss == description::LeadLoss::in_span) {
-    // Corrected with no leads: what is left of them is the part that the steps do not carry.
-    for (std::size_t i = 0; i < nominal.size(); ++i) {
-      inputs.addToOutput("lead loss not carried by the steps", unitOf(i),
-                         rectangular(0, std::abs(nominal[i])), i);
+  const auto addToEach = [&](const char* quantity, const std::vector<double>& halfWidths) {
+    for (std::size_t i = 0; i < halfWidths.size(); ++i) {
+      inputs.addToOutput(quantity, i < Claims::kStrains ? "%" : "m/m",
+                         rectangular(0, std::abs(halfWidths[i])), i);
     }
-  }
+  };
+  // Corrected with no leads: what is left of them is the part that the steps do not carry.
+  if (channel.leadLoss == description::LeadLoss::in_span)
+    addToEach("lead loss not carried by the steps", nominal);
   if (channel.unbalance == Unbalance::unknown) {
     std::vector<double> worst(nominal.size()), there(nominal.size());
     for (const Unbalance cause : {Unbalance::standing_strain, Unbalance::completion}) {
       ChannelModel other = withLeads;
       other.cause = cause;
-      if (!outputs->evaluate(other, there)) continue;
+      if (!steps->evaluate(other, there)) continue;
       for (std::size_t i = 0; i < worst.size(); ++i)
         worst[i] = std::max(worst[i], std::abs(there[i] - nominal[i]));
     }
-    for (std::size_t i = 0; i < worst.size(); ++i) {
-      inputs.addToOutput("cause of unbalance", unitOf(i), rectangular(0, worst[i]), i);
-    }
+    addToEach("cause of unbalance", worst);
   }
-  addScatter(inputs, readings, outputs->slope(), levels);
-  return std::move(inputs).model(nominal.size(),
-                                 [outputs = std::move(*outputs), nominal](
-                                     const ChannelModel& model, std::span<double> y) -> Result<void> {
-                                   if (auto done = outputs.evaluate(model, y); !done) return done;
-                                   for (std::size_t i = 0; i < nominal.size(); ++i) y[i] -= nominal[i];
-                                   return {};
-                                 });
+  addStepScatter(inputs, readings.scale.scatter, levels);
+  for (const auto& [input, output] :
+       readingScatter(readings, steps->claims().slope_per_strain(), levels.size())) {
+    inputs.addToOutput(input.quantity, input.unit, input.distribution, output);
+  }
+  return std::move(inputs).model(
+      nominal.size(),
+      [steps = std::move(*steps), nominal](const ChannelModel& model, std::span<double> y) -> Result<void> {
+        if (auto done = steps.evaluate(model, y); !done) return done;
+        for (std::size_t i = 0; i < nominal.size(); ++i) y[i] -= nominal[i];
+        return {};
+      });
 }
 
-Result<std::vector<StrainUncertainty>> strainUncertainties(const Rack& rack, const Channel& channel,
-                                                           const StrainReadings& readings,
+Result<std::vector<StrainUncertainty>> strainUncertainties(const metrology::Model& model,
                                                            std::span<const Strain> levels,
-                                                           Fraction factorTolerance) {
-  auto model = strainModel(rack, channel, readings, levels);
-  if (!model) return std::unexpected(std::move(model.error()));
-  auto propagated = metrology::firstOrder(*model);
+                                                           Fraction factorTolerance,
+                                                           double zeroSecondOrderVariance) {
+  auto propagated = metrology::firstOrder(model);
   if (!propagated) return std::unexpected(std::move(propagated.error()));
   // Leads that differ (many shares: normal) times leads that warm (a rectangle): such a product holds 95.45 %
   // within 2.245 of its standard deviations, not within 2.
   constexpr double kProductTails = 2.245 / 2;
-  const double second = readings.zeroSecondOrderVariance * kProductTails * kProductTails;
-
+  const double second = zeroSecondOrderVariance * kProductTails * kProductTails;
   std::vector<StrainUncertainty> out;
   for (std::size_t k = 0; k < levels.size(); ++k) {
-    metrology::Estimate estimate = propagated->outputs[1 + k];
+    metrology::Estimate estimate = propagated->outputs[Claims::kStrains + k];
     estimate.secondOrderVariance = second;
-    StrainUncertainty one{levels[k], metrology::shapedHalfWidth(*model, estimate) * strain, {}};
-    metrology::Model whole = *model;
+    StrainUncertainty one{levels[k], metrology::shapedHalfWidth(model, estimate) * strain, {}};
+    metrology::Model whole = model;
     const double level = std::abs(levels[k].in(strain));
     whole.inputs.push_back({"gauge factor", "", rectangular(0, factorTolerance.in(units::one))});
     estimate.contributions.push_back({level, level * whole.inputs.back().distribution.standardUncertainty});

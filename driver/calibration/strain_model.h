@@ -3,6 +3,7 @@
 #include <span>
 #include <vector>
 
+#include "driver/calibration/claims.h"
 #include "driver/calibration/uncertainty.h"
 
 namespace shuntwright::calibration {
@@ -23,24 +24,30 @@ units::Strain largestStrain(const description::Channel& channel);
 /// gauges by their shares in the signal, all off the same way (one batch).
 units::Fraction factorTolerance(const description::Rack& rack, const description::Channel& channel);
 
-/// The measurement behind corrected strain at several levels (for a transducer: fractions of the rated
-/// value).
-///
-/// Output 0: by how much the amplifier's span is off what the steps gave, in percent. Output 1 + k: true
-/// strain less corrected strain when levels[k] is shown, in m/m. Everything is kept as it was read (steps,
-/// zero, the reading at the level); the circuit moves by what is not known of it, and the full network says
-/// which span and which strain it would take to give these readings. The gauge factor is not in it: it scales
-/// truth and nothing else. Errors: as scaleModel().
+/// The measurement behind a channel's claims when its span comes from its steps: outputs are those of Claims.
+/// Everything is kept as it was read (steps, zero, the reading at the level); the circuit moves by what is
+/// not known of it, and the full network says which span and which strain it would take to give these
+/// readings. The gauge factor is not in it: it scales truth and nothing else. Errors: as scaleModel().
 Result<metrology::Model> strainModel(const description::Rack& rack, const description::Channel& channel,
                                      const StrainReadings& readings, std::span<const units::Strain> levels);
 
-/// By the GUM: first order with the inputs' own shapes convolved; where equal leads cancel to first order,
-/// the zero's second-order terms (zeroModel) are counted.
-/// @param factorTolerance  half-width, relative.
-Result<std::vector<StrainUncertainty>> strainUncertainties(const description::Rack& rack,
-                                                           const description::Channel& channel,
-                                                           const StrainReadings& readings,
+/// What adds straight to the strains: noise and resolution of zero and reading, zero return, the amplifier's
+/// offset.
+struct AddedInput {
+  metrology::Input input;
+  std::size_t output = 0;  ///< of Claims
+};
+std::vector<AddedInput> readingScatter(const StrainReadings& readings, double slope_per_strain,
+                                       std::size_t levels);
+
+/// Expanded uncertainty of corrected strain by the GUM: first order with the inputs' own shapes convolved;
+/// where equal leads cancel to first order, the zero's second-order terms are counted.
+/// @param model                    of strainModel() or identifiedModel(), for these levels.
+/// @param factorTolerance          half-width, relative.
+/// @param zeroSecondOrderVariance  from zeroUncertainty(), (m/m)^2.
+Result<std::vector<StrainUncertainty>> strainUncertainties(const metrology::Model& model,
                                                            std::span<const units::Strain> levels,
-                                                           units::Fraction factorTolerance);
+                                                           units::Fraction factorTolerance,
+                                                           double zeroSecondOrderVariance);
 
 }  // namespace shuntwright::calibration

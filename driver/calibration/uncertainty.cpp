@@ -87,12 +87,17 @@ Result<metrology::Model> jointScaleModel(const Rack& rack, std::span<const Chann
 Result<Budget> scaleBudget(const Rack& rack, const Channel& channel, const ScaleReadings& readings) {
   auto model = scaleModel(rack, channel, readings);
   if (!model) return std::unexpected(std::move(model.error()));
-  auto propagated = metrology::firstOrder(*model);
+  return budgetOf(*model, 0);
+}
+
+Result<Budget> budgetOf(const metrology::Model& model, std::size_t output) {
+  auto propagated = metrology::firstOrder(model);
   if (!propagated) return std::unexpected(std::move(propagated.error()));
-  const metrology::Estimate& scale = propagated->outputs.front();
+  const metrology::Estimate& scale = propagated->outputs[output];
   Budget budget;
-  for (std::size_t i = 0; i < model->inputs.size(); ++i) {
-    const auto& [quantity, unit, distribution, source] = model->inputs[i];
+  for (std::size_t i = 0; i < model.inputs.size(); ++i) {
+    const auto& [quantity, unit, distribution, source] = model.inputs[i];
+    if (scale.contributions[i].uncertainty <= 0) continue;  // of another output
     BudgetLine line;
     line.quantity = quantity;
     line.value = distribution.mean;
@@ -106,7 +111,7 @@ Result<Budget> scaleBudget(const Rack& rack, const Channel& channel, const Scale
   }
   budget.standardUncertainty_percent = scale.standardUncertainty;
   budget.effectiveDegreesOfFreedom = scale.degreesOfFreedom;
-  budget.expandedUncertainty_percent = metrology::shapedHalfWidth(*model, scale);
+  budget.expandedUncertainty_percent = metrology::shapedHalfWidth(model, scale);
   budget.coverageFactor =
       scale.standardUncertainty > 0 ? budget.expandedUncertainty_percent / scale.standardUncertainty : 2;
   return budget;

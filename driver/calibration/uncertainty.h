@@ -46,6 +46,9 @@ Result<metrology::Model> jointScaleModel(const description::Rack& rack,
 Result<Budget> scaleBudget(const description::Rack& rack, const description::Channel& channel,
                            const ScaleReadings& readings);
 
+/// The same of any model, for one of its outputs in percent.
+Result<Budget> budgetOf(const metrology::Model& model, std::size_t output);
+
 /// Second opinion: Monte Carlo of the same model (JCGM 101). Output 0 is in percent of the scale, about 0.
 Result<metrology::MonteCarloResult> scaleMonteCarlo(const description::Rack& rack,
                                                     const description::Channel& channel,

@@ -185,6 +185,19 @@ void straightness(ChannelResult& result, const description::Limits& limits) {
   }
 }
 
+void leadsAsStated(ChannelResult& result, const description::Limits& limits) {
+  if (!result.leads || !result.leads->identifiable) return;
+  const double stated = result.leads->stated.in(ohm);
+  const Bound bound(limits.leadDeviation.in(percent), limits);
+  const double off = stated > 0 ? 100 * std::abs(result.leads->resistance.in(ohm) / stated - 1) : 0;
+  const double u = stated > 0 ? 100 * result.leads->expandedUncertainty.in(ohm) / stated : 0;
+  if (bound.holds(off, u)) return;
+  result.findings.push_back({"leads-differ",
+                             "the leads are not what the rack says: another cable, or a poor contact",
+                             number(result.leads->resistance.in(ohm), 3) + " ohm found, " +
+                                 number(stated, 3) + " ohm stated: off by " + bound.text(off, u, 1, " %")});
+}
+
 /// A few lost samples cost a window nothing and are only counted; with more, something is wrong with the
 /// wire.
 void lostSamples(ChannelResult& result, const ChannelReadings& readings) {
@@ -214,6 +227,7 @@ void judge(ChannelResult& result, const ChannelReadings& readings, const descrip
   }
   lostSamples(result, readings);
   straightness(result, limits);
+  leadsAsStated(result, limits);
   if (readings.zero && readings.zero->saturated > 0) {
     result.findings.push_back({"saturated", "the input is over range at no load",
                                std::to_string(readings.zero->saturated) + " samples at full scale"});

@@ -129,7 +129,12 @@ std::vector<Finding> rezero(Record& record, const description::Rack& rack, const
     }
     auto uncertainty = uncertaintyOf(rack, *channel, zero, span, holds);
     ChannelResult anew = result;
-    auto corrected = correct(*channel, modelOf(rack, *channel), span, zero.mean, anew);
+    // The circuit behind identified leads is not kept; a zero that drifts a little changes nothing but where
+    // it is.
+    const bool identified = channel->leadLoss == description::LeadLoss::identified;
+    if (identified) anew.correction = result.correction.zeroedAt(zero.mean.in(volt_per_volt));
+    auto corrected =
+        identified ? Result<void>() : correct(*channel, modelOf(rack, *channel), span, zero.mean, anew);
     if (!uncertainty || !corrected) {
       const Error& error = uncertainty ? corrected.error() : uncertainty.error();
       findings.push_back({"zero-not-taken", result.name + ": " + error.message, error.remedy});

@@ -175,6 +175,7 @@ struct Limits {
   units::Fraction repeatability = 0.5 * units::percent;        ///< spread of repeated steps
   units::Ratio unbalance = 2.0 * units::millivolt_per_volt;    ///< |before|
   units::Fraction linearity = 0.5 * units::percent;  ///< worst |residual| of several shunts, of the largest step
+  units::Fraction leadDeviation = 20.0 * units::percent;  ///< identified lead resistance against the stated one
   /// Counts each figure's expanded uncertainty against it, so that a pass is one with the uncertainty counted (JCGM
   /// 106: guarded acceptance, guard band of one expanded uncertainty).
   bool guardBand = false;

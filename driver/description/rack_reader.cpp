@@ -246,6 +246,7 @@ class RackReader {
     reader.take("repeatability", out.repeatability, {"0.0001 %", "100 %"});
     reader.take("unbalance", out.unbalance, {"0.001 mV/V", "100 mV/V"});
     reader.take("linearity", out.linearity, {"0.0001 %", "100 %"});
+    reader.take("lead_deviation", out.leadDeviation, {"0.1 %", "1000 %"});
     reader.take("guard_band", out.guardBand);
     reader.finish();
   }

@@ -24,9 +24,10 @@ description::Rack shippedRack(const std::string& name) {
   return std::move(*rack);
 }
 
-VirtualBench::VirtualBench(description::Rack described, sim::Scenario scenario, std::uint64_t seed)
-    : rack(std::move(described)), seed_(seed) {
-  bench = std::make_unique<sim::Bench>(rack, scenario, seed, clock.now());
+VirtualBench::VirtualBench(description::Rack described, sim::Scenario scenario, std::uint64_t seed,
+                           std::optional<description::Rack> real)
+    : rack(std::move(described)), real_(std::move(real)), seed_(seed) {
+  bench = std::make_unique<sim::Bench>(real_ ? *real_ : rack, scenario, seed, clock.now());
 }
 
 VirtualBench::~VirtualBench() = default;

@@ -20,7 +20,9 @@ description::Rack shippedRack(const std::string& name);  ///< "small_bench.toml"
 /// A rack and its simulator in one thread and in virtual time.
 class VirtualBench {
  public:
-  VirtualBench(description::Rack rack, sim::Scenario scenario = {}, std::uint64_t seed = 1);
+  /// @param real  what the bench really is, where it is not what the rack says.
+  VirtualBench(description::Rack rack, sim::Scenario scenario = {}, std::uint64_t seed = 1,
+               std::optional<description::Rack> real = {});
   ~VirtualBench();
 
   /// Opens the rack, calibrates it and closes it again.
@@ -44,6 +46,7 @@ class VirtualBench {
   std::unique_ptr<sim::Bench> bench;
 
  private:
+  std::optional<description::Rack> real_;
   std::uint64_t seed_;
   std::size_t steps_ = 0;
 };

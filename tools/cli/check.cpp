@@ -142,6 +142,13 @@ class Check final : public Command {
     for (const auto& channel : rack.channels) {
       if (channel.shunts.empty()) continue;
       if (auto foreseen = calibration::foresee(rack, channel)) {
+        if (foreseen->leads && !foreseen->leads->identifiable) {
+          const auto& advice = foreseen->leads->advice;
+          diagnostics.error(channel.place,
+                            "the leads of channel \"" + channel.name +
+                                "\" cannot be identified: " + foreseen->leads->reason,
+                            advice ? advice->what : "use lead_loss = \"in prediction\"");
+        }
         const auto& sheet = channel.transducer;
         foresights_.push_back({channel.name,
                                sheet ? sheet->unit : "microstrain",
@@ -167,6 +174,14 @@ class Check final : public Command {
       json::object o;
       o["expanded_uncertainty_percent"] = foreseen.budget.expandedUncertainty_percent;
       o["coverage_factor"] = foreseen.budget.coverageFactor;
+      o["lead_expanded_uncertainty_ohm"] = nullptr;
+      if (const auto& leads = foreseen.leads) {
+        o["leads_identifiable"] = leads->identifiable;
+        o["lead_expanded_uncertainty_ohm"] = leads->expandedUncertainty.in(ohm);
+        o["lead_advice"] = leads->advice ? json::value(leads->advice->what) : json::value(nullptr);
+        o["lead_expanded_uncertainty_then_ohm"] =
+            leads->advice ? json::value(leads->advice->expandedUncertainty.in(ohm)) : json::value(nullptr);
+      }
       o["largest_input"] = foreseen.largest;
       const auto& at = foreseen.atLargest;
       o["unit"] = unit;
@@ -218,6 +233,29 @@ class Check final : public Command {
                              foreseen.advice ? fixed(foreseen.advice->to_percent, 3) : ""});
       table.row(row);
     }
+    table.print(console);
+    printLeads(console);
+  }
+
+  void printLeads(const Console& console) const {
+    using A = Table::Align;
+    Table table({{"channel", A::left},
+                 {"leads to +- ohm"},
+                 {"limited by", A::left},
+                 {"what would narrow it most", A::left},
+                 {"to +- ohm"}});
+    bool any = false;
+    for (const auto& one : foresights_) {
+      const auto& leads = one.foresight.leads;
+      if (!leads) continue;
+      any = true;
+      table.row({one.channel, leads->identifiable ? fixed(leads->expandedUncertainty.in(ohm), 3) : "not told",
+                 leads->budget.empty() ? "" : leads->budget.front().quantity,
+                 leads->advice ? leads->advice->what : "nothing by itself",
+                 leads->advice ? fixed(leads->advice->expandedUncertainty.in(ohm), 3) : ""});
+    }
+    if (!any) return;
+    console.out << "\nLeads to be identified (95.45 %)\n";
     table.print(console);
   }
 

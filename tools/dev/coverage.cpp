@@ -7,6 +7,7 @@
 #include <thread>
 
 #include "driver/calibration/analysis.h"
+#include "driver/calibration/identified_model.h"
 #include "driver/metrology/first_order.h"
 #include "driver/metrology/monte_carlo.h"
 #include "sim/amplifier/bridge_input.h"
@@ -23,8 +24,7 @@ namespace {
 constexpr std::array kParts{0.25, 0.5, 1.0};
 constexpr std::array kQuantities{"span",           "strain at 0",     "strain at 25 %",
                                  "strain at 50 %", "strain at 100 %", "100 % with gauge factor"};
-constexpr std::size_t kOutputs = kQuantities.size() - 1;  // of the model: the gauge factor is not in it
-constexpr auto kAmong = 40min;                            // from calibration to load
+constexpr auto kAmong = 40min;  // from calibration to load
 
 /// One quantity of one rack: by how much the truth differs from what was found, and what had been stated.
 struct Score {
@@ -176,7 +176,7 @@ Result<Scores> scored(const Rack& rack, const Channel& channel, const CoverageOp
   const Rack& truth = options.truth ? *options.truth : rack;
   const Random random = Random(options.seed).fork(static_cast<std::uint64_t>(number));
   DrawnRack drawn(truth, *truth.channel(channel.name), options, random);
-  calibration::StrainReadings behind;
+  calibration::Behind behind;
   const auto readings = drawn.calibrated(rack.calibration.windowSamples, rack.calibration.repeats);
   const auto found = calibration::analyse(rack, channel, readings, &behind);
   if (found.strainUncertainty.empty()) {
@@ -197,25 +197,31 @@ Result<Scores> scored(const Rack& rack, const Channel& channel, const CoverageOp
     scores[1 + level].off = strainThere - shown / factor;
     scores[5].off = strainThere - shown;
   }
-  const Fraction tolerance = calibration::factorTolerance(rack, channel);
-  auto stated = calibration::strainUncertainties(rack, channel, behind, levels, tolerance);
-  if (!stated) return std::unexpected(std::move(stated.error()));
+  const auto model = behind.fit
+                         ? calibration::identifiedModel(*behind.fit, rack, channel, behind.readings, levels)
+                         : calibration::strainModel(rack, channel, behind.readings, levels);
+  if (!model) return std::unexpected(model.error());
+  const auto stated = calibration::strainUncertainties(
+      *model, levels, calibration::factorTolerance(rack, channel), behind.readings.zeroSecondOrderVariance);
+  if (!stated) return std::unexpected(stated.error());
   for (std::size_t level = 0; level < levels.size(); ++level) {
     scores[1 + level].gum = (*stated)[level].expanded.in(strain);
     scores[5].gum = (*stated)[level].expandedWithFactor.in(strain);
   }
-  auto model = calibration::strainModel(rack, channel, behind, levels);
-  if (!model) return std::unexpected(std::move(model.error()));
   const auto first = metrology::firstOrder(*model);
   if (!first) return std::unexpected(first.error());
-  scores[0].gum = metrology::shapedHalfWidth(*model, first->outputs.front());
+  scores[0].gum = metrology::shapedHalfWidth(*model, first->outputs[calibration::Claims::kSpan]);
   if (options.trials == 0) return scores;
   Random own = random.fork(99);
   metrology::MonteCarloOptions wanted;
   wanted.trials = static_cast<std::size_t>(options.trials);
   const auto trials = metrology::monteCarlo(*model, own, wanted);
   if (!trials) return std::unexpected(trials.error());
-  for (std::size_t k = 0; k < kOutputs; ++k) scores[k].monteCarlo = trials->outputs[k].interval.symmetric;
+  const auto interval = [&](std::size_t output) { return trials->outputs[output].interval.symmetric; };
+  scores[0].monteCarlo = interval(calibration::Claims::kSpan);
+  for (std::size_t level = 0; level < levels.size(); ++level) {
+    scores[1 + level].monteCarlo = interval(calibration::Claims::kStrains + level);
+  }
   return scores;
 }
 

@@ -1,3 +1,4 @@
+// proves P-16
 #include "driver/calibration/lead_identification.h"
 
 #include <gtest/gtest.h>

@@ -38,6 +38,17 @@ Record example() {
   shunt.repeats = 2;
   c.shunts.push_back(shunt);
   c.correction = {2003.25, -0.5, -1.99, {0.5, -0.25, 1e-3, 2e-5}};
+  c.straightness = Straightness{0.05, 0.02, 3.5, 1, 0.06};
+  c.strainUncertainty = {{0.0 * microstrain, 0.5 * microstrain, 0.5 * microstrain},
+                         {1500.0 * microstrain, 2.5 * microstrain, 8.0 * microstrain}};
+  LeadIdentification leads;
+  leads.resistance = 5.125 * ohm;
+  leads.expandedUncertainty = 0.015625 * ohm;
+  leads.identifiable = true;
+  leads.leads = {{description::Terminal::comp, 5.25 * ohm, 0.5 * ohm, true}};
+  leads.budget = {{"completion resistor of arm 2", 0.0078125 * ohm}};
+  leads.advice = LeadAdvice{"switch RC to COMP and EXC- as well", 0.00390625 * ohm};
+  c.leads = leads;
   record.channels.push_back(c);
   ChannelResult bare;
   bare.name = "T1";
@@ -56,6 +67,11 @@ TEST(RecordJson, whatIsWrittenReadsBackAndWritesTheSameAgain) {
   EXPECT_EQ(back->channels[0].correction.p, 2003.25);
   EXPECT_EQ(back->channels[0].correction.bend, (std::array<double, 4>{0.5, -0.25, 1e-3, 2e-5}));
   EXPECT_EQ(back->channels[0].verdict, Verdict::fail);
+  ASSERT_TRUE(back->channels[0].leads);
+  EXPECT_EQ(back->channels[0].leads->resistance.in(ohm), 5.125);
+  EXPECT_EQ(back->channels[0].leads->leads[0].terminal, description::Terminal::comp);
+  ASSERT_EQ(back->channels[0].strainUncertainty.size(), 2u);
+  EXPECT_FALSE(back->channels[1].leads);
 }
 
 TEST(RecordJson, unknownIsNull) {

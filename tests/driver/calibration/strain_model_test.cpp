@@ -25,9 +25,9 @@ struct Bench {
   std::vector<StrainUncertainty> at(std::vector<Strain> levels, Fraction factor = {}) const {
     const auto zero = zeroUncertainty(rack, channel, readings.scale.zero, readings.zero);
     EXPECT_TRUE(zero) << zero.error().text();
-    StrainReadings all = readings;
-    all.zeroSecondOrderVariance = zero->secondOrderVariance;
-    auto found = strainUncertainties(rack, channel, all, levels, factor);
+    const auto model = strainModel(rack, channel, readings, levels);
+    EXPECT_TRUE(model) << model.error().text();
+    auto found = strainUncertainties(*model, levels, factor, zero->secondOrderVariance);
     EXPECT_TRUE(found) << found.error().text();
     return found ? *found : std::vector<StrainUncertainty>{};
   }
@@ -103,7 +103,7 @@ TEST(StrainUncertainty, aMonteCarloOfTheSameModelAgrees) {
   ASSERT_TRUE(drawn) << drawn.error().text();
   const auto stated = bench.at(levels);
   for (std::size_t k = 0; k < levels.size(); ++k) {
-    const auto& interval = drawn->outputs[1 + k].interval.symmetric;
+    const auto& interval = drawn->outputs[Claims::kStrains + k].interval.symmetric;
     EXPECT_NEAR(stated[k].expanded.in(strain), interval.width() / 2, 0.05 * interval.width() / 2) << k;
   }
 }
@@ -115,7 +115,7 @@ TEST(StrainUncertainty, theModelFindsTheTruthOfACircuitThatDiffers) {
   const Strain level = 1500.0 * microstrain;
   const auto model = strainModel(bench.rack, channel, bench.readings, {&level, 1});
   ASSERT_TRUE(model);
-  std::vector<double> x, y(2);
+  std::vector<double> x, y(3);
   std::size_t gauge = model->inputs.size();
   for (std::size_t i = 0; i < model->inputs.size(); ++i) {
     x.push_back(model->inputs[i].distribution.mean);
@@ -125,8 +125,8 @@ TEST(StrainUncertainty, theModelFindsTheTruthOfACircuitThatDiffers) {
   x[gauge] *=
       1.01;  // a larger resistor makes smaller steps: the same reading means a larger span and less strain
   ASSERT_TRUE(model->function(x, y));
-  EXPECT_NEAR(y[0], 1.0, 0.02);
-  EXPECT_NEAR(y[1] / level.in(strain), -0.01, 0.0003);
+  EXPECT_NEAR(y[Claims::kSpan], 1.0, 0.02);
+  EXPECT_NEAR(y[Claims::kStrains] / level.in(strain), -0.01, 0.0003);
 }
 
 }  // namespace

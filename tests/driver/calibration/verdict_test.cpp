@@ -95,6 +95,15 @@ TEST(Verdict, aGuardBandCountsTheUncertaintyAgainstTheFigure) {
          c.result.straightness->worst_percent = figure * c.limits.linearity.in(percent);
          c.result.straightness->expandedUncertainty_percent = uncertainty * c.limits.linearity.in(percent);
        }},
+      {"leads-differ",
+       [](Channel& c, double figure, double uncertainty) {
+         LeadIdentification leads;
+         leads.identifiable = true;
+         leads.stated = 5.0 * ohm;
+         leads.resistance = 5.0 * (1 - figure * c.limits.leadDeviation.in(one)) * ohm;
+         leads.expandedUncertainty = 5.0 * uncertainty * c.limits.leadDeviation.in(one) * ohm;
+         c.result.leads = leads;
+       }},
   };
   struct Row {
     double figure, uncertainty;
