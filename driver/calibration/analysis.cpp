@@ -21,6 +21,14 @@ using metrology::coverageHalfWidth;
 using metrology::Shape;
 using metrology::studentFactor;
 
+namespace {
+
+double valueOf(Ratio r) {
+  return r.in(volt_per_volt);
+}
+
+}  // namespace
+
 double correlationFactor(const Rack& rack, const Channel& channel) {
   const auto& device = *rack.device(channel.device);
   const double tau_s = seconds(device.profile->inputs->filterTimeConstant);
@@ -32,6 +40,18 @@ double correlationFactor(const Rack& rack, const Channel& channel) {
     rate_Hz = device.profile->inputs->rates.front().in(hertz);
   }
   const double rho = std::exp(-1 / (rate_Hz * tau_s));
+  return (1 + rho) / (1 - rho);
+}
+
+double correlationSeen(std::span<const Window> windows, double most) {
+  double differences = 0, squares = 0;
+  for (const Window& w : windows) {
+    if (w.samples < 3) continue;
+    differences += (w.samples - 1) * valueOf(w.successive) * valueOf(w.successive);
+    squares += (w.samples - 1) * valueOf(w.deviation) * valueOf(w.deviation);
+  }
+  if (squares <= 0) return most;
+  const double rho = std::clamp(1 - differences / (2 * squares), 0.0, (most - 1) / (most + 1));
   return (1 + rho) / (1 - rho);
 }
 
@@ -54,10 +74,6 @@ Result<void> correct(const Channel& channel, const ChannelModel& model, double s
 }
 
 namespace {
-
-double valueOf(Ratio r) {
-  return r.in(volt_per_volt);
-}
 
 void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& result) {
   result.name = channel.name;
@@ -82,6 +98,16 @@ void describeChannel(const Rack& rack, const Channel& channel, ChannelResult& re
   result.leadUncertainty = worst * ohm;
 }
 
+std::vector<Window> windowsOf(const ChannelReadings& readings) {
+  std::vector<Window> out;
+  for (const auto& shunt : readings.shunts) {
+    for (const auto* windows : {&shunt.opened, &shunt.closed})
+      out.insert(out.end(), windows->begin(), windows->end());
+  }
+  if (readings.zero) out.push_back(*readings.zero);
+  return out;
+}
+
 /// One channel's way from readings to correction, budget and verdict.
 class Analysis {
  public:
@@ -90,7 +116,7 @@ class Analysis {
         channel_(channel),
         readings_(readings),
         model_(modelOf(rack, channel)),
-        correlation_(correlationFactor(rack, channel)),
+        correlation_(correlationSeen(windowsOf(readings), correlationFactor(rack, channel))),
         digit_(rack.device(channel.device)->profile->inputs->resolution),
         factorTolerance_(factorTolerance(rack, channel)) {}
 

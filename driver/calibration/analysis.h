@@ -1,6 +1,7 @@
 #pragma once
 
 #include <optional>
+#include <span>
 #include <vector>
 
 #include "driver/calibration/channel_model.h"
@@ -22,6 +23,10 @@ struct ChannelReadings {
 /// By how much the variance of a mean exceeds that of independent samples, when an input filter of time
 /// constant tau makes neighbours alike: (1 + rho) / (1 - rho), rho = exp(-T / tau).
 double correlationFactor(const description::Rack& rack, const description::Channel& channel);
+
+/// The same as the samples themselves show it: rho = 1 - d^2 / (2 s^2) with d the mean square of successive differences
+/// (von Neumann's ratio), pooled over the windows; not below 1, and not above `most`, the filter's.
+double correlationSeen(std::span<const Window> windows, double most);
 
 /// A sensor that is neither calibrated nor zeroed keeps its absolute scale (a thermometer).
 bool isAbsolute(const description::Channel& channel);

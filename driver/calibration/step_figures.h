@@ -32,7 +32,7 @@ struct StepFigures {
   double degrees = 1;
 };
 
-/// @param correlation  by how much samples that a filter makes alike scatter a mean more (correlationFactor).
+/// @param correlation  by how much samples that a filter makes alike scatter a mean more (correlationSeen).
 StepFigures figuresOf(const description::Shunt& shunt, const ShuntReadings& readings, double correlation);
 
 }  // namespace shuntwright::calibration

@@ -22,6 +22,8 @@ void WindowBuilder::add(Instant when, float ratio, std::uint8_t flags) {
   if (window_.samples == 0) origin_ = ratio;
   const double n = ++window_.samples;
   const double x = seconds(when - window_.start), y = ratio - origin_;
+  if (n > 1) successive_ += (y - previous_) * (y - previous_);
+  previous_ = y;
   const double dx = x - meanX_, dy = y - meanY_;
   meanX_ += dx / n;
   meanY_ += dy / n;
@@ -41,6 +43,7 @@ Window WindowBuilder::window() const {
   const double residual = std::max(0.0, syy_ - slope * sxy_);
   out.mean = (origin_ + meanY_) * units::volt_per_volt;
   out.deviation = (out.samples < 3 ? 0 : std::sqrt(residual / (out.samples - 2))) * units::volt_per_volt;
+  out.successive = (out.samples < 2 ? 0 : std::sqrt(successive_ / (out.samples - 1))) * units::volt_per_volt;
   out.drift = slope * seconds(out.end - out.start) * units::volt_per_volt;
   return out;
 }

@@ -15,6 +15,7 @@ namespace shuntwright::calibration {
 struct Window {
   units::Ratio mean;
   units::Ratio deviation;   ///< standard deviation of a sample about a straight line through the window
+  units::Ratio successive;  ///< root mean square of the difference between neighbouring samples
   units::Ratio drift;       ///< of that line, first sample to last
   int samples = 0;          ///< used
   int saturated = 0;
@@ -37,6 +38,7 @@ class WindowBuilder {
  private:
   Window window_;
   // A straight line by running sums about the first sample, so that nothing is stored or cancelled away.
+  double previous_ = 0, successive_ = 0;
   double origin_ = 0, meanX_ = 0, meanY_ = 0, sxx_ = 0, syy_ = 0, sxy_ = 0;
 };
 

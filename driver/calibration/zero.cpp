@@ -29,8 +29,8 @@ Result<Strain> uncertaintyOf(const description::Rack& rack, const description::C
                              const Window& zero, double span, Nanoseconds holds) {
   const auto& inputs = *rack.device(channel.device)->profile->inputs;
   ZeroScatter scatter;
-  scatter.standardUncertainty =
-      zero.deviation * std::sqrt(correlationFactor(rack, channel) / std::max(1, zero.samples)) / span;
+  const double correlation = correlationSeen({&zero, 1}, correlationFactor(rack, channel));
+  scatter.standardUncertainty = zero.deviation * std::sqrt(correlation / std::max(1, zero.samples)) / span;
   scatter.resolution = inputs.resolution;
   scatter.stability = inputs.zeroStability / span;
   scatter.leadsShare = std::clamp(seconds(holds) / 3600, 0.0, 1.0);

@@ -75,7 +75,7 @@ TrueChannel::TrueChannel(const description::Rack& rack, const description::Chann
     excitationSeries_ohm_ = (in - out) / 2;
     const double x = sheet.sensitivity.in(volt_per_volt) * in / out * gaugeFactor_;
     for (std::size_t k = 0; k < 4; ++k) {
-      arms_[k] = off(random, out, imperfections.gauges * 1e-4);
+      arms_[k] = off(random, out, imperfections.completions * 1e-4);  // resistors that trim it
       relativePerStrain_[k] = weights[k] * x;
     }
   } else {

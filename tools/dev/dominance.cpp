@@ -74,7 +74,7 @@ sim::Imperfections silent() {
   sim::Imperfections out;
   out.noise = 1e-10 * volt_per_volt;
   out.mains = out.offset = out.drift = Ratio();
-  out.leads = 0;
+  out.leads = out.completions = 0;
   return out;
 }
 
@@ -127,11 +127,13 @@ const std::vector<Campaign>& campaigns() {
       {"completion resistor", "Q3", "span",
        [](Rack& rack, Channel&, double share) {
          for (auto& offered : inputsOf(rack).completions) offered.tolerance = share * 0.3 * percent;
-       }},
+       },
+       [](sim::Imperfections& i) { i.completions = 1; }},
       {"half-bridge resistor", "HB", "span",
        [](Rack& rack, Channel&, double share) {
          inputsOf(rack).halfBridge.tolerance = share * 0.3 * percent;
-       }},
+       },
+       [](sim::Imperfections& i) { i.completions = 1; }},
       {"lead resistance", "HB", "strain at 100 %",
        [](Rack&, Channel& channel, double share) {
          longLeads(channel);

@@ -6,6 +6,7 @@
 #include <cmath>
 
 #include "driver/calibration/channel_model.h"
+#include "driver/core/random.h"
 #include "tests/support/virtual_bench.h"
 
 namespace shuntwright::calibration {
@@ -66,6 +67,28 @@ TEST_F(Analysis, idealReadingsPassWithASpanOfOne) {
   const auto result = analyse(rack, channel("Q3"), ideal(channel("Q3")));
   EXPECT_EQ(result.verdict, Verdict::pass);
   EXPECT_NEAR(result.spanRatio, 1, 1e-9);
+}
+
+// Samples of a first-order filter have the autocorrelation rho^k (textbook: AR(1)); white ones none.
+TEST(Correlation, isThatOfTheSamplesAndNoMoreThanTheFilters) {
+  const auto seen = [](double rho, double most) {
+    Random random(4);
+    std::vector<Window> windows;
+    double y = 0;
+    for (int w = 0; w < 40; ++w) {
+      WindowBuilder builder;
+      for (int k = 0; k < 100; ++k) {
+        y = rho * y + std::sqrt(1 - rho * rho) * random.normal();
+        builder.add(Instant{} + (100 * w + k) * 10ms, static_cast<float>(1e-6 * y), 0);
+      }
+      windows.push_back(builder.window());
+    }
+    return correlationSeen(windows, most);
+  };
+  EXPECT_NEAR(seen(0, 3), 1, 0.1);
+  EXPECT_NEAR(seen(0.3, 3), 1.3 / 0.7, 0.2);
+  EXPECT_DOUBLE_EQ(seen(0.8, 3), 3);
+  EXPECT_DOUBLE_EQ(correlationSeen({}, 2), 2);
 }
 
 TEST(Steps, aLinearDriftIsRemovedHoweverUnequalTheWaits) {
