@@ -202,12 +202,8 @@ class Analysis {
       fit_ = std::move(*fit);
       const LeadFit::Situation at = fit_->situationAt(fit_->estimate());
       model_ = at.model;
-      for (const auto& lead : found.leads) {
-        auto& described = channel_.leads.at(lead.terminal);
-        described.resistance = lead.resistance;
-        described.tolerance =
-            lead.resistance > Resistance() ? lead.expandedUncertainty / lead.resistance * one : Fraction();
-      }
+      // Their tolerance stays: what they may be off each other is what moves a zero as they warm.
+      for (const auto& lead : found.leads) channel_.leads.at(lead.terminal).resistance = lead.resistance;
       result_.leadResistance = found.resistance;
       result_.leadUncertainty = found.expandedUncertainty;
     } else {

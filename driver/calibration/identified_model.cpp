@@ -1,5 +1,7 @@
 #include "driver/calibration/identified_model.h"
 
+#include <algorithm>
+
 namespace shuntwright::calibration {
 
 using namespace units;
@@ -15,7 +17,7 @@ struct FromFit {
   std::optional<UncertainInput> warming;  ///< of the leads until the test
   std::optional<Claims> claims;
 
-  Result<Meaning> meaningAt(std::span<const double> x) const {
+  LeadFit::Situation situationAt(std::span<const double> x) const {
     const std::size_t rows = fit.rows().size();
     std::vector<double> t = fit.estimate();
     for (std::size_t r = 0; r < rows; ++r) {
@@ -25,9 +27,22 @@ struct FromFit {
     }
     LeadFit::Situation at = fit.situationAt(t);
     if (warming) warming->shift(at.model, x[rows] - warming->input.distribution.mean);
-    return meaningOf(at.model, at.span, reading / at.span);
+    return at;
   }
 };
+
+/// Of the leads that carry the excitation's current, while the shunts were closed.
+Resistance meanLead(const ChannelModel& model) {
+  const auto& circuit = model.atCalibration;
+  double sum_ohm = 0;
+  int count = 0;
+  for (const auto lead : description::leadsOf(circuit.kind, circuit.sensed)) {
+    if (!description::carriesCurrent(circuit.kind, lead)) continue;
+    sum_ohm += circuit.lead(lead).in(ohm);
+    ++count;
+  }
+  return sum_ohm / std::max(1, count) * ohm;
+}
 
 }  // namespace
 
@@ -56,12 +71,15 @@ Result<metrology::Model> identifiedModel(const LeadFit& fit, const Rack& rack, c
     out.inputs.push_back(std::move(part.input));
     added.push_back(part.output);
   }
-  out.outputs = base.claims->outputs();
-  out.function = [base = std::move(base), circuit, added](std::span<const double> x,
-                                                          std::span<double> y) -> Result<void> {
-    const auto other = base.meaningAt(x);
+  out.outputs = base.claims->outputs() + 1;
+  const double leads_ohm = meanLead(nominal.model).in(ohm);
+  out.function = [base = std::move(base), circuit, added, leads_ohm](std::span<const double> x,
+                                                                     std::span<double> y) -> Result<void> {
+    const LeadFit::Situation at = base.situationAt(x);
+    const auto other = meaningOf(at.model, at.span, base.reading / at.span);
     if (!other) return std::unexpected(other.error());
-    if (auto done = base.claims->evaluate(*other, y); !done) return done;
+    y.back() = meanLead(at.model).in(ohm)-leads_ohm;
+    if (auto done = base.claims->evaluate(*other, y.first(y.size() - 1)); !done) return done;
     for (std::size_t k = 0; k < added.size(); ++k) y[added[k]] += x[circuit + k];
     return {};
   };

@@ -147,6 +147,12 @@ double TrueChannel::leadWarming_K(double time_s) const {
   return warmStart_K_ + (warmEnd_K_ - warmStart_K_) * (1 - std::exp(-std::max(0.0, time_s) / warmTime_s_));
 }
 
+double TrueChannel::lead_ohm(Terminal terminal, double warmer_K) const {
+  const double alpha = 0.00393, stated_C = channel_->leads.at(terminal).temperature.celsius();
+  const double warmth = (1 + alpha * (stated_C + warmer_K - 20)) / (1 + alpha * (stated_C - 20));
+  return leads_[static_cast<std::size_t>(terminal)] * warmth;
+}
+
 double TrueChannel::ratio(double strainValue, double leadsWarmer_K) const {
   const CircuitKind kind = channel_->circuit;
   NodeCircuit c;
@@ -158,12 +164,10 @@ double TrueChannel::ratio(double strainValue, double leadsWarmer_K) const {
   c.hold(inst(Terminal::exc_plus), 1);
   c.hold(inst(Terminal::exc_minus), 0);
   for (const auto& [terminal, lead] : channel_->leads) {
-    const double alpha = 0.00393, stated_C = lead.temperature.celsius();
-    const double warmth = (1 + alpha * (stated_C + leadsWarmer_K - 20)) / (1 + alpha * (stated_C - 20));
     std::size_t far = tab(terminal);
     if (terminal == Terminal::sense_plus) far = tab(Terminal::exc_plus);
     if (terminal == Terminal::sense_minus) far = tab(Terminal::exc_minus);
-    c.connect(inst(terminal), far, leads_[static_cast<std::size_t>(terminal)] * warmth);
+    c.connect(inst(terminal), far, lead_ohm(terminal, leadsWarmer_K));
   }
   std::array<double, 4> arm{};
   for (std::size_t k = 0; k < 4; ++k) arm[k] = arms_[k] * (1 + relativePerStrain_[k] * strainValue);

@@ -8,6 +8,7 @@
 #include "driver/description/load.h"
 #include "driver/rack/prediction.h"
 #include "tools/cli/command.h"
+#include "tools/cli/record_table.h"
 
 namespace shuntwright::cli {
 
@@ -67,6 +68,8 @@ class Check final : public Command {
     app.add_flag("--monte-carlo", monteCarlo_,
                  "With --budget: a second opinion by drawing random numbers (JCGM 101)")
         ->needs("--budget");
+    app.add_option("--lines", lines_, "With --budget: every line of this channel's budget")
+        ->needs("--budget");
   }
 
   int run(const Console& console) override {
@@ -105,6 +108,11 @@ class Check final : public Command {
       console.err << diagnostics.render(console.colour && console.errIsTerminal);
       print(console, channels);
       printForesights(console);
+      for (const auto& one : foresights_) {
+        if (one.channel != lines_) continue;
+        console.out << '\n';
+        printBudget(console, one.channel, one.foresight.budget);
+      }
       if (diagnostics.ok()) console.out << console.good("ok") << '\n';
     }
     return diagnostics.ok() ? kPassed : kBadUse;
@@ -269,6 +277,7 @@ class Check final : public Command {
   std::vector<std::string> files_;
   bool budget_ = false;
   bool monteCarlo_ = false;
+  std::string lines_;
   std::vector<Foreseen> foresights_;
 };
 

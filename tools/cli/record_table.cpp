@@ -71,9 +71,36 @@ void printRecord(const Console& console, const calibration::Record& record) {
   }
 }
 
+namespace {
+
+void printLeadBudget(const Console& console, const calibration::LeadIdentification& leads) {
+  console.out << console.bold("Uncertainty budget of the identified leads") << '\n';
+  Table table({{"quantity", A::left}, {"contribution ohm"}});
+  for (const auto& line : leads.budget) table.row({line.quantity, fixed(line.uncertainty.in(ohm), 5)});
+  table.print(console);
+  console.out << "mean of the leads " << fixed(leads.resistance.in(ohm), 4)
+              << " ohm, expanded U = " << fixed(leads.expandedUncertainty.in(ohm), 4)
+              << " ohm (95.45 %); correlation with the span " << fixed(leads.correlation, 3) << '\n';
+}
+
+}  // namespace
+
 void printBudget(const Console& console, const calibration::ChannelResult& channel) {
-  const auto& b = channel.budget;
-  console.out << console.bold("Uncertainty budget of the scale, channel " + channel.name) << '\n';
+  printBudget(console, channel.name, channel.budget);
+  for (const auto& at : channel.strainUncertainty) {
+    const auto shown = [&](Strain value, int decimals) {
+      return fixed(value.in(strain)*channel.unitsPerStrain, decimals);
+    };
+    const int decimals = channel.unitsPerStrain == 1e6 ? 2 : 4;
+    console.out << "corrected value at " << shown(at.level, 0) << ' ' << channel.unit
+                << ": U = " << shown(at.expanded, decimals) << ", with the gauge factor "
+                << shown(at.expandedWithFactor, decimals) << ' ' << channel.unit << " (95.45 %)\n";
+  }
+  if (channel.leads && channel.leads->identifiable) printLeadBudget(console, *channel.leads);
+}
+
+void printBudget(const Console& console, const std::string& channel, const calibration::Budget& b) {
+  console.out << console.bold("Uncertainty budget of the scale, channel " + channel) << '\n';
   Table table({{"quantity", A::left},
                {"value"},
                {"unit", A::left},

@@ -9,5 +9,7 @@ namespace shuntwright::cli {
 void printRecord(const Console& console, const calibration::Record& record);
 /// One channel's uncertainty budget, as a quality manager reads it.
 void printBudget(const Console& console, const calibration::ChannelResult& channel);
+/// The lines of the scale alone.
+void printBudget(const Console& console, const std::string& channel, const calibration::Budget& budget);
 
 }  // namespace shuntwright::cli

@@ -22,8 +22,15 @@ using description::Rack;
 namespace {
 
 constexpr std::array kParts{0.25, 0.5, 1.0};
-constexpr std::array kQuantities{"span",           "strain at 0",     "strain at 25 %",
-                                 "strain at 50 %", "strain at 100 %", "100 % with gauge factor"};
+constexpr std::array kQuantities{"span",
+                                 "lead resistance",
+                                 "strain at 0",
+                                 "strain at 25 %",
+                                 "strain at 50 %",
+                                 "strain at 100 %",
+                                 "100 % with gauge factor"};
+constexpr std::size_t kSpan = 0, kLeads = 1, kLevels = 2, kWithFactor = kQuantities.size() - 1;
+static_assert(kWithFactor == kLevels + 1 + kParts.size());
 constexpr auto kAmong = 40min;  // from calibration to load
 
 /// One quantity of one rack: by how much the truth differs from what was found, and what had been stated.
@@ -94,6 +101,7 @@ class DrawnRack {
       }
       out.shunts.push_back(std::move(readings));
     }
+    calibrated_ = now_;
     out.zero = window(windowSamples);
     return out;
   }
@@ -119,6 +127,18 @@ class DrawnRack {
   }
 
   double span() const { return input_->span(); }
+  /// Mean of those that carry current, as warm as they were while the shunts were closed.
+  Resistance leadsAtCalibration() const {
+    const double warmth = input_->channel().leadWarming_K(seconds(calibrated_ - clock_.start));
+    double sum_ohm = 0;
+    int count = 0;
+    for (const auto& [terminal, lead] : channel_.leads) {
+      if (!description::carriesCurrent(channel_.circuit, terminal)) continue;
+      sum_ohm += input_->channel().lead_ohm(terminal, warmth);
+      ++count;
+    }
+    return sum_ohm / std::max(1, count) * ohm;
+  }
   double factor() const { return input_->channel().gaugeFactor(); }
 
  private:
@@ -162,7 +182,7 @@ class DrawnRack {
   sim::LoadClock clock_;
   std::optional<sim::BridgeInput> input_;
   Nanoseconds step_;
-  Instant now_;
+  Instant now_, calibrated_;
   bool loaded_ = false;
   double wander_ = 0;  ///< of the amplifier's offset until the test
   calibration::Window zeroLater_;
@@ -188,14 +208,14 @@ Result<Scores> scored(const Rack& rack, const Channel& channel, const CoverageOp
   const double nominal = channel.transducer ? 1 : rack.gaugeOf(channel).factor.value();
   const double factor = drawn.factor() / nominal;
   Scores scores;
-  scores[0].off = 100 * (drawn.span() / found.spanRatio - 1);
+  scores[kSpan].off = 100 * (drawn.span() / found.spanRatio - 1);
   std::vector<Strain> levels;
   for (std::size_t level = 0; level <= kParts.size(); ++level) {
     const auto [strainThere, reading] = drawn.held(level, rack.calibration.windowSamples);
     const double shown = strainIn(found, reading);
     levels.push_back(shown * strain);
-    scores[1 + level].off = strainThere - shown / factor;
-    scores[5].off = strainThere - shown;
+    scores[kLevels + level].off = strainThere - shown / factor;
+    scores[kWithFactor].off = strainThere - shown;
   }
   const auto model = behind.fit
                          ? calibration::identifiedModel(*behind.fit, rack, channel, behind.readings, levels)
@@ -205,12 +225,16 @@ Result<Scores> scored(const Rack& rack, const Channel& channel, const CoverageOp
       *model, levels, calibration::factorTolerance(rack, channel), behind.readings.zeroSecondOrderVariance);
   if (!stated) return std::unexpected(stated.error());
   for (std::size_t level = 0; level < levels.size(); ++level) {
-    scores[1 + level].gum = (*stated)[level].expanded.in(strain);
-    scores[5].gum = (*stated)[level].expandedWithFactor.in(strain);
+    scores[kLevels + level].gum = (*stated)[level].expanded.in(strain);
+    scores[kWithFactor].gum = (*stated)[level].expandedWithFactor.in(strain);
   }
   const auto first = metrology::firstOrder(*model);
   if (!first) return std::unexpected(first.error());
-  scores[0].gum = metrology::shapedHalfWidth(*model, first->outputs[calibration::Claims::kSpan]);
+  scores[kSpan].gum = metrology::shapedHalfWidth(*model, first->outputs[calibration::Claims::kSpan]);
+  if (behind.fit) {
+    scores[kLeads].off = (drawn.leadsAtCalibration() - *found.leadResistance).in(ohm);
+    scores[kLeads].gum = found.leadUncertainty->in(ohm);
+  }
   if (options.trials == 0) return scores;
   Random own = random.fork(99);
   metrology::MonteCarloOptions wanted;
@@ -218,9 +242,10 @@ Result<Scores> scored(const Rack& rack, const Channel& channel, const CoverageOp
   const auto trials = metrology::monteCarlo(*model, own, wanted);
   if (!trials) return std::unexpected(trials.error());
   const auto interval = [&](std::size_t output) { return trials->outputs[output].interval.symmetric; };
-  scores[0].monteCarlo = interval(calibration::Claims::kSpan);
+  scores[kSpan].monteCarlo = interval(calibration::Claims::kSpan);
+  if (behind.fit) scores[kLeads].monteCarlo = interval(trials->outputs.size() - 1);
   for (std::size_t level = 0; level < levels.size(); ++level) {
-    scores[1 + level].monteCarlo = interval(calibration::Claims::kStrains + level);
+    scores[kLevels + level].monteCarlo = interval(calibration::Claims::kStrains + level);
   }
   return scores;
 }
@@ -275,7 +300,10 @@ Result<std::vector<Coverage>> coverageOf(const Rack& rack, const std::string& na
     if (error) return std::unexpected(std::move(*error));
   }
   std::vector<Coverage> out;
-  for (std::size_t k = 0; k < kQuantities.size(); ++k) out.push_back(summary(kQuantities[k], all, k));
+  for (std::size_t k = 0; k < kQuantities.size(); ++k) {
+    if (k == kLeads && channel.leadLoss != description::LeadLoss::identified) continue;
+    out.push_back(summary(kQuantities[k], all, k));
+  }
   return out;
 }
 

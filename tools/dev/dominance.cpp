@@ -53,7 +53,9 @@ Rack quiet(Rack rack) {
   for (auto& channel : rack.channels) {
     channel.unbalance = description::Unbalance::gauge_off_nominal;
     if (channel.measuredResistance) channel.measuredResistance->tolerance = kNext;
-    if (channel.transducer) channel.transducer->sensitivityTolerance = kNext;
+    if (auto& sheet = channel.transducer) {
+      sheet->sensitivityTolerance = sheet->inputTolerance = sheet->outputTolerance = kNext;
+    }
     eachLead(channel, [](auto& lead) {
       lead.tolerance = kNext;
       lead.temperatureTolerance = 0.0 * kelvin;

@@ -167,6 +167,33 @@ TEST_F(Check, theBudgetToComeNamesWhatLimitsItAndWhatWouldHelp) {
   }
 }
 
+TEST_F(Check, theLinesOfOneBudgetAreShown) {
+  const Ran ran = run("check --budget --lines Q3 " + kRacks + "small_bench.toml");
+  EXPECT_EQ(ran.code, 0);
+  for (const char* what : {"Uncertainty budget of the scale, channel Q3", "shunt resistor RC1", "deg. of freedom", "expanded U ="}) {
+    EXPECT_NE(ran.out.find(what), std::string::npos) << what;
+  }
+  EXPECT_EQ(run("check --lines Q3 " + kRacks + "small_bench.toml").code, 2) << "of which budget?";
+}
+
+TEST_F(Check, leadsToBeIdentifiedAreToldBeforehand) {
+  const Ran ran = run("check --json --budget " + kRacks + "every_circuit.toml");
+  ASSERT_EQ(ran.code, 0) << ran.out;
+  const json::value document = json::parse(ran.out);
+  for (const auto& channel : document.at("channels").as_array()) {
+    const auto& budget = channel.at("budget");
+    const bool identified = channel.at("name").as_string() == "Q3-id";
+    EXPECT_EQ(budget.at("lead_expanded_uncertainty_ohm").is_null(), !identified);
+    if (identified) {
+      EXPECT_LT(budget.at("lead_expanded_uncertainty_ohm").to_number<double>(), 0.2);
+    }
+  }
+  // Two positions that change with the leads alike tell nothing.
+  const Ran blind = run("check --json --budget " + altered("every_circuit.toml", {{"across = [\"COMP\", \"EXC-\"]", "across = \"completion\""}}));
+  EXPECT_EQ(blind.code, 2);
+  EXPECT_NE(blind.out.find("the leads of channel \\\"Q3-id\\\" cannot be identified"), std::string::npos) << blind.out;
+}
+
 TEST_F(Check, aMonteCarloSecondsTheBudget) {
   const Ran ran = run("check --json --budget --monte-carlo " + kRacks + "small_bench.toml");
   ASSERT_EQ(ran.code, 0) << ran.out;

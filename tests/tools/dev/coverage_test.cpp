@@ -34,7 +34,7 @@ TEST_P(CoverageOf, theTruthLiesInsideAsOftenAsStated) {
 }
 
 INSTANTIATE_TEST_SUITE_P(Circuits, CoverageOf,
-                         ::testing::Values("Q2", "Q3-tab", "HB", "HP", "FP", "LC", "Q3-two"),
+                         ::testing::Values("Q2", "Q3-tab", "HB", "HP", "FP", "LC", "Q3-two", "Q3-id"),
                          [](const auto& circuit) {
                            std::string name = circuit.param;
                            std::erase(name, '-');
