@@ -92,7 +92,7 @@ int demoCampaign(const description::Rack& rack, int first, int seeds, bool json)
 
 /// One channel of every circuit, drawn again and again: how often the truth lies inside, by the GUM and by
 /// JCGM 101.
-int coverageCampaign(const description::Rack& rack, int first, int racks, bool json) {
+int coverageCampaign(const description::Rack& rack, const std::string& only, int first, int racks, bool json) {
   boost::json::array rows;
   bool holds = true;
   if (!json)
@@ -100,6 +100,7 @@ int coverageCampaign(const description::Rack& rack, int first, int racks, bool j
               << " racks a circuit, shares inside in percent, width: median U over the interval that holds "
                  "95.45 %\n";
   for (const auto& channel : rack.channels) {
+    if (!only.empty() && channel.name != only) continue;
     dev::CoverageOptions options;
     options.racks = racks;
     options.seed = static_cast<std::uint64_t>(first);
@@ -173,7 +174,7 @@ int coverageCampaign(const description::Rack& rack, int first, int racks, bool j
 int main(int argc, char** argv) {
   using namespace shuntwright;
   CLI::App app{"Runs a campaign of the project and checks its promise."};
-  std::string campaign;
+  std::string campaign, only;
   bool full = false, json = false;
   int first = 1;
   app.add_option("NAME", campaign, "demo or coverage")
@@ -183,6 +184,7 @@ int main(int argc, char** argv) {
                "demo: 200 seeds instead of 40; coverage: 10 000 racks a circuit instead of 300");
   app.add_option("--first", first, "The first seed; 1 is what the promise speaks of")
       ->check(CLI::Range(1, 1'000'000));
+  app.add_option("--channel", only, "coverage: only this channel of the rack of every circuit");
   app.add_flag("--json", json, "One JSON document");
   CLI11_PARSE(app, argc, argv);
   const bool coverage = campaign == "coverage";
@@ -194,6 +196,6 @@ int main(int argc, char** argv) {
     std::cerr << diagnostics.render(false);
     return cli::kBadUse;
   }
-  if (coverage) return coverageCampaign(*rack, first, full ? 10'000 : 300, json);
+  if (coverage) return coverageCampaign(*rack, only, first, full ? 10'000 : 300, json);
   return demoCampaign(*rack, first, full ? 200 : 40, json);
 }
