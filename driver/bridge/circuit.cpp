@@ -112,10 +112,17 @@ Circuit circuitOf(const description::Rack& rack, const description::Channel& cha
 ShuntPath pathOf(const description::Rack& rack, const description::Shunt& shunt) {
   const description::Device* device = rack.device(shunt.relay.device);
   const bool switched = device && device->profile && device->profile->relays;
-  return {.across = shunt.across,
-          .side = shunt.side,
-          .resistance = rack.resistorOf(shunt).value +
-                        (switched ? device->profile->relays->contactResistance : units::Resistance{})};
+  ShuntPath path{.across = shunt.across, .side = shunt.side, .resistance = rack.resistorOf(shunt).value};
+  if (!switched) return path;
+  const auto& relays = *device->profile->relays;
+  path.resistance += relays.contactResistance;
+  // Conductance added by closing: 1 / R_C - 1 / (R_C + leak), that of R_C + R_C^2 / leak.
+  if (relays.leakage) path.resistance += 0.5 * leakEquivalent(path.resistance, *relays.leakage);
+  return path;
+}
+
+units::Resistance leakEquivalent(units::Resistance shunt, units::Resistance leakage) {
+  return shunt * (shunt / leakage);
 }
 
 }  // namespace shuntwright::bridge

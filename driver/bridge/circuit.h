@@ -46,17 +46,23 @@ struct ShuntPath {
 /// The circuit of a rack's channel with every value nominal (measured gauge resistance where the rack gives
 /// one, leads at their stated temperature). A transducer is four arms of its output resistance with
 /// (R_in - R_out)/2 in each excitation line; its "strain" is the fraction of the rated value and the arms'
-/// relativePerStrain is such that strain 1 gives the stated sensitivity at the transducer's own terminals. With a
-/// certificate's shunt the arms are as that shunt sees them (armOf).
+/// relativePerStrain is such that strain 1 gives the stated sensitivity at the transducer's own terminals.
+/// With a certificate's shunt the arms are as that shunt sees them (armOf).
 Circuit circuitOf(const description::Rack& rack, const description::Channel& channel);
 
-/// Resistance of each of a transducer's four arms: its output resistance, or, where the certificate has a shunt,
-/// the one at which that shunt gives the certificate's step at no load (trimming resistors inside included).
-/// Errors: bad_use when no resistance within a factor of 2 of the output resistance gives it.
+/// Resistance of each of a transducer's four arms: its output resistance, or, where the certificate has a
+/// shunt, the one at which that shunt gives the certificate's step at no load (trimming resistors inside
+/// included). Errors: bad_use when no resistance within a factor of 2 of the output resistance gives it.
 Result<units::Resistance> armOf(const description::TransducerSheet& sheet);
 
-/// The shunt's path: resistor value plus the relay's contact resistance.
+/// The shunt's path: resistor value plus the relay's contact resistance, and what an open relay that leaks
+/// takes away from the step: the leak was there before. Its conductance is anywhere between none and that of
+/// the stated insulation; the middle is taken.
 ShuntPath pathOf(const description::Rack& rack, const description::Shunt& shunt);
+
+/// By how much larger a shunt resistor looks because its relay, when open, lets through what this insulation
+/// does.
+units::Resistance leakEquivalent(units::Resistance shunt, units::Resistance leakage);
 
 /// True when the terminals exist in this circuit on that side and are not one point.
 bool exists(const Circuit& circuit, const ShuntPath& path);

@@ -290,6 +290,16 @@ void addShunts(const Rack& rack, const Channel& channel, std::vector<UncertainIn
     out.push_back({{contact, "ohm", rectangular(relays.contactResistance.in(ohm), relays.contactTolerance.in(ohm)),
                     contact},
                    [k](ChannelModel& m, double delta) { m.shunts[k].resistance += delta * ohm; }});
+    if (!relays.leakage) continue;
+    // Stated as "at least": a good relay lets through next to nothing, a poor one just that, few lie between. (A
+    // rectangle would put the good ones outside its 95.45 %.)
+    const Resistance whole = bridge::leakEquivalent(rack.resistorOf(channel.shunts[k]).value, *relays.leakage);
+    const double worst_nS = 1e9 / relays.leakage->in(ohm);
+    const std::string leak = "leakage of relay " + relay.device + "/" + std::to_string(relay.relay);
+    out.push_back({{leak, "nS", metrology::arcsine(0.5 * worst_nS, 0.5 * worst_nS), leak},
+                   [k, perNanosiemens = whole.in(ohm) / worst_nS](ChannelModel& m, double delta) {
+                     m.shunts[k].resistance += delta * perNanosiemens * ohm;
+                   }});
   }
 }
 

@@ -118,6 +118,8 @@ const std::vector<Campaign>& campaigns() {
          relays.contactResistance = 400.0 * ohm;
          relays.contactTolerance = share * 400.0 * ohm;
        }},
+      {"leakage of the open relay", "Q3", "span",
+       [](Rack& rack, Channel&, double share) { relaysOf(rack).leakage = 20.0 / share * megaohm; }},
       {"gauge resistance, packet", "HP", "strain at 100 %",
        [](Rack& rack, Channel&, double share) {
          for (auto& [name, sheet] : rack.gauges) sheet.resistance.tolerance = share * 0.5 * percent;

@@ -282,7 +282,8 @@ TEST(CircuitOf, TransducerTakesItsArmsFromTheCertificatesShunt) {
   bench.channel.circuit = CircuitKind::transducer;
   description::TransducerSheet sheet;
   sheet.inputResistance = sheet.outputResistance = 350.0 * ohm;
-  sheet.certificateShunt = {100e3 * ohm, {Terminal::sig_minus, Terminal::exc_minus}, 0.88 * millivolt_per_volt, {}};
+  sheet.certificateShunt = {
+      100e3 * ohm, {Terminal::sig_minus, Terminal::exc_minus}, 0.88 * millivolt_per_volt, {}};
   const auto arm = armOf(sheet);
   ASSERT_TRUE(arm) << arm.error().text();
   EXPECT_NEAR(arm->in(ohm), 4 * 100e3 * 0.88e-3 / (1 - 2 * 0.88e-3), 1e-9);
@@ -336,6 +337,26 @@ TEST(PathOf, AddsTheRelaysContactResistance) {
   EXPECT_EQ(p.resistance, 100000.25 * ohm);
   EXPECT_EQ(p.across, shunt.across);
   EXPECT_EQ(p.side, Side::instrument);
+}
+
+// An open relay of insulation R_i leaves R_C + R_i across the arm. The step from there, by the network with
+// that path in it, is the step of a resistor larger by R_C^2 / R_i from the bridge without (parallel
+// conductances add).
+TEST(LeakEquivalent, isTheStepThatTheLeakLeaves) {
+  Circuit circuit;
+  circuit.kind = CircuitKind::quarter_3_wire;
+  for (auto& arm : circuit.arms) arm.resistance = 350.0 * ohm;
+  const double shunt_ohm = 174650, leak_ohm = 20e6;
+  const auto at = [&](double resistance_ohm) {
+    const ShuntPath path{{Terminal::sig_plus, Terminal::exc_minus}, Side::gauge, resistance_ohm * ohm};
+    return ratio(circuit, {}, {&path, 1})->in(volt_per_volt);
+  };
+  const double step = at(shunt_ohm) - at(shunt_ohm + leak_ohm);
+  const double without = at(shunt_ohm) - ratio(circuit, {})->in(volt_per_volt);
+  const double equivalent = leakEquivalent(shunt_ohm * ohm, leak_ohm * ohm).in(ohm);
+  const double predicted = at(shunt_ohm + equivalent) - ratio(circuit, {})->in(volt_per_volt);
+  ASSERT_GT(std::abs(step / without - 1), 0.008);  // 0.9 %: worth counting
+  EXPECT_NEAR(predicted / step, 1, 3e-4);
 }
 
 }  // namespace
