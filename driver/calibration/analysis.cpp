@@ -3,6 +3,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "driver/calibration/basis.h"
 #include "driver/calibration/channel_model.h"
 #include "driver/calibration/identified_model.h"
 #include "driver/calibration/lead_readings.h"
@@ -356,6 +357,7 @@ ChannelResult analyse(const Rack& rack, const Channel& channel, const ChannelRea
                       Behind* behind) {
   Analysis analysis(rack, channel, readings);
   ChannelResult result = analysis.run();
+  result.basis = basisOf(rack, channel);
   if (behind) *behind = analysis.behind();
   return result;
 }

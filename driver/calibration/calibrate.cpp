@@ -235,6 +235,10 @@ Task<Result<Record>> calibrate(rack::LiveRack& live, rack::LoadPathPermit permit
   record.software = "shuntwright " SHUNTWRIGHT_VERSION;
   record.rackName = rack.name;
   record.rackFile = rack.file;
+  for (const auto& described : rack.devices) {
+    const device::Identity& found = live.identity(described.name);
+    record.devices.push_back({described.name, found.model, found.serialNumber});
+  }
 
   Run run{live, permit, options};
   std::vector<std::unique_ptr<Share>> shares;

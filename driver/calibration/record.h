@@ -1,6 +1,7 @@
 #pragma once
 
 #include <cstdint>
+#include <map>
 #include <optional>
 #include <string>
 #include <vector>
@@ -121,8 +122,12 @@ struct Straightness {
   double probability = 1;                 ///< of a chi-square this large or larger if all is as stated
 };
 
+/// What the rack said of a channel when it was calibrated, by name in words (basis.h).
+using Basis = std::map<std::string, std::string>;
+
 struct ChannelResult {
   std::string name;
+  Basis basis;
   Verdict verdict = Verdict::not_calibrated;
   std::vector<Finding> findings;
   double spanRatio = 1;                  ///< measured / predicted
@@ -144,6 +149,11 @@ struct ChannelResult {
   double unitsPerStrain = 1e6;           ///< shown value = corrected value x this (a transducer: rated value)
 };
 
+/// A device as it identified itself; empty what it did not say.
+struct DeviceFound {
+  std::string name, model, serialNumber;
+};
+
 /// Everything that one calibration found.
 struct Record {
   std::string id;        ///< from the start time and the seed or a random source: "20260504-093000-7f3a"
@@ -151,6 +161,7 @@ struct Record {
   std::string software;  ///< "shuntwright 0.1.0"
   std::string rackName;
   std::string rackFile;
+  std::vector<DeviceFound> devices;
   std::vector<ChannelResult> channels;
   int windows = 0;       ///< readings taken
   Nanoseconds duration{0};

@@ -108,6 +108,9 @@ json::value straightnessJson(const Straightness& line) {
 json::object channelJson(const ChannelResult& c) {
   json::object o;
   o["name"] = c.name;
+  json::object basis;
+  for (const auto& [what, value] : c.basis) basis[what] = value;
+  o["basis"] = std::move(basis);
   o["verdict"] = name(c.verdict);
   json::array findings;
   for (const auto& f : c.findings) {
@@ -173,6 +176,15 @@ std::string recordJson(const Record& record) {
   o["software"] = record.software;
   o["rack"] = record.rackName;
   o["rack_file"] = record.rackFile;
+  json::array devices;
+  for (const auto& d : record.devices) {
+    json::object one;
+    one["name"] = d.name;
+    one["model"] = d.model;
+    one["serial"] = d.serialNumber;
+    devices.push_back(std::move(one));
+  }
+  o["devices"] = std::move(devices);
   json::array channels;
   for (const auto& channel : record.channels) channels.push_back(channelJson(channel));
   o["channels"] = std::move(channels);
@@ -285,6 +297,9 @@ Budget budgetFrom(const json::object& o) {
 ChannelResult channelFrom(const json::object& o) {
   ChannelResult c;
   c.name = word(o, "name");
+  for (const auto& [what, value] : o.at("basis").as_object()) {
+    c.basis[std::string(what)] = std::string(value.as_string());
+  }
   c.verdict = verdictNamed(word(o, "verdict"));
   for (const auto& f : o.at("findings").as_array()) {
     const auto& one = f.as_object();
@@ -342,6 +357,10 @@ Result<Record> parseRecordJson(std::string_view text, const std::string& where) 
     record.software = word(o, "software");
     record.rackName = word(o, "rack");
     record.rackFile = word(o, "rack_file");
+    for (const auto& v : o.at("devices").as_array()) {
+      const auto& d = v.as_object();
+      record.devices.push_back({word(d, "name"), word(d, "model"), word(d, "serial")});
+    }
     for (const auto& c : o.at("channels").as_array()) record.channels.push_back(channelFrom(c.as_object()));
     record.windows = o.at("windows").to_number<int>();
     record.duration = fromSeconds(get(o, "duration_s"));

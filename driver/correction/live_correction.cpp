@@ -2,6 +2,8 @@
 
 #include <limits>
 
+#include "driver/calibration/basis.h"
+
 namespace shuntwright::correction {
 
 namespace {
@@ -42,12 +44,10 @@ Result<LiveCorrection> LiveCorrection::of(const description::Rack& rack, const c
   std::vector<Column> columns(static_cast<std::size_t>(inputs.count));
   for (const auto& channel : rack.channels) {
     if (channel.device != device) continue;
-    const auto* result = record.channel(channel.name);
-    if (!result) {
-      return fail(ErrorCode::not_found,
-                  "calibration record " + record.id + " has no channel " + channel.name, channel.place.text(),
-                  "calibrate the whole rack, or take the channel out of it");
+    if (auto holds = calibration::stillHolds(record, rack, channel); !holds) {
+      return std::unexpected(std::move(holds.error()));
     }
+    const auto* result = record.channel(channel.name);
     Column& column = columns[static_cast<std::size_t>(channel.input - inputs.first)];
     column.channel = channel.name;
     column.unit = result->unit;

@@ -24,7 +24,8 @@ struct Column {
 /// What is applied to every sample of one device: channel by channel one rational map, in the shown unit.
 class LiveCorrection {
  public:
-  /// Errors: not_found when the record lacks a channel of this device; bad_use when the device has no inputs.
+  /// Errors: not_found when the record lacks a channel of this device; refused when it is of another rack or a channel
+  /// has been changed since; bad_use when the device has no inputs.
   static Result<LiveCorrection> of(const description::Rack& rack, const calibration::Record& record,
                                    const std::string& device);
 

@@ -23,6 +23,7 @@
 #include <mutex>
 #include <thread>
 
+#include "driver/calibration/basis.h"
 #include "driver/calibration/record_json.h"
 #include "driver/description/load.h"
 #include "driver/rack/acquisition.h"
@@ -296,6 +297,8 @@ void Session::cancel() {
 Result<void> Session::use(calibration::Record record) {
   if (!thread_ || !thread_->live) return std::unexpected(notOpen());
   if (thread_->running) return fail(ErrorCode::bad_use, "samples are being read", {}, "call stop first");
+  if (auto holds = calibration::stillHolds(record, *rack_); !holds) return holds;
+  if (auto same = calibration::sameDevices(record, *thread_->live); !same) return same;
   std::map<std::string, correction::LiveCorrection> corrections;
   for (const auto& device : rack_->devices) {
     if (!device.profile->inputs) continue;

@@ -15,6 +15,7 @@
 #include <istream>
 #include <ostream>
 
+#include "driver/calibration/basis.h"
 #include "driver/calibration/record_json.h"
 #include "driver/calibration/zero.h"
 #include "driver/recording/load_steps.h"
@@ -146,6 +147,7 @@ class Record final : public Command {
     }
     auto record = calibration::parseRecordJson(*text, file);
     if (!record) return console.fail(record.error());
+    if (auto holds = calibration::stillHolds(*record, *rack); !holds) return console.fail(holds.error());
     if (!record->passed()) console.err << "note: calibration " << record->id << " did not pass for every channel\n";
     auto permit = askForPermit(console, *rack, isolated_);
     if (!permit) return console.fail(permit.error());
@@ -167,6 +169,7 @@ class Record final : public Command {
   };
 
   static Task<Result<int>> work(SessionContext context, Job* job) {
+    if (auto same = calibration::sameDevices(job->record, context.live); !same) co_return std::unexpected(std::move(same.error()));
     if (auto ready = co_await context.live.prepare(job->permit); !ready) co_return std::unexpected(std::move(ready.error()));
     Clock& clock = context.live.clock();
     if (job->zero_s > 0) {

@@ -5,6 +5,7 @@
 
 #include <cmath>
 
+#include "driver/calibration/basis.h"
 #include "tests/driver/description/sample.h"
 
 namespace shuntwright::correction {
@@ -43,9 +44,11 @@ class Bench {
         "b/rack.toml", sample::reader({{"b/rack.toml", text}, {"p/device.toml", sample::kProfile}}), d);
     EXPECT_TRUE(loaded && d.problems().empty()) << d.render(false);
     rack = *std::move(loaded);
+    record.rackName = rack.name;
     for (const auto& channel : rack.channels) {
       calibration::ChannelResult result;
       result.name = channel.name;
+      result.basis = calibration::basisOf(rack, channel);
       result.verdict = calibration::Verdict::pass;
       result.correction.p = kPerStrain;
       if (channel.transducer) {
