@@ -1,15 +1,15 @@
 #pragma once
 
+#include <memory>
+#include <span>
 #include <string>
 #include <vector>
 
 #include "driver/core/error.h"
+#include "driver/recording/event_line.h"
 #include "driver/recording/reader.h"
 
 namespace shuntwright::recording {
-
-inline constexpr const char* kStepBegin = "step begin";
-inline constexpr const char* kStepEnd = "step end";
 
 /// Mean of one channel over one hold, in its unit.
 struct StepMean {
@@ -27,8 +27,9 @@ struct LoadStep {
   std::vector<StepMean> channels;  ///< every channel of every device
 };
 
-/// The holds of a file, in order: each "step begin" event up to the next "step end" (or the end of the file).
-/// Errors: the reader's.
-Result<std::vector<LoadStep>> loadSteps(const Reader& reader);
+/// The holds of a recording, in order: each "step begin" event up to the next "step end" (or the end of the last part);
+/// one that runs on from part to part is one hold. Errors: the reader's.
+/// @param parts  of one recording, in order
+Result<std::vector<LoadStep>> loadSteps(std::span<const std::unique_ptr<Reader>> parts);
 
 }  // namespace shuntwright::recording

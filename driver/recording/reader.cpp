@@ -1,5 +1,7 @@
 #include "driver/recording/reader.h"
 
+#include <unistd.h>
+
 #include <algorithm>
 #include <boost/json/parse.hpp>
 #include <boost/json/value.hpp>
@@ -7,6 +9,7 @@
 
 #include "driver/recording/file_layout.h"
 #include "driver/recording/hdf5_handle.h"
+#include "driver/recording/recorder.h"
 
 namespace shuntwright::recording {
 
@@ -18,6 +21,7 @@ struct Reader::State {
   std::vector<RecordedEvent> events;
   bool complete = false;
   std::int64_t part = 1;
+  Instant started;
   std::string rackName, calibrationId, calibrationJson;
 };
 
@@ -136,6 +140,7 @@ std::vector<RecordedEvent> eventsIn(const std::string& lines) {
     event.text = word("text");
     event.device = word("device");
     if (const auto* count = o.if_contains("count")) event.count = count->to_number<std::uint64_t>(ec);
+    if (const auto* continued = o.if_contains("continued")) event.continued = continued->is_bool() && continued->as_bool();
     events.push_back(std::move(event));
   }
   return events;
@@ -169,6 +174,7 @@ Result<std::unique_ptr<Reader>> Reader::open(const std::string& path) {
   try {
     if (text(state->file, "format") != "shuntwright recording") throw ReadFailure{"its format"};
     state->part = integer(state->file, "part");
+    state->started = Instant(Nanoseconds(integer(state->file, "started_unix_ns")));
     state->rackName = text(state->file, "rack");
     state->calibrationId = text(state->file, "calibration_id");
     state->calibrationJson = bytes(state->file, "/calibration_json");
@@ -198,6 +204,8 @@ std::uint64_t Reader::rows(std::size_t device) const { return state_->rows.at(de
 std::uint64_t Reader::lost(std::size_t device) const { return state_->lost.at(device); }
 bool Reader::complete() const { return state_->complete; }
 int Reader::part() const { return static_cast<int>(state_->part); }
+Instant Reader::started() const { return state_->started; }
+const std::string& Reader::path() const { return state_->path; }
 std::string Reader::rackName() const { return state_->rackName; }
 std::string Reader::calibrationId() const { return state_->calibrationId; }
 std::string Reader::calibrationJson() const { return state_->calibrationJson; }
@@ -225,6 +233,21 @@ Result<Rows> Reader::read(std::size_t device, std::uint64_t first, std::uint64_t
   }
   for (const auto ns : time) rowsRead.time.emplace_back(Nanoseconds(ns));
   return rowsRead;
+}
+
+Result<std::vector<std::unique_ptr<Reader>>> openParts(const std::string& path) {
+  std::vector<std::unique_ptr<Reader>> parts;
+  auto first = Reader::open(path);
+  if (!first) return std::unexpected(std::move(first.error()));
+  parts.push_back(std::move(*first));
+  if (parts.front()->part() != 1) return parts;
+  for (int part = 2; ::access(partPath(path, part).c_str(), F_OK) == 0; ++part) {
+    auto next = Reader::open(partPath(path, part));
+    // The recorder steps over files that stand in its way.
+    if (!next || (*next)->started() != parts.front()->started() || (*next)->part() != part) continue;
+    parts.push_back(std::move(*next));
+  }
+  return parts;
 }
 
 }  // namespace shuntwright::recording

@@ -15,6 +15,7 @@ struct RecordedEvent {
   Instant when;
   std::string kind, text, device;
   std::uint64_t count = 0;
+  bool continued = false;  ///< a step that goes on from the part before
 };
 
 /// Rows [first, first + count) of one device. Shapes: time count, the others count x channels, row-major.
@@ -37,6 +38,8 @@ class Reader {
   std::uint64_t lost(std::size_t device) const;
   bool complete() const;                  ///< ended properly
   int part() const;
+  Instant started() const;                ///< of the recording; the same in every part
+  const std::string& path() const;
   std::string rackName() const;
   std::string calibrationId() const;
   std::string calibrationJson() const;
@@ -50,5 +53,9 @@ class Reader {
   explicit Reader(std::unique_ptr<State> state);
   std::unique_ptr<State> state_;
 };
+
+/// The file and, when it is a first part, every further part of the same recording that lies beside it, in order.
+/// A file among them that is no part of it is passed over. Errors: the reader's for the first.
+Result<std::vector<std::unique_ptr<Reader>>> openParts(const std::string& path);
 
 }  // namespace shuntwright::recording

@@ -4,11 +4,11 @@
 #include <unistd.h>
 
 #include <algorithm>
-#include <boost/json/object.hpp>
-#include <boost/json/serialize.hpp>
 #include <cerrno>
 #include <cstdio>
 #include <cstring>
+
+#include "driver/recording/file_room.h"
 
 namespace shuntwright::recording {
 
@@ -16,6 +16,7 @@ namespace {
 
 constexpr std::size_t kStagedRows = 1024;
 constexpr int kMostParts = 9999;
+constexpr Nanoseconds kGapsTogether = std::chrono::seconds(1);
 
 Error systemError(const char* what, const std::string& path) {
   const int number = errno;
@@ -37,8 +38,24 @@ std::string partPath(const std::string& path, int part) {
   return hasEnding ? path.substr(0, dot) + number + path.substr(dot) : path + number;
 }
 
+/// Frames or lines that are missing and no event tells yet.
+struct Recorder::Gap {
+  const char* kind;
+  const char* text;
+  std::uint64_t count = 0;
+  Instant since{};                        ///< the first of them
+  Instant quietUntil = Instant::min();
+
+  void add(std::uint64_t more, Instant when) {
+    if (count == 0) since = when;
+    count += more;
+  }
+};
+
 /// Rows of one device that wait to be written.
 struct Recorder::Staged {
+  Gap lostGap{"lost", "samples lost before this moment"};
+  Gap damagedGap{"damaged", "lines that could not be read before this moment"};
   std::size_t staged = 0;
   std::uint64_t written = 0;    ///< rows of this part in the file, synced or not
   std::uint64_t before = 0;     ///< rows of earlier parts
@@ -73,6 +90,9 @@ Result<std::unique_ptr<Recorder>> Recorder::create(const std::string& path, Reco
     return fail(ErrorCode::refused, "a further part of an earlier recording is still there", next,
                 "move it away with its first part, or choose another name");
   }
+  if (::access(path.c_str(), F_OK) != 0) {
+    if (auto room = checkRoom(path, recorder->plan_); !room) return std::unexpected(std::move(room.error()));
+  }
   if (auto opened = recorder->openPart(); !opened) return std::unexpected(std::move(opened.error()));
   return recorder;
 }
@@ -90,14 +110,31 @@ Result<void> Recorder::openPart() {
   layout_ = std::move(*layout);
   descriptor_ = ::open(path_.c_str(), O_WRONLY | O_CLOEXEC);
   if (descriptor_ < 0) return std::unexpected(systemError("cannot write the recording", path_));
-  if (::fsync(descriptor_) != 0) return std::unexpected(systemError("cannot write the recording", path_));
   eventsUsed_ = 0;
   for (auto& device : devices_) {
     device->before += device->written;
     device->lostBefore += device->lost;
     device->written = device->lost = 0;
   }
+  const auto reserved = reserveRoom(descriptor_, path_);
+  if (!reserved && part_ == 1) {
+    (void)::unlink(path_.c_str());  // nothing is in it
+    return reserved;
+  }
+  if (::fsync(descriptor_) != 0) return std::unexpected(systemError("cannot write the recording", path_));
+  syncFolder(path_);
+  paths_.push_back(path_);
+  // A test under way takes what room there is, and says so.
+  if (!reserved) (void)event("fault", lastCommit_, reserved.error().message);
   return {};
+}
+
+Result<void> Recorder::rollOver(Instant now, Instant next) {
+  if (auto ended = endPart(now); !ended) return ended;
+  if (auto opened = openPart(); !opened) return opened;
+  if (!openStep_) return {};
+  auto again = writeEvent(eventLine(kStepBegin, next, *openStep_, {}, 0, true), Room::marks);
+  return !again && again.error().code != ErrorCode::refused ? again : Result<void>{};
 }
 
 Result<void> Recorder::writeAt(std::uint64_t offset, const void* data, std::size_t size) {
@@ -169,10 +206,16 @@ Result<void> Recorder::commit(Instant now) {
 }
 
 Result<void> Recorder::endPart(Instant now) {
+  for (std::size_t k = 0; k < devices_.size(); ++k) {
+    if (auto noted = noteGaps(k, now, Room::end); !noted) return noted;
+  }
   if (auto done = commit(now); !done) return done;
   const char complete[8] = {'c', 'o', 'm', 'p', 'l', 'e', 't', 'e'};
   if (auto done = writeAt(layout_.endedAt, complete, sizeof complete); !done) return done;
   if (auto done = sync(); !done) return done;
+  std::vector<std::uint64_t> rows;
+  for (const auto& device : devices_) rows.push_back(device->written);
+  giveBackRoom(descriptor_, layout_, rows, eventsUsed_);
   ::close(descriptor_);
   descriptor_ = -1;
   return {};
@@ -183,24 +226,14 @@ Result<void> Recorder::append(std::size_t index, const device::SampleBlock& bloc
   Staged& device = *devices_[index];
   const auto& channels = plan_.devices[index].channels;
   if (channels.empty()) return {};
-  if (block.lostBefore > 0) {
-    device.lost += block.lostBefore;
-    const Instant when = block.frames() > 0 ? block.time.front() : now;
-    if (auto noted = event("lost", when, "samples lost before this moment", plan_.devices[index].name, block.lostBefore);
-        !noted && noted.error().code != ErrorCode::refused) {
-      return noted;
-    }
-  }
-  if (block.damagedBefore > 0) {
-    const Instant when = block.frames() > 0 ? block.time.front() : now;
-    auto noted = event("damaged", when, "lines that could not be read before this moment", plan_.devices[index].name,
-                       block.damagedBefore);
-    if (!noted && noted.error().code != ErrorCode::refused) return noted;
-  }
+  device.lost += block.lostBefore;
+  const Instant when = block.frames() > 0 ? block.time.front() : now;
+  device.lostGap.add(block.lostBefore, when);
+  device.damagedGap.add(block.damagedBefore, when);
+  if (auto noted = noteGaps(index, when, Room::reports); !noted) return noted;
   for (std::size_t frame = 0; frame < block.frames(); ++frame) {
     if (device.written + device.staged >= layout_.devices[index].capacity) {
-      if (auto ended = endPart(now); !ended) return ended;
-      if (auto opened = openPart(); !opened) return opened;
+      if (auto rolled = rollOver(now, block.time[frame]); !rolled) return rolled;
     }
     const std::size_t row = device.staged;
     device.time[row] = block.time[frame].time_since_epoch().count();
@@ -224,16 +257,15 @@ Result<void> Recorder::commitIfDue(Instant now) {
 
 Result<void> Recorder::event(std::string_view kind, Instant when, std::string_view text, std::string_view device,
                              std::uint64_t count) {
-  namespace json = boost::json;
-  json::object o;
-  o["unix_ns"] = when.time_since_epoch().count();
-  o["time"] = rfc3339(when);
-  o["kind"] = json::string_view(kind.data(), kind.size());
-  o["text"] = json::string_view(text.data(), text.size());
-  if (!device.empty()) o["device"] = json::string_view(device.data(), device.size());
-  if (count > 0) o["count"] = count;
-  const std::string line = json::serialize(o) + "\n";
-  if (eventsUsed_ + line.size() > layout_.eventBytes) {
+  if (kind == kStepBegin) openStep_ = std::string(text);
+  if (kind == kStepEnd) openStep_.reset();
+  return writeEvent(eventLine(kind, when, text, device, count, false), isOperators(kind) ? Room::marks : Room::reports);
+}
+
+Result<void> Recorder::writeEvent(const std::string& line, Room kept) {
+  const std::uint64_t all = layout_.eventBytes;
+  const std::uint64_t room = kept == Room::end ? all : kept == Room::marks ? all - all / 16 : all - all / 4;
+  if (eventsUsed_ + line.size() > room) {
     return fail(ErrorCode::refused, "the recording has no room for more marks and events", path_,
                 "start a new recording for more marks; samples go on");
   }
@@ -242,7 +274,24 @@ Result<void> Recorder::event(std::string_view kind, Instant when, std::string_vi
   return {};
 }
 
-Result<void> Recorder::finish(Instant now) { return endPart(now); }
+Result<void> Recorder::noteGap(std::size_t index, Gap& gap, Instant now, Room room) {
+  if (gap.count == 0 || (room != Room::end && now < gap.quietUntil)) return {};
+  auto noted = writeEvent(eventLine(gap.kind, gap.since, gap.text, plan_.devices[index].name, gap.count, false), room);
+  gap.quietUntil = now + kGapsTogether;
+  // A full store keeps the count for the end, which has room of its own.
+  if (!noted) return noted.error().code == ErrorCode::refused ? Result<void>{} : noted;
+  gap.count = 0;
+  return {};
+}
+
+Result<void> Recorder::noteGaps(std::size_t index, Instant now, Room room) {
+  for (Gap* gap : {&devices_[index]->lostGap, &devices_[index]->damagedGap}) {
+    if (auto done = noteGap(index, *gap, now, room); !done) return done;
+  }
+  return {};
+}
+
+Result<void> Recorder::finish(Instant now) { return descriptor_ < 0 ? Result<void>{} : endPart(now); }
 
 std::uint64_t Recorder::rows(std::size_t index) const {
   const Staged& device = *devices_[index];

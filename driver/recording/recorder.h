@@ -2,6 +2,7 @@
 
 #include <cstdint>
 #include <memory>
+#include <optional>
 #include <span>
 #include <string>
 #include <string_view>
@@ -9,6 +10,7 @@
 
 #include "driver/core/error.h"
 #include "driver/device/sample_block.h"
+#include "driver/recording/event_line.h"
 #include "driver/recording/file_layout.h"
 #include "driver/recording/plan.h"
 
@@ -22,17 +24,17 @@ namespace shuntwright::recording {
 /// and new parts. One thread; no clock: the caller passes the time.
 class Recorder {
  public:
-  /// Errors: refused when the file exists; io.
+  /// Errors: refused when the file exists; io, also when the disk has no room for one file.
   static Result<std::unique_ptr<Recorder>> create(const std::string& path, RecordingPlan plan);
   ~Recorder();  ///< leaves the file as an interrupted one: finish() ends it properly
 
   /// Samples of the plan's device `index`, and their corrected values (frames x block.inputs). Frames lost
-  /// before the block become an event and are added to the device's count. Errors: io (disk full, ...);
+  /// before the block become an event (one a second at most) and are added to the device's count. Errors: io (disk full, ...);
   /// what was committed before stays whole.
   Result<void> append(std::size_t index, const device::SampleBlock& block, std::span<const float> corrected,
                       Instant now);
 
-  /// Notes something: kind ("mark", "step begin", "step end", "lost", "fault", ...), and what. `device` and
+  /// Notes something; text that is no UTF-8 is mended. A quarter of the room is kept for marks and steps. kind ("mark", "step begin", "step end", "lost", "fault", ...), and what. `device` and
   /// `count` may be left out. Errors: io; refused when the file's room for events is used up.
   Result<void> event(std::string_view kind, Instant when, std::string_view text, std::string_view device = {},
                      std::uint64_t count = 0);
@@ -47,13 +49,21 @@ class Recorder {
 
   std::uint64_t rows(std::size_t index) const;   ///< recorded so far, all parts
   std::uint64_t lost(std::size_t index) const;
+  const std::vector<std::string>& paths() const { return paths_; }  ///< of every part, in order
   const std::string& path() const { return path_; }  ///< of the current part
 
  private:
+  struct Gap;
   struct Staged;
+  /// How much of the events' store a line may fill.
+  enum class Room { reports, marks, end };
   Recorder(std::string path, RecordingPlan plan);
   Result<void> openPart();
   Result<void> endPart(Instant now);
+  Result<void> rollOver(Instant now, Instant next);
+  Result<void> writeEvent(const std::string& line, Room room);
+  Result<void> noteGap(std::size_t index, Gap& gap, Instant now, Room room);
+  Result<void> noteGaps(std::size_t index, Instant now, Room room);
   Result<void> flush(std::size_t index);
   Result<void> writeAt(std::uint64_t offset, const void* data, std::size_t size);
   Result<void> writeRows(const RowPlaces& places, std::uint64_t row, const std::byte* data, std::uint64_t count);
@@ -66,6 +76,8 @@ class Recorder {
   FileLayout layout_;
   std::vector<std::unique_ptr<Staged>> devices_;
   std::uint64_t eventsUsed_ = 0;
+  std::vector<std::string> paths_;
+  std::optional<std::string> openStep_;  ///< label of the hold under way
   Instant lastCommit_;
 };
 

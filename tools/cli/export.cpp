@@ -1,10 +1,13 @@
 #include <CLI/CLI.hpp>
+#include <algorithm>
 #include <boost/json/array.hpp>
 #include <boost/json/object.hpp>
 #include <boost/json/serialize.hpp>
 #include <fstream>
+#include <memory>
 #include <ostream>
 #include <string_view>
+#include <vector>
 
 #include "driver/recording/csv.h"
 #include "driver/recording/load_steps.h"
@@ -39,9 +42,9 @@ class Export final : public Command {
   }
 
   int run(const Console& console) override {
-    auto reader = recording::Reader::open(file_);
-    if (!reader) return console.fail(reader.error());
-    if (console.json) return describe(console, **reader);
+    auto parts = recording::openParts(file_);
+    if (!parts) return console.fail(parts.error());
+    if (console.json) return describe(console, *parts);
     std::ofstream file;
     if (!out_.empty()) {
       if (isRecording(out_)) {
@@ -52,17 +55,30 @@ class Export final : public Command {
       if (!file) return console.fail(Error(ErrorCode::io, "the file cannot be written", out_, "check the folder"));
     }
     std::ostream& to = out_.empty() ? console.out : file;
-    auto done = steps_ ? writeSteps(**reader, to) : recording::writeCsv(**reader, csv_, to);
+    auto done = steps_ ? writeSteps(*parts, to) : recording::writeCsv(*parts, csv_, to);
     if (!done) return console.fail(done.error());
     to.flush();
     if (!to) return console.fail(Error(ErrorCode::io, "not everything could be written", out_, "check the free space"));
-    if (!(*reader)->complete()) console.err << "note: this recording was not ended properly; all whole rows are here\n";
+    noteParts(console, *parts);
     return kPassed;
   }
 
  private:
-  static Result<void> writeSteps(const recording::Reader& reader, std::ostream& to) {
-    auto steps = recording::loadSteps(reader);
+  using Parts = std::vector<std::unique_ptr<recording::Reader>>;
+
+  static void noteParts(const Console& console, const Parts& parts) {
+    if (parts.size() > 1) {
+      console.err << "note: " << parts.size() << " parts, up to " << parts.back()->path() << '\n';
+    } else if (parts.front()->part() > 1) {
+      console.err << "note: this is part " << parts.front()->part() << " alone; give the first part for the whole recording\n";
+    }
+    for (const auto& part : parts) {
+      if (!part->complete()) console.err << "note: " << part->path() << " was not ended properly; all whole rows are here\n";
+    }
+  }
+
+  static Result<void> writeSteps(const Parts& parts, std::ostream& to) {
+    auto steps = recording::loadSteps(parts);
     if (!steps) return std::unexpected(std::move(steps.error()));
     to << "step,begin,channel,unit,mean,standard deviation,samples\r\n";
     for (const auto& step : *steps) {
@@ -75,20 +91,29 @@ class Export final : public Command {
     return {};
   }
 
-  static int describe(const Console& console, const recording::Reader& reader) {
+  static int describe(const Console& console, const Parts& parts) {
+    const recording::Reader& reader = *parts.front();
     json::object o;
     o["rack"] = reader.rackName();
     o["calibration_id"] = reader.calibrationId();
     o["part"] = reader.part();
-    o["complete"] = reader.complete();
+    o["complete"] = std::all_of(parts.begin(), parts.end(), [](const auto& part) { return part->complete(); });
+    json::array files;
+    for (const auto& part : parts) files.push_back(json::value(part->path()));
+    o["files"] = std::move(files);
     json::array devices;
     for (std::size_t k = 0; k < reader.devices().size(); ++k) {
       const auto& d = reader.devices()[k];
       json::object one;
       one["name"] = d.name;
       one["rate_Hz"] = d.rate_Hz;
-      one["rows"] = reader.rows(k);
-      one["lost"] = reader.lost(k);
+      std::uint64_t rows = 0, lost = 0;
+      for (const auto& part : parts) {
+        rows += part->rows(k);
+        lost += part->lost(k);
+      }
+      one["rows"] = rows;
+      one["lost"] = lost;
       json::array channels;
       for (const auto& c : d.channels) {
         json::object channel;
@@ -102,14 +127,17 @@ class Export final : public Command {
     }
     o["devices"] = std::move(devices);
     json::array events;
-    for (const auto& e : reader.events()) {
-      json::object one;
-      one["time"] = rfc3339(e.when);
-      one["kind"] = e.kind;
-      one["text"] = e.text;
-      if (!e.device.empty()) one["device"] = e.device;
-      if (e.count > 0) one["count"] = e.count;
-      events.push_back(std::move(one));
+    for (const auto& part : parts) {
+      for (const auto& e : part->events()) {
+        json::object one;
+        one["time"] = rfc3339(e.when);
+        one["kind"] = e.kind;
+        one["text"] = e.text;
+        if (!e.device.empty()) one["device"] = e.device;
+        if (e.count > 0) one["count"] = e.count;
+        if (e.continued) one["continued"] = true;
+        events.push_back(std::move(one));
+      }
     }
     o["events"] = std::move(events);
     console.out << json::serialize(o) << '\n';

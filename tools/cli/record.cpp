@@ -176,7 +176,7 @@ class Record final : public Command {
       auto zeroed = co_await takeZerosAnew(context, job);
       if (!zeroed) co_return std::unexpected(std::move(zeroed.error()));
     }
-    auto session = RecordingSession::begin(job->rack, job->record, job->out, clock);
+    auto session = RecordingSession::begin(job->rack, job->record, job->out, clock, job->duration_s);
     if (!session) co_return std::unexpected(std::move(session.error()));
     auto executor = co_await asio::this_coro::executor;
     bool quit = false;
@@ -218,10 +218,20 @@ class Record final : public Command {
     co_return Result<void>{};
   }
 
+  static std::string joined(const std::vector<std::string>& files) {
+    std::string all;
+    for (const auto& file : files) all += (all.empty() ? "" : ", ") + file;
+    return all;
+  }
+
   static void report(const Console& console, const RecordingSession& session, const std::string& calibration) {
     if (console.json) {
       json::object o;
-      o["file"] = session.path();
+      const auto files = session.paths();
+      o["file"] = files.front();
+      json::array parts;
+      for (const auto& file : files) parts.push_back(json::value(file));
+      o["files"] = std::move(parts);
       o["calibration_id"] = calibration;
       o["rows"] = session.rows();
       o["lost"] = session.lost();
@@ -239,7 +249,7 @@ class Record final : public Command {
       o["channels"] = std::move(channels);
       console.out << json::serialize(o) << '\n';
     } else {
-      console.out << "recorded " << session.rows() << " rows to " << session.path() << ", lost " << session.lost() << '\n';
+      console.out << "recorded " << session.rows() << " rows to " << joined(session.paths()) << ", lost " << session.lost() << '\n';
     }
   }
 

@@ -15,7 +15,8 @@ constexpr std::size_t kNowhere = static_cast<std::size_t>(-1);
 
 Result<std::unique_ptr<RecordingSession>> RecordingSession::begin(const description::Rack& rack,
                                                                   const calibration::Record& record,
-                                                                  const std::string& path, Clock& clock) {
+                                                                  const std::string& path, Clock& clock,
+                                                                  double expected_s) {
   std::unique_ptr<RecordingSession> session(new RecordingSession(clock));
   for (const auto& device : rack.devices) {
     if (!device.profile->inputs) continue;
@@ -50,6 +51,8 @@ Result<std::unique_ptr<RecordingSession>> RecordingSession::begin(const descript
   }
   if (path.empty()) return session;
   auto plan = recording::planOf(rack, record, calibration::recordJson(record), session->corrections_, clock.now(), session->derived_);
+  // A little more: devices and clocks are not quite exact.
+  if (expected_s > 0) plan.secondsPerFile = std::min(plan.secondsPerFile, 1.05 * expected_s + 10);
   auto recorder = recording::Recorder::create(path, std::move(plan));
   if (!recorder) return std::unexpected(std::move(recorder.error()));
   session->recorder_ = std::move(*recorder);

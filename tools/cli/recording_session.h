@@ -27,9 +27,11 @@ struct LiveValue {
 class RecordingSession {
  public:
   /// @param path  of the recording; empty: nothing is written (live only).
+  /// @param expected_s  how long it will last: a file keeps room for that and not for an hour; 0: unknown
   /// Errors: those of LiveCorrection and Recorder.
   static Result<std::unique_ptr<RecordingSession>> begin(const description::Rack& rack, const calibration::Record& record,
-                                                         const std::string& path, Clock& clock);
+                                                         const std::string& path, Clock& clock,
+                                                         double expected_s = 0);
 
   /// Records until `stopWanted`. Errors: the acquisition's, or the recorder's (disk full: everything before is
   /// kept).
@@ -43,6 +45,8 @@ class RecordingSession {
   std::function<void(std::size_t channel, Instant when, float ratio, float corrected, std::uint8_t flags)> onSample;
   std::uint64_t lost() const;
   std::uint64_t rows() const;
+  /// Every file of the recording, in order.
+  std::vector<std::string> paths() const { return recorder_ ? recorder_->paths() : std::vector<std::string>(); }
   std::string path() const { return recorder_ ? recorder_->path() : std::string(); }
   const std::string& trouble() const { return trouble_; }  ///< of a device, now; empty: none
 
