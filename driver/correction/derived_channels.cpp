@@ -310,7 +310,10 @@ void DerivedChannels::apply(std::size_t device, const device::SampleBlock& block
     std::size_t at = inputs;
     for (const auto& strain : on.strains) {
       row[at] = strain.of(row[strain.from], block.time[f]);
-      flags[at++] = flags[strain.from];
+      flags[at] = flags[strain.from];
+      // Its gauge is there and its thermometer is not.
+      if (std::isnan(row[at]) && !std::isnan(row[strain.from])) flags[at] |= device::kMissing;
+      ++at;
     }
     const auto flagsOf = [flags](const std::vector<std::size_t>& from) {
       std::uint8_t all = 0;

@@ -25,7 +25,8 @@ struct DerivedColumn {
 ///
 /// The columns of a device stand behind those of its inputs, so that recorders and viewers take them for
 /// further inputs: the ratio is NaN, the flags are all those of the gauges it follows from. The thermometer
-/// may be on another device: its latest good value counts, for one minute; without one the strain is NaN.
+/// may be on another device: its latest good value counts, for one minute; without one the strain is NaN and
+/// flagged as missing.
 class DerivedChannels {
  public:
   DerivedChannels();  ///< of a rack that has none

@@ -50,6 +50,8 @@ class Device {
   /// All that has come since the last call; waits until there is something. Errors: timeout at the deadline,
   /// or the reader's own error.
   virtual Task<Result<SampleBlock>> next(Instant deadline) = 0;
+  /// What stands in the queue, all of it up to the next gap, without waiting; with no frame left, the gap at its end.
+  virtual SampleBlock rest() = 0;
   virtual Task<Result<void>> stop() = 0;
 
   virtual void close() = 0;  ///< drops the connection; does not touch relays

@@ -77,6 +77,8 @@ SampleBlock SampleQueue::take() {
   if (blocks_.empty()) {
     SampleBlock none;
     none.inputs = inputs_;
+    none.lostBefore = std::exchange(lost_, 0);
+    none.damagedBefore = std::exchange(damaged_, 0);
     return none;
   }
   SampleBlock out = std::move(blocks_.front());

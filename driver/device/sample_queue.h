@@ -34,6 +34,7 @@ class SampleQueue {
   /// arrival, as far as the frames before them leave room.
   void spread(std::size_t count, Instant arrival, Nanoseconds period);
 
+  /// With no frame left, a block without frames that tells the gap at the end.
   SampleBlock take();
   void clear();
 

@@ -218,6 +218,11 @@ Task<Result<SampleBlock>> TextDevice::next(Instant deadline) {
   }
 }
 
+SampleBlock TextDevice::rest() {
+  SampleQueue* queue = connection_->queue();
+  return queue ? queue->take() : SampleBlock{};
+}
+
 Task<Result<void>> TextDevice::stop() {
   auto connection = connection_;
   if (!running_) co_return Result<void>{};

@@ -26,6 +26,7 @@ class TextDevice final : public Device {
   Task<Result<bool>> relayClosed(int relay) override;
   Task<Result<void>> start(units::Frequency rate) override;
   Task<Result<SampleBlock>> next(Instant deadline) override;
+  SampleBlock rest() override;
   Task<Result<void>> stop() override;
   void close() override;
 

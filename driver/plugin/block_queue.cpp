@@ -19,7 +19,9 @@ void BlockQueue::clear() {
 void BlockQueue::push(std::unique_ptr<Block> block, std::size_t most) {
   const std::string device = block->device;
   const std::lock_guard lock(mutex_);
-  block->lost += std::exchange(dropped_[device], 0);
+  const Gone before = std::exchange(dropped_[device], {});
+  block->lost += before.lost;
+  block->damaged += before.damaged;
   frames_[device] += block->samples.frames();
   blocks_.push_back(std::move(block));
   dropOldest(device, most);
@@ -35,14 +37,17 @@ void BlockQueue::dropOldest(const std::string& device, std::size_t most) {
     }
     const std::size_t frames = (*it)->samples.frames();
     frames_[device] -= frames;
-    std::uint64_t gone = frames + (*it)->lost;
+    Gone gone{frames + (*it)->lost, (*it)->damaged};
     it = blocks_.erase(it);
     for (auto next = it; next != blocks_.end(); ++next) {
       if ((*next)->device != device) continue;
-      (*next)->lost += std::exchange(gone, 0);
+      (*next)->lost += gone.lost;
+      (*next)->damaged += gone.damaged;
+      gone = {};
       break;
     }
-    dropped_[device] += gone;
+    dropped_[device].lost += gone.lost;
+    dropped_[device].damaged += gone.damaged;
   }
 }
 

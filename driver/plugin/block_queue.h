@@ -21,7 +21,8 @@ struct Block {
   std::string device;
   device::SampleBlock samples;
   std::vector<float> corrected;
-  std::uint64_t lost = 0;
+  std::uint64_t lost = 0;     ///< frames, just before these
+  std::uint64_t damaged = 0;  ///< lines that could not be read, likewise
   std::size_t taken = 0;  ///< frames given to the host already
 };
 
@@ -48,7 +49,10 @@ class BlockQueue {
   std::condition_variable arrived_, taken_;
   std::deque<std::unique_ptr<Block>> blocks_;
   std::map<std::string, std::size_t> frames_;
-  std::map<std::string, std::uint64_t> dropped_;
+  struct Gone {
+    std::uint64_t lost = 0, damaged = 0;
+  };
+  std::map<std::string, Gone> dropped_;
   std::optional<Error> error_;
 };
 

@@ -136,6 +136,7 @@ struct Session::Thread {
       found->second.apply(block->samples, block->corrected);
     }
     block->lost = block->samples.lostBefore;
+    block->damaged = block->samples.damagedBefore;
     const double rate_Hz = rack::LiveRack::rateOf(*rack.device(device)).in(units::hertz);
     const bool keepAll = virtualClock != nullptr;
     blocks.push(std::move(block), keepAll ? std::numeric_limits<std::size_t>::max()
@@ -320,14 +321,21 @@ Result<void> Session::start() {
   Thread* t = thread_.get();
   t->stopWanted = false;
   t->blocks.clear();
+  current_.reset();
   struct Acquire {
     static Task<Result<void>> run(Thread* thread, rack::LoadPathPermit permit) {
       rack::AcquisitionSink sink;
       sink.block = [thread](const std::string& device, device::SampleBlock& block) { thread->push(device, block); };
       const std::function<bool()> stop = [thread] { return thread->stopWanted.load(); };
-      auto done = co_await rack::acquire(*thread->live, permit, sink, stop);
-      if (!done) thread->blocks.end(done.error());
-      co_return done;
+      // However it ends, a host that waits for samples is told.
+      try {
+        auto done = co_await rack::acquire(*thread->live, permit, sink, stop);
+        if (!done) thread->blocks.end(done.error());
+        co_return done;
+      } catch (...) {
+        thread->blocks.end(errorOf(std::current_exception()).error());
+        throw;
+      }
     }
   };
   t->running = true;
@@ -337,9 +345,10 @@ Result<void> Session::start() {
 
 Result<Block*> Session::next(std::uint32_t timeout_ms) {
   if (!thread_ || !thread_->live) return std::unexpected(notOpen());
-  if (!thread_->running) return fail(ErrorCode::bad_use, "no samples are being read", {}, "call start first");
   if (current_ && current_->taken < current_->samples.frames()) return current_.get();
-  auto block = thread_->blocks.take(std::chrono::milliseconds(timeout_ms));
+  // After stop() comes what was queued by then.
+  auto block = thread_->blocks.take(std::chrono::milliseconds(thread_->running ? timeout_ms : 0));
+  if (!block && !thread_->running) return fail(ErrorCode::bad_use, "no samples are being read", {}, "call start first");
   if (!block) return std::unexpected(std::move(block.error()));
   current_ = std::move(*block);
   return current_.get();
@@ -351,7 +360,6 @@ Result<void> Session::stop() {
   thread_->blocks.wake();
   auto done = thread_->acquisition.get();
   thread_->running = false;
-  current_.reset();
   return done;
 }
 

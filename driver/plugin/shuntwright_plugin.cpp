@@ -56,6 +56,18 @@ int guarded(shuntwright_session* handle, Body body) {
   return SHUNTWRIGHT_INTERNAL;
 }
 
+/// The host's struct as far as the host knows it, the rest 0; and back, no further than that.
+template <class Struct>
+Struct known(const Struct& given) {
+  Struct all{};
+  std::memcpy(&all, &given, std::min<std::size_t>(given.struct_size, sizeof all));
+  return all;
+}
+template <class Struct>
+void give(const Struct& all, Struct& given) {
+  std::memcpy(&given, &all, std::min<std::size_t>(given.struct_size, sizeof all));
+}
+
 std::string orEmpty(const char* text) { return text ? text : ""; }
 
 int openSession(const shuntwright_open_options* given, shuntwright_session** session) {
@@ -93,18 +105,20 @@ int channelCount(shuntwright_session* session, uint32_t* count) {
 }
 
 int channelAt(shuntwright_session* session, uint32_t index, shuntwright_channel* out) {
-  if (!out || out->struct_size < sizeof(shuntwright_channel)) return SHUNTWRIGHT_BAD_USE;
+  if (!out || out->struct_size < sizeof out->struct_size) return SHUNTWRIGHT_BAD_USE;
   return guarded(session, [&](auto& s) -> Result<void> {
+    auto all = known(*out);
     if (!s.rack() || index >= s.rack()->channels.size()) {
       return shuntwright::fail(ErrorCode::bad_use, "the rack has no channel number " + std::to_string(index));
     }
     const auto& channel = s.rack()->channels[index];
     const auto* result = s.record() ? s.record()->channel(channel.name) : nullptr;
-    out->name = channel.name.c_str();
-    out->device = channel.device.c_str();
-    out->input = channel.input;
-    out->unit = result ? result->unit.c_str() : "";
-    out->calibrated = result && result->verdict == shuntwright::calibration::Verdict::pass ? 1 : 0;
+    all.name = channel.name.c_str();
+    all.device = channel.device.c_str();
+    all.input = channel.input;
+    all.unit = result ? result->unit.c_str() : "";
+    all.calibrated = result && result->verdict == shuntwright::calibration::Verdict::pass ? 1 : 0;
+    give(all, *out);
     return {};
   });
 }
@@ -143,13 +157,15 @@ int startReading(shuntwright_session* session) {
   return guarded(session, [](auto& s) { return s.start(); });
 }
 
-int readBlock(shuntwright_session* session, uint32_t timeout_ms, shuntwright_block* out) {
-  if (!out || out->struct_size < sizeof(shuntwright_block)) return SHUNTWRIGHT_BAD_USE;
+int readBlock(shuntwright_session* session, uint32_t timeout_ms, shuntwright_block* given) {
+  if (!given || given->struct_size < sizeof given->struct_size) return SHUNTWRIGHT_BAD_USE;
   if (!session || !session->session) return SHUNTWRIGHT_BAD_USE;
+  shuntwright_block all = known(*given);
+  shuntwright_block* const out = &all;
   bool timedOut = false;
   const int code = guarded(session, [&](auto& s) -> Result<void> {
     out->frames = 0;
-    out->lost = 0;
+    out->lost = out->damaged = 0;
     out->device = "";
     auto got = s.next(timeout_ms);
     if (!got) {
@@ -174,9 +190,11 @@ int readBlock(shuntwright_session* session, uint32_t timeout_ms, shuntwright_blo
     out->inputs = static_cast<uint32_t>(inputs);
     out->device = block.device.c_str();
     out->lost = std::exchange(block.lost, 0);
+    out->damaged = std::exchange(block.damaged, 0);
     block.taken += frames;
     return {};
   });
+  give(all, *given);
   return timedOut ? SHUNTWRIGHT_TIMEOUT : code;
 }
 

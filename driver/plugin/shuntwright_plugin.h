@@ -94,7 +94,9 @@ typedef struct {
   float* ratio;
   float* corrected;
   uint8_t* flags;
-  uint64_t lost;             /* out: frames lost just before these, on the wire or because nobody read */
+  uint64_t lost;             /* out: frames lost just before these, on the wire or because nobody read; may come with
+                                no frame at the end */
+  uint64_t damaged;          /* out: lines from the device just before these that could not be read */
 } shuntwright_block;
 
 typedef struct {
@@ -118,7 +120,7 @@ typedef struct {
   int (*start)(shuntwright_session* session);
   /* Waits up to timeout_ms for samples of any device. */
   int (*read)(shuntwright_session* session, uint32_t timeout_ms, shuntwright_block* block);
-  /* Samples that were not read yet are gone afterwards. */
+  /* What has come by then can still be read, until read says BAD_USE or start is called. */
   int (*stop)(shuntwright_session* session);
 
   int (*release)(shuntwright_session* session); /* opens every relay */

@@ -78,7 +78,7 @@ Task<void> runAmplifier(Run& run, Amplifier& amplifier) {
     const auto period = fromSeconds(1 / LiveRack::rateOf(amplifier.device->described()).in(units::hertz));
     // Silence is a fault after two seconds (or three samples of a slow device); asked to stop is noticed sooner.
     const Instant silent = clock.now() + std::max<Nanoseconds>(std::chrono::seconds(2), 3 * period);
-    Result<device::SampleBlock> block;
+    Result<device::SampleBlock> block = fail(ErrorCode::timeout, "no samples came");
     while (!run.stopWanted()) {
       const Instant soon = std::min(silent, clock.now() + std::chrono::milliseconds(500));
       block = co_await amplifier.device->next(soon);
@@ -130,6 +130,13 @@ Task<Result<void>> acquire(LiveRack& live, LoadPathPermit, AcquisitionSink sink,
       bodies.push_back([&run, one = amplifier.get()]() -> Task<void> { return runAmplifier(run, *one); });
     }
     co_await whenAll(std::move(bodies));
+    // What has come and nobody has asked for, and the gap at the very end.
+    for (auto& amplifier : amplifiers) {
+      device::SampleBlock rest = amplifier->device->rest();
+      run.marks.mark(rest);
+      const bool something = rest.frames() > 0 || rest.lostBefore > 0 || rest.damagedBefore > 0;
+      if (something && sink.block) sink.block(amplifier->name, rest);
+    }
   } catch (...) {
     thrown = std::current_exception();
   }

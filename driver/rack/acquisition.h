@@ -14,7 +14,7 @@ namespace shuntwright::rack {
 
 /// Where samples and trouble go. Called on the one thread; blocks are the callee's to change.
 struct AcquisitionSink {
-  /// A block of one amplifier. Samples taken while a relay may be closed, or was less than its release time
+  /// A block of one amplifier; the last may hold no frame but what was lost before the end. Samples taken while a relay may be closed, or was less than its release time
   /// and the filter's settling ago, carry kSwitching.
   std::function<void(const std::string& device, device::SampleBlock& block)> block;
   /// A device has gone silent or away (the others go on), or is back.

@@ -15,6 +15,7 @@
 #include <sstream>
 
 #include "driver/calibration/record_json.h"
+#include "driver/recording/reader.h"
 #include "tests/support/run_program.h"
 #include "tests/support/virtual_bench.h"
 
@@ -137,6 +138,34 @@ TEST_F(Processes, throughPseudoTerminalsTheVerdictsAreThoseInMemory) {
   const Ran csv = run("export " + folder_ + "/run.h5");
   EXPECT_EQ(csv.code, 0);
   EXPECT_EQ(csv.out.substr(0, 33), "time,seconds,Q3 [microstrain],Q2 ");
+}
+
+TEST_F(Processes, aSecondInterruptStillEndsTheRecordingProperly) {
+  const std::string rack = serialRack();
+  simulate(rack);
+  ASSERT_EQ(run("calibrate " + rack + " --isolated --json").code, 0);
+  const std::string file = folder_ + "/twice.h5";
+  const pid_t child = ::fork();
+  if (child == 0) {
+    const std::string command = "exec " SHUNTWRIGHT_BIN_DIR "/shuntwright record " + rack + " --isolated --out " + file +
+                                " > " + folder_ + "/out 2>&1 < /dev/null";
+    ::execl("/bin/sh", "sh", "-c", command.c_str(), nullptr);
+    ::_exit(127);
+  }
+  std::uint64_t rows = 0;
+  for (int k = 0; k < 400 && rows == 0; ++k) {
+    ::usleep(25000);
+    if (auto reader = recording::Reader::open(file)) rows = (*reader)->rows(0);
+  }
+  EXPECT_GT(rows, 0u);
+  ::kill(child, SIGINT);
+  ::usleep(2000);
+  ::kill(child, SIGINT);
+  ::waitpid(child, nullptr, 0);
+  auto reader = recording::Reader::open(file);
+  ASSERT_TRUE(reader.has_value()) << reader.error().text();
+  EXPECT_TRUE((*reader)->complete());
+  for (const auto& event : (*reader)->events()) EXPECT_NE(event.kind, "recovered");
 }
 
 TEST_F(Processes, withoutConfirmationNothingIsShunted) {

@@ -55,6 +55,7 @@ class FakeRelayBoard : public device::Device {
   Task<Result<device::SampleBlock>> next(Instant) override {
     co_return fail(ErrorCode::not_found, "a relay board has no samples");
   }
+  device::SampleBlock rest() override { return {}; }
   Task<Result<void>> stop() override { co_return Result<void>{}; }
   void close() override {}
 

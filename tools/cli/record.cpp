@@ -1,6 +1,9 @@
+#include <fcntl.h>
+#include <sys/ioctl.h>
 #include <unistd.h>
 
 #include <CLI/CLI.hpp>
+#include <algorithm>
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/awaitable.hpp>
 #include <boost/asio/co_spawn.hpp>
@@ -14,6 +17,7 @@
 #include <functional>
 #include <istream>
 #include <ostream>
+#include <utility>
 
 #include "driver/calibration/basis.h"
 #include "driver/calibration/record_json.h"
@@ -35,7 +39,7 @@ namespace json = boost::json;
 class Keyboard : public std::enable_shared_from_this<Keyboard> {
  public:
   Keyboard(asio::any_io_executor executor, RecordingSession& session, bool& quit, std::function<void()> typed)
-      : input_(executor, ::dup(STDIN_FILENO)), session_(session), quit_(quit), typed_(std::move(typed)) {}
+      : input_(executor, ::dup(STDIN_FILENO)), session_(session), quit_(quit), typed_(std::move(typed)), flags_(::fcntl(STDIN_FILENO, F_GETFL)) {}
 
   void listen() {
     asio::async_read_until(input_, buffer_, '\n', [self = shared_from_this()](boost::system::error_code ec, std::size_t) {
@@ -50,6 +54,8 @@ class Keyboard : public std::enable_shared_from_this<Keyboard> {
   void stop() {
     boost::system::error_code ignored;
     input_.close(ignored);
+    // The copy shares its flags with the terminal, which must not be left non-blocking for whoever uses it next.
+    if (flags_ >= 0) ::fcntl(STDIN_FILENO, F_SETFL, flags_);
   }
 
  private:
@@ -71,7 +77,36 @@ class Keyboard : public std::enable_shared_from_this<Keyboard> {
   RecordingSession& session_;
   bool& quit_;
   std::function<void()> typed_;
+  int flags_;
 };
+
+/// However the recording ends, a second Ctrl-C included: the terminal is as it was and the file ended properly.
+struct Ending {
+  RecordingSession& session;
+  std::shared_ptr<Keyboard> keyboard;
+  bool finished = false;
+
+  Result<void> finish() {
+    if (std::exchange(finished, true)) return {};
+    if (keyboard) keyboard->stop();
+    return session.finish();
+  }
+  ~Ending() { (void)finish(); }
+};
+
+std::size_t terminalWidth() {
+  struct winsize size {};
+  return ::ioctl(STDERR_FILENO, TIOCGWINSZ, &size) == 0 && size.ws_col > 0 ? size.ws_col : 80;
+}
+
+/// As many characters as fit, each one cell.
+std::string clipped(const std::string& text, std::size_t width) {
+  std::size_t used = 0, at = 0;
+  for (; at < text.size(); ++at) {
+    if ((static_cast<unsigned char>(text[at]) & 0xC0) != 0x80 && ++used > width) break;
+  }
+  return text.substr(0, at);
+}
 
 /// The live table: redrawn in place on a terminal, nothing in a pipe.
 class LiveTable {
@@ -83,16 +118,18 @@ class LiveTable {
     // Back to the table's top, and everything below it away.
     std::string text = lines_ > 0 ? "\x1b[" + std::to_string(lines_) + "A\x1b[J" : "";
     lines_ = 0;
+    // A line that wraps would take two, and the table would creep down the terminal.
+    const std::size_t width = terminalWidth();
     const auto line = [&](const std::string& what) {
-      text += what + "\x1b[K\n";
+      text += clipped(what, width) + "\x1b[K\n";
       ++lines_;
     };
     line(fixed(elapsed_s, 1) + " s  " + std::to_string(session.rows()) + " rows  lost " + std::to_string(session.lost()) +
          "  [b LABEL begin hold, e end hold, q quit, text mark]" +
          (session.trouble().empty() ? "" : "  TROUBLE " + session.trouble()));
-    // Three channels a line keeps 32 of them on a small terminal.
+    const std::size_t perLine = std::max<std::size_t>(1, width / kCell);
     std::string row;
-    int column = 0;
+    std::size_t column = 0;
     for (const auto& v : session.live()) {
       char cell[64];
       const char* mark = (v.flags & device::kSaturated)   ? "SAT"
@@ -103,7 +140,7 @@ class LiveTable {
       std::snprintf(cell, sizeof cell, "%-6s %9.1f %-11s%-4s", v.channel.c_str(), static_cast<double>(v.value),
                     v.unit.c_str(), mark);
       row += cell;
-      if (++column == 3) {
+      if (++column == perLine) {
         line(row);
         row.clear();
         column = 0;
@@ -117,6 +154,7 @@ class LiveTable {
   void typed() { ++lines_; }
 
  private:
+  static constexpr std::size_t kCell = 32;  ///< of one channel
   const Console& console_;
   int lines_ = 0;
 };
@@ -181,7 +219,8 @@ class Record final : public Command {
     auto executor = co_await asio::this_coro::executor;
     bool quit = false;
     LiveTable table(job->console);
-    std::shared_ptr<Keyboard> keyboard;
+    Ending ending{**session, nullptr};
+    std::shared_ptr<Keyboard>& keyboard = ending.keyboard;
     if (job->console.interactive) {
       keyboard = std::make_shared<Keyboard>(executor, **session, quit, [&table] { table.typed(); });
       keyboard->listen();
@@ -197,10 +236,10 @@ class Record final : public Command {
       return quit || context.stopAsked || (job->duration_s > 0 && seconds(now - start) >= job->duration_s);
     };
     auto done = co_await (*session)->run(context.live, job->permit, stop);
-    if (keyboard) keyboard->stop();
+    auto finished = ending.finish();
     table.draw(**session, seconds(clock.now() - start));
     if (!done) co_return std::unexpected(std::move(done.error()));
-    if (auto finished = (*session)->finish(); !finished) co_return std::unexpected(std::move(finished.error()));
+    if (!finished) co_return std::unexpected(std::move(finished.error()));
     report(job->console, **session, job->record.id);
     co_return kPassed;
   }

@@ -145,7 +145,9 @@ TEST(DerivedChannels, AKnownFieldTakesTheTransversePartOut) {
 TEST(DerivedChannels, AThermometerThatIsSilentOrFlaggedIsNotBelieved) {
   Bench bench(rackText(kPacket, "temperature = \"F1\"", ""));
   EXPECT_TRUE(std::isnan(bench.show(500, 0, 0, 50, 0s, {0, device::kMissing, 0, 0})[4])) << "none yet";
+  EXPECT_EQ(bench.widened.flagsAt(0, 4), device::kMissing) << "what is missing says so";
   EXPECT_NEAR(bench.show(500, 0, 0, 20, 1s)[4], 500, 1e-3);
+  EXPECT_EQ(bench.widened.flagsAt(0, 4), 0);
   EXPECT_NEAR(bench.show(500, 0, 0, 90, 30s, {0, device::kSaturated, 0, 0})[4], 500, 1e-3)
       << "the latest good one counts";
   EXPECT_TRUE(std::isnan(bench.show(500, 0, 0, 90, 62s, {0, device::kSaturated, 0, 0})[4])) << "for a minute";

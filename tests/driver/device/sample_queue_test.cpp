@@ -49,6 +49,18 @@ TEST_F(SampleQueueTest, AGapStandsBeforeABlock) {
   EXPECT_EQ(after.damagedBefore, 1u);
 }
 
+TEST_F(SampleQueueTest, AGapAtTheEndIsToldWithoutFrames) {
+  push(2);
+  queue.noteLost(3);
+  queue.noteDamaged(1);
+  EXPECT_EQ(queue.take().frames(), 2u);
+  const auto end = queue.take();
+  EXPECT_EQ(end.frames(), 0u);
+  EXPECT_EQ(end.lostBefore, 3u);
+  EXPECT_EQ(end.damagedBefore, 1u);
+  EXPECT_EQ(queue.take().lostBefore, 0u) << "once";
+}
+
 TEST_F(SampleQueueTest, WithoutGapAllComesAtOnceHoweverLong) {
   push(95);  // more than one piece of the queue's own
   EXPECT_EQ(queue.take().frames(), 95u);

@@ -38,6 +38,17 @@ TEST(BlockQueue, whatNobodyReadsIsDroppedOldestFirstAndCountedInTheNext) {
   EXPECT_EQ((*kept)->lost, 8u) << "6 frames and the 2 that were lost before them";
 }
 
+TEST(BlockQueue, damagedLinesOfDroppedBlocksAreCountedToo) {
+  BlockQueue queue;
+  auto first = block("a", 6);
+  first->damaged = 3;
+  queue.push(std::move(first), 10);
+  queue.push(block("a", 6), 10);
+  auto kept = queue.take(0ms);
+  ASSERT_TRUE(kept.has_value());
+  EXPECT_EQ((*kept)->damaged, 3u);
+}
+
 TEST(BlockQueue, whenAllIsDroppedTheNextBlockTellsIt) {
   BlockQueue queue;
   queue.push(block("a", 20), 10);

@@ -5,12 +5,14 @@
 #include <boost/asio/awaitable.hpp>
 #include <boost/asio/co_spawn.hpp>
 #include <boost/asio/io_context.hpp>
+#include <cstddef>
 #include <cstdio>
 #include <cstdlib>
 #include <cstring>
 #include <filesystem>
 #include <fstream>
 #include <sstream>
+#include <vector>
 
 #include "driver/calibration/record_json.h"
 #include "driver/correction/live_correction.h"
@@ -197,6 +199,49 @@ TEST_F(PluginTest, aCalibrationIsCancelledFromItsProgressAndTheSessionGoesOn) {
   EXPECT_EQ(api->channel_count(host.session, &count), SHUNTWRIGHT_OK) << "the session lives on";
   EXPECT_EQ(api->cancel(nullptr), SHUNTWRIGHT_BAD_USE);
   api->close(host.session);
+}
+
+TEST_F(PluginTest, whatWasQueuedIsReadAfterStopAndOlderStructsAreFilledAsFarAsTheyGo) {
+  makeTrace(test::shippedRack("small_bench.toml"));
+  const shuntwright_table* api = shuntwright_plugin_table(SHUNTWRIGHT_ABI_VERSION);
+  shuntwright_open_options options{};
+  options.struct_size = sizeof options;
+  options.isolated = 1;
+  const std::string rack = rackFile();
+  options.rack_file = rack.c_str();
+  options.replay_file = trace_.c_str();
+  shuntwright_session* session = nullptr;
+  ASSERT_EQ(api->open(&options, &session), SHUNTWRIGHT_OK) << api->last_error(session);
+
+  // A host built when the struct ended before `unit`.
+  shuntwright_channel channel{};
+  channel.struct_size = offsetof(shuntwright_channel, unit);
+  channel.unit = "untouched";
+  EXPECT_EQ(api->channel(session, 0, &channel), SHUNTWRIGHT_OK) << api->last_error(session);
+  EXPECT_STREQ(channel.name, "Q3");
+  EXPECT_STREQ(channel.unit, "untouched");
+
+  const char* record = nullptr;
+  ASSERT_EQ(api->calibrate(session, nullptr, nullptr, &record), SHUNTWRIGHT_OK) << api->last_error(session);
+  ASSERT_EQ(api->start(session), SHUNTWRIGHT_OK) << api->last_error(session);
+  std::vector<float> ratio(16);
+  shuntwright_block block{};
+  block.struct_size = offsetof(shuntwright_block, lost);  // likewise
+  block.lost = 77;
+  block.frames_capacity = 1;
+  block.values_capacity = 16;
+  block.ratio = ratio.data();
+  ASSERT_EQ(api->read(session, 5000, &block), SHUNTWRIGHT_OK) << api->last_error(session);
+  EXPECT_EQ(block.frames, 1u);
+  EXPECT_EQ(block.lost, 77u) << "beyond what the host knows nothing is written";
+  ASSERT_EQ(api->stop(session), SHUNTWRIGHT_OK) << api->last_error(session);
+  // The trace holds a hundred frames and more came than were read.
+  std::uint32_t after = 0;
+  int code = SHUNTWRIGHT_OK;
+  while ((code = api->read(session, 0, &block)) == SHUNTWRIGHT_OK) after += block.frames;
+  EXPECT_EQ(code, SHUNTWRIGHT_BAD_USE) << "then it is over";
+  EXPECT_GT(after, 0u);
+  api->close(session);
 }
 
 TEST_F(PluginTest, oneSymbolIsExported) {
