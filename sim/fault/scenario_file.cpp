@@ -123,22 +123,23 @@ class ScenarioReader {
     return std::nullopt;
   }
 
+  // A fault of nobody is read to its end all the same, so that its other keys are checked and none is unknown.
   ChannelFaults* channel(TableReader& t) {
     std::string name;
-    if (!t.need("channel", name)) return nullptr;
+    if (!t.need("channel", name)) return &nobody_;
     if (!rack_.channel(name)) {
       unknown(t, "channel", name);
-      return nullptr;
+      return &nobody_;
     }
     return &scenario_.channels[name];
   }
 
   DeviceFaults* device(TableReader& t) {
     std::string name;
-    if (!t.need("device", name)) return nullptr;
+    if (!t.need("device", name)) return &nowhere_;
     if (!rack_.device(name)) {
       unknown(t, "device", name);
-      return nullptr;
+      return &nowhere_;
     }
     return &scenario_.devices[name];
   }
@@ -159,7 +160,7 @@ class ScenarioReader {
     t.take("from", one.from, {"1", ""});
     t.take("count", one.count, {"1", ""});
     if (kind == DeviceFault::Kind::late) t.need("delay", one.delay, {"0 s", "1 h"});
-    if (faults) faults->requests.push_back(one);
+    faults->requests.push_back(one);
   }
 
   void fault(const TomlNode& node) {
@@ -200,22 +201,22 @@ class ScenarioReader {
         break;
       }
       case What::wrong_shunt:
-        if (auto* c = channel(t)) t.need("scale", c->shuntScale, {"0.01", "100"});
+        t.need("scale", channel(t)->shuntScale, {"0.01", "100"});
         break;
       case What::noisy:
-        if (auto* c = channel(t)) t.need("scale", c->noiseScale, {"0", "1e6"});
+        t.need("scale", channel(t)->noiseScale, {"0", "1e6"});
         break;
       case What::open_lead:
-        if (auto* c = channel(t)) c->openLead = true;
+        channel(t)->openLead = true;
         break;
       case What::saturated:
-        if (auto* c = channel(t)) c->saturated = true;
+        channel(t)->saturated = true;
         break;
       case What::bent:
-        if (auto* c = channel(t)) t.need("per_mV_per_V", c->bend, {"-1", "1"});
+        t.need("per_mV_per_V", channel(t)->bend, {"-1", "1"});
         break;
       case What::no_zero_return:
-        if (auto* c = channel(t)) t.need("strain", c->noReturn);
+        t.need("strain", channel(t)->noReturn);
         break;
       case What::mute: request(t, DeviceFault::Kind::mute); break;
       case What::garbage: request(t, DeviceFault::Kind::garbage); break;
@@ -223,21 +224,17 @@ class ScenarioReader {
       case What::error_answer: request(t, DeviceFault::Kind::error_answer); break;
       case What::late: request(t, DeviceFault::Kind::late); break;
       case What::lost_frames:
-        if (auto* d = device(t)) t.need("part", d->lostFrames, {"0", "1"});
+        t.need("part", device(t)->lostFrames, {"0", "1"});
         break;
       case What::silent:
-        if (auto* d = device(t)) {
-          Nanoseconds after{0};
-          if (t.need("after", after, {"0 s", ""})) d->silentAfter = after;
-        }
+        t.need("after", device(t)->silentAfter, {"0 s", ""});
         break;
-      case What::unplugged:
-        if (auto* d = device(t)) {
-          Nanoseconds after{0};
-          if (t.need("after", after, {"0 s", ""})) d->unpluggedAfter = after;
-          t.take("lasting", d->unpluggedFor, {"0 s", ""});
-        }
+      case What::unplugged: {
+        DeviceFaults* faults = device(t);
+        t.need("after", faults->unpluggedAfter, {"0 s", ""});
+        t.take("lasting", faults->unpluggedFor, {"0 s", ""});
         break;
+      }
     }
     t.finish();
   }
@@ -245,6 +242,8 @@ class ScenarioReader {
   const Rack& rack_;
   Diagnostics& diagnostics_;
   Scenario scenario_;
+  ChannelFaults nobody_;
+  DeviceFaults nowhere_;
 };
 
 }  // namespace

@@ -146,8 +146,10 @@ TEST_F(RecorderTest, csvIsWhatAnotherReaderOfRfc4180Expects) {
     ASSERT_TRUE(writeCsv(*parts, options, out).has_value());
   }
   const std::string out = python(
-      "import csv,sys\nd=open(sys.argv[1],newline=\"\").read()\nassert d.count(\"\\r\\n\")==4 and d.endswith(\"\\r\\n\")\n"
-      "r=list(csv.reader(d.splitlines()))\nassert len({len(x) for x in r})==1\nprint(r[0][3]);print(r[2][1]);print(float(r[2][2]))",
+      "import csv,sys\nd=open(sys.argv[1],newline=\"\").read()\nassert d.count(\"\\r\\n\")==4 and "
+      "d.endswith(\"\\r\\n\")\n"
+      "r=list(csv.reader(d.splitlines()))\nassert len({len(x) for x in "
+      "r})==1\nprint(r[0][3]);print(r[2][1]);print(float(r[2][2]))",
       folder_ + "/run.csv");
   EXPECT_EQ(out, "S, \"2\" [kN]\n0.001\n2e-08\n");
 }
@@ -181,7 +183,9 @@ std::int64_t monotonic_ns() {
   }
 }
 
-TEST_F(RecorderTest, aFileKilledAtAnyMomentOpensAndLacksAtMostTheLastSecond) {
+using RecorderSlow = RecorderTest;
+
+TEST_F(RecorderSlow, aFileKilledAtAnyMomentOpensAndLacksAtMostTheLastSecond) {
   constexpr int kKills = 50;
   Random random(2026);
   auto* shared = static_cast<Shared*>(
@@ -232,7 +236,9 @@ TEST_F(RecorderTest, aLiveFileOpensInPlainH5py) {
   auto recorder = Recorder::create(path_, plan(10));
   append(**recorder, 0, 1500);
   ASSERT_TRUE((*recorder)->commit(kStart).has_value());
-  EXPECT_EQ(python("import sys,h5py\nf=h5py.File(sys.argv[1],\"r\")\nprint(int(f[\"devices/amp1/rows\"][0]))", path_), "1500\n");
+  EXPECT_EQ(python("import sys,h5py\nf=h5py.File(sys.argv[1],\"r\")\nprint(int(f[\"devices/amp1/rows\"][0]))",
+                   path_),
+            "1500\n");
 }
 
 TEST(PartPath, putsTheNumberBeforeTheEnding) {

@@ -203,6 +203,19 @@ device = "amp1"
   EXPECT_EQ(lines, (std::vector<int>{1, 1, 3, 4, 6, 7, 9, 12, 15, 16, 17})) << diagnostics_.render(false);
 }
 
+TEST_F(ScenarioFile, aFaultOfNobodyIsToldOnceAndItsOtherKeysAreKnown) {
+  for (const char* text : {"[[fault]]\nwhat = \"noisy\"\nchannel = \"Q9\"\nscale = 3\n",
+                           "[[fault]]\nwhat = \"bent\"\nchannel = \"Q9\"\nper_mV_per_V = 0.1\n",
+                           "[[fault]]\nwhat = \"unplugged\"\ndevice = \"amp7\"\nafter = \"6 s\"\nlasting = \"2 s\"\n"}) {
+    diagnostics_ = description::Diagnostics();
+    const Scenario s = read(text);
+    ASSERT_EQ(diagnostics_.problems().size(), 1u) << diagnostics_.render(false);
+    EXPECT_EQ(diagnostics_.problems()[0].message.substr(0, 11), "the rack ha");
+    EXPECT_TRUE(s.channels.empty());
+    EXPECT_TRUE(s.devices.empty());
+  }
+}
+
 TEST_F(ScenarioFile, aSyntaxErrorIsToldAloneAndTheBaseStays) {
   Scenario base;
   base.imperfections.gauges = 3;
