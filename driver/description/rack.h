@@ -1,6 +1,7 @@
 #pragma once
 
 #include <array>
+#include <chrono>
 #include <map>
 #include <memory>
 #include <optional>
@@ -71,13 +72,14 @@ struct GaugeOfArm {
 struct Resistor {
   Place place;
   std::string name;
-  units::Resistance value;
+  units::Resistance value;                  ///< in the rack: carried over from the certificate's temperature
   units::Fraction tolerance;                ///< rectangular half-width; 0 when a certificate gives U
   units::Fraction expandedUncertainty;      ///< of the certificate; 0 when only a tolerance is known
   double coverageFactor = 2;
   units::TemperatureCoefficient temperatureCoefficient;
-  units::TemperatureDifference temperatureSpan;  ///< half-width of the resistor's temperature about the certificate's
+  units::TemperatureDifference temperatureSpan;  ///< half-width of the resistor's temperature about that in the rack
   std::string certificate;
+  std::optional<std::chrono::year_month_day> due;  ///< last day on which the certificate holds
 };
 
 /// One wire. Known by its resistance or by length and wire number.

@@ -226,7 +226,9 @@ class RackReader {
     reader.take("coverage_factor", out.coverageFactor, {"1", "10"});
     reader.take("temperature_coefficient", out.temperatureCoefficient, {"-10000 ppm/K", "10000 ppm/K"});
     reader.take("temperature_span", out.temperatureSpan, {"0 K", "100 K"});
+    readTemperatures(reader, out);
     reader.take("certificate", out.certificate);
+    reader.take("due", out.due);
     if (isOwn(reader.entry("expanded_uncertainty")) && !isOwn(reader.entry("tolerance")))
       out.tolerance = {};  // a certificate of its own stands above a tolerance for all
     if (!reader.has("tolerance") && !reader.has("expanded_uncertainty"))
@@ -235,6 +237,22 @@ class RackReader {
           "add tolerance = \"0.1 %\", or expanded_uncertainty = \"0.01 %\" from its certificate");
     reader.finish();
     rack_.resistors.emplace(out.name, std::move(out));
+  }
+
+  /// The certificate's value holds at the certificate's temperature; the rack's is another.
+  void readTemperatures(TableReader& reader, Resistor& out) {
+    std::optional<units::Temperature> certified, here;
+    reader.take("certificate_temperature", certified, {"-50 degC", "150 degC"});
+    reader.take("temperature", here, {"-50 degC", "150 degC"});
+    if (!certified && !here) return;
+    for (const std::string_view key : {"certificate_temperature", "temperature", "temperature_coefficient"}) {
+      if (reader.has(key)) continue;
+      diagnostics_.error(reader.place(), reader.what() + " has temperatures, but no \"" + std::string(key) + '"',
+                         "its value in the rack takes certificate_temperature, temperature and "
+                         "temperature_coefficient together");
+      return;
+    }
+    if (certified && here) out.value = out.value * (1 + (out.temperatureCoefficient * (*here - *certified)).in(units::one));
   }
 
   void readLimits(const TomlNode& table) {

@@ -110,6 +110,31 @@ bool decode(const TomlNode& node, const std::string& what, std::string& out, Bou
   return true;
 }
 
+bool decode(const TomlNode& node, const std::string& what, std::chrono::year_month_day& out, Bounds,
+            Diagnostics& diagnostics) {
+  const std::string remedy = "write year, month and day in double quotes: \"2026-05-31\"";
+  if (node.type != TomlNode::Type::text) return wrongType(node, what, "a date", remedy, diagnostics);
+  const std::string& text = node.text;
+  bool good = text.size() == 10 && text[4] == '-' && text[7] == '-';
+  const auto number = [&](std::size_t from, std::size_t digits) {
+    int value = 0;
+    for (std::size_t i = from; good && i < from + digits; ++i) {
+      good = text[i] >= '0' && text[i] <= '9';
+      value = 10 * value + (text[i] - '0');
+    }
+    return value;
+  };
+  const std::chrono::year_month_day day(std::chrono::year(number(0, 4)),
+                                        std::chrono::month(static_cast<unsigned>(number(5, 2))),
+                                        std::chrono::day(static_cast<unsigned>(number(8, 2))));
+  if (!good || !day.ok()) {
+    diagnostics.error(node.place, what + " is no date: \"" + text + '"', remedy);
+    return false;
+  }
+  out = day;
+  return true;
+}
+
 bool decode(const TomlNode& node, const std::string& what, bool& out, Bounds, Diagnostics& diagnostics) {
   if (node.type != TomlNode::Type::boolean)
     return wrongType(node, what, "true or false", "write true or false without quotes", diagnostics);

@@ -1,5 +1,6 @@
 #pragma once
 
+#include <chrono>
 #include <cstdint>
 #include <initializer_list>
 #include <optional>
@@ -75,6 +76,8 @@ bool decode(const TomlNode& node, const std::string& what, double& out, Bounds, 
 bool decode(const TomlNode& node, const std::string& what, Nanoseconds& out, Bounds, Diagnostics&);
 bool decode(const TomlNode& node, const std::string& what, units::Temperature& out, Bounds, Diagnostics&);
 bool decode(const TomlNode& node, const std::string& what, units::GaugeFactor& out, Bounds, Diagnostics&);
+bool decode(const TomlNode& node, const std::string& what, std::chrono::year_month_day& out, Bounds,
+            Diagnostics&);  ///< a string "2026-05-31" (ISO 8601)
 bool decodeQuantity(const TomlNode& node, const std::string& what, const QuantityWords&, double& base, Bounds,
                     Diagnostics&);
 

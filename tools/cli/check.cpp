@@ -2,10 +2,13 @@
 #include <boost/json/object.hpp>
 #include <boost/json/serialize.hpp>
 #include <CLI/CLI.hpp>
+#include <boost/asio/io_context.hpp>
 #include <ostream>
 
 #include "driver/calibration/foresight.h"
+#include "driver/core/clock.h"
 #include "driver/description/load.h"
+#include "driver/rack/certificates.h"
 #include "driver/rack/prediction.h"
 #include "tools/cli/command.h"
 #include "tools/cli/record_table.h"
@@ -76,6 +79,8 @@ class Check final : public Command {
     description::Diagnostics diagnostics;
     const auto read = description::diskReader();
     std::vector<rack::ChannelPrediction> channels;
+    boost::asio::io_context context;
+    const RealClock clock(context);
     for (const auto& file : files_) {
       const auto text = read(file);
       if (!text) {
@@ -89,6 +94,7 @@ class Check final : public Command {
       auto rack = description::loadRack(file, read, diagnostics);
       if (!rack) continue;
       auto predicted = rack::predict(*rack, diagnostics);
+      rack::warnOfCertificates(*rack, rack::dayOf(clock.now()), diagnostics);
       if (budget_) foreseeAll(*rack, diagnostics);
       std::move(predicted.begin(), predicted.end(), std::back_inserter(channels));
     }
