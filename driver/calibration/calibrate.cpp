@@ -9,8 +9,10 @@
 #include <cstdio>
 #include <map>
 #include <memory>
+#include <set>
 
 #include "driver/core/async.h"
+#include "driver/rack/certificates.h"
 
 namespace shuntwright::calibration {
 
@@ -213,6 +215,19 @@ Result<std::vector<const Channel*>> chosen(const Rack& rack, const std::vector<s
   return channels;
 }
 
+/// A remark, no failure: what was measured stays right, but its chain to the standards has lapsed.
+void noteCertificates(const Rack& rack, const Channel& channel, Instant when, ChannelResult& result) {
+  std::set<std::string> told;
+  for (const auto& shunt : channel.shunts) {
+    const auto& resistor = rack.resistorOf(shunt);
+    if (!rack::overdue(resistor, rack::dayOf(when)) || !told.insert(resistor.name).second) continue;
+    result.findings.push_back({"certificate-overdue",
+                               "the certificate of shunt resistor " + resistor.name + " is overdue",
+                               "certificate " + resistor.certificate + " good until " + rack::isoText(*resistor.due) +
+                                   ", used on " + rack::isoText(rack::dayOf(when))});
+  }
+}
+
 std::string recordId(Instant started, Random& random) {
   std::string stamp = rfc3339(started);  // 2026-05-04T09:30:00.000Z
   std::string id = stamp.substr(0, 4) + stamp.substr(5, 2) + stamp.substr(8, 2) + "-" + stamp.substr(11, 2) +
@@ -277,6 +292,7 @@ Task<Result<Record>> calibrate(rack::LiveRack& live, rack::LoadPathPermit permit
     for (auto& share : shares) {
       if (share->amplifier->described().name != channel->device) continue;
       record.channels.push_back(analyse(rack, *channel, share->readings[channel->name]));
+      noteCertificates(rack, *channel, record.started, record.channels.back());
     }
   }
   record.windows = run.windowsDone;
