@@ -141,7 +141,7 @@ class Analysis {
 
  private:
   void takeZero() {
-    if (readings_.zero) {
+    if (readings_.zero && readings_.zero->samples > 0) {
       const Window& zero = *readings_.zero;
       result_.zero = zero.mean;
       result_.lostSamples += zero.lost;
@@ -198,7 +198,14 @@ class Analysis {
       return;
     }
     LeadIdentification found = identified(*fit);
-    if (result_.leadResistance) found.stated = *result_.leadResistance;
+    double stated_ohm = 0;
+    int carriers = 0;
+    for (const auto& [terminal, lead] : channel_.leads) {
+      if (!description::carriesCurrent(channel_.circuit, terminal)) continue;
+      stated_ohm += lead.resistance.in(ohm);
+      ++carriers;
+    }
+    found.stated = stated_ohm / std::max(1, carriers) * ohm;
     if (found.identifiable) {
       fit_ = std::move(*fit);
       const LeadFit::Situation at = fit_->situationAt(fit_->estimate());

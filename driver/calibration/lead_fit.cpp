@@ -38,6 +38,14 @@ std::size_t LeadFit::deviationAt(Terminal lead) const {
   return at;
 }
 
+double LeadFit::shareOf(Terminal lead) const {
+  const auto& stated = readings_.nominal.atCalibration;
+  double sum = 0;
+  for (const auto& [terminal, tolerance] : readings_.inequality) sum += stated.lead(terminal).in(ohm);
+  if (sum <= 0) return 1;
+  return stated.lead(lead).in(ohm) * static_cast<double>(readings_.inequality.size()) / sum;
+}
+
 double LeadFit::unitOf(std::size_t parameter) const {
   return rows_[dataRows() + parameter].distribution.standardUncertainty;
 }
@@ -55,7 +63,7 @@ LeadFit::Situation LeadFit::situationAt(const std::vector<double>& t) const {
   const double common = std::max(0.0, valueOf(kCommon, t));
   std::size_t deviation = strains_ ? 3 : 2;
   for (const auto& [terminal, share] : readings_.inequality) {
-    const Resistance own = std::max(0.0, common * (1 + valueOf(deviation++, t))) * ohm;
+    const Resistance own = std::max(0.0, common * shareOf(terminal) * (1 + valueOf(deviation++, t))) * ohm;
     out.model.atCalibration.lead(terminal) = out.model.inTest.lead(terminal) = own;
   }
   return out;
@@ -208,7 +216,9 @@ Result<void> LeadFit::search() {
     // Steps that do not fit at all creep towards the best there is.
     if (by > 1e-4 && better) continue;
     covariance_ = fit->covariance;
-    chiSquared_ = fit->chiSquared;
+    const auto chi = chiSquaredAt(estimate_);  // of what is returned, not of a step that a bound cut short
+    if (!chi) return std::unexpected(chi.error());
+    chiSquared_ = *chi;
     gain_ = metrology::Matrix(count, data + count);  // C J^T / u^2
     for (std::size_t i = 0; i < count; ++i) {
       for (std::size_t r = 0; r < data + count; ++r) {

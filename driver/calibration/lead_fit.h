@@ -52,6 +52,9 @@ class LeadFit {
   static constexpr std::size_t kCommon = 0, kSpan = 1;
   std::size_t deviationAt(description::Terminal lead) const;  ///< index of a lead's deviation
 
+  /// How much of the common resistance a lead has, as the rack states its leads.
+  double shareOf(description::Terminal lead) const;
+
   const std::vector<double>& estimate() const { return estimate_; }    ///< t
   const metrology::Matrix& covariance() const { return covariance_; }  ///< of t
   /// d t / d row, in standard uncertainties of the row. Shape: parameters x rows.

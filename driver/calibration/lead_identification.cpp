@@ -28,8 +28,9 @@ Direction leadDirection(const LeadFit& fit, Terminal lead) {
   const auto& t = fit.estimate();
   const std::size_t deviation = fit.deviationAt(lead);
   Direction out(fit.parameters(), 0.0);
-  out[LeadFit::kCommon] = fit.unitOf(LeadFit::kCommon) * (1 + fit.valueOf(deviation, t));
-  out[deviation] = std::max(0.0, fit.valueOf(LeadFit::kCommon, t)) * fit.unitOf(deviation);
+  out[LeadFit::kCommon] = fit.unitOf(LeadFit::kCommon) * fit.shareOf(lead) * (1 + fit.valueOf(deviation, t));
+  out[deviation] =
+      std::max(0.0, fit.valueOf(LeadFit::kCommon, t)) * fit.shareOf(lead) * fit.unitOf(deviation);
   return out;
 }
 

@@ -68,6 +68,10 @@ StepFigures figuresOf(const description::Shunt& shunt, const ShuntReadings& read
   r.after = meanOf(readings.closed, [](const Window& w) { return valueOf(w.mean); }) * volt_per_volt;
   const auto steps = stepsOf(readings);
   if (steps.empty()) return f;
+  for (const auto* windows : {&readings.opened, &readings.closed}) {
+    // A window without a usable sample has no mean, and no step.
+    if (!std::ranges::all_of(*windows, [](const Window& w) { return w.samples > 0; })) return f;
+  }
   const auto count = static_cast<double>(steps.size());
   double mean = 0;
   for (const auto step : steps) mean += valueOf(step) / count;

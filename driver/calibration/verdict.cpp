@@ -187,6 +187,7 @@ void straightness(ChannelResult& result, const description::Limits& limits) {
 
 void leadsAsStated(ChannelResult& result, const description::Limits& limits) {
   if (!result.leads || !result.leads->identifiable) return;
+  if (has(result, {"relay-error", "step-missing", "wrong-sign", "saturated"})) return;
   const double stated = result.leads->stated.in(ohm);
   const Bound bound(limits.leadDeviation.in(percent), limits);
   const double off = stated > 0 ? 100 * std::abs(result.leads->resistance.in(ohm) / stated - 1) : 0;

@@ -142,8 +142,12 @@ std::vector<Finding> rezero(Record& record, const description::Rack& rack, const
     }
     anew.zero = zero.mean;
     anew.zeroExpandedUncertainty = *uncertainty;
-    for (auto& level : anew.strainUncertainty)
-      level = withZero(level, result.zeroExpandedUncertainty, *uncertainty);
+    // The first level is no load: its width is worked out as the others' are, so that squares may be taken
+    // apart.
+    if (!result.strainUncertainty.empty()) {
+      const Strain before = result.strainUncertainty.front().expanded;
+      for (auto& level : anew.strainUncertainty) level = withZero(level, before, *uncertainty);
+    }
     result = std::move(anew);
   }
   return findings;
