@@ -198,18 +198,10 @@ class Analysis {
       return;
     }
     LeadIdentification found = identified(*fit);
-    double stated_ohm = 0;
-    int carriers = 0;
-    for (const auto& [terminal, lead] : channel_.leads) {
-      if (!description::carriesCurrent(channel_.circuit, terminal)) continue;
-      stated_ohm += lead.resistance.in(ohm);
-      ++carriers;
-    }
-    found.stated = stated_ohm / std::max(1, carriers) * ohm;
+    found.stated = meanLead(model_.atCalibration);
     if (found.identifiable) {
       fit_ = std::move(*fit);
-      const LeadFit::Situation at = fit_->situationAt(fit_->estimate());
-      model_ = at.model;
+      model_ = fit_->situationAt(fit_->estimate()).model;
       // Their tolerance stays: what they may be off each other is what moves a zero as they warm.
       for (const auto& lead : found.leads) channel_.leads.at(lead.terminal).resistance = lead.resistance;
       result_.leadResistance = found.resistance;
@@ -241,7 +233,7 @@ class Analysis {
         scale_.weights = stepWeights(predicted_, noise_);
       }
       if (fit_) {
-        result_.spanRatio = fit_->situationAt(fit_->estimate()).span;
+        result_.spanRatio = result_.leads->span;
         break;
       }
       result_.spanRatio = spanOf(scale_.measured, prediction->steps, scale_.weights);

@@ -1,5 +1,6 @@
 #include "driver/calibration/channel_model.h"
 
+#include <algorithm>
 #include <array>
 #include <cmath>
 
@@ -29,6 +30,17 @@ ChannelModel modelOf(const Rack& rack, const Channel& channel) {
     model.inTest.leads.fill(0.0 * ohm);
   }
   return model;
+}
+
+Resistance meanLead(const bridge::Circuit& circuit) {
+  double sum_ohm = 0;
+  int count = 0;
+  for (const Terminal lead : description::leadsOf(circuit.kind, circuit.sensed)) {
+    if (!description::carriesCurrent(circuit.kind, lead)) continue;
+    sum_ohm += circuit.lead(lead).in(ohm);
+    ++count;
+  }
+  return sum_ohm / std::max(1, count) * ohm;
 }
 
 namespace {

@@ -24,6 +24,9 @@ ChannelModel modelOf(const description::Rack& rack, const description::Channel& 
 /// The same with the leads as the rack states them, whatever becomes of their loss.
 ChannelModel modelWithLeads(const description::Rack& rack, const description::Channel& channel);
 
+/// Mean of the leads that carry the excitation's current; 0 where none does.
+units::Resistance meanLead(const bridge::Circuit& circuit);
+
 /// The bridge brought into the state that its zero reading shows.
 struct WorkingPoint {
   bridge::Circuit circuit;

@@ -1,7 +1,5 @@
 #include "driver/calibration/identified_model.h"
 
-#include <algorithm>
-
 namespace shuntwright::calibration {
 
 using namespace units;
@@ -31,19 +29,6 @@ struct FromFit {
   }
 };
 
-/// Of the leads that carry the excitation's current, while the shunts were closed.
-Resistance meanLead(const ChannelModel& model) {
-  const auto& circuit = model.atCalibration;
-  double sum_ohm = 0;
-  int count = 0;
-  for (const auto lead : description::leadsOf(circuit.kind, circuit.sensed)) {
-    if (!description::carriesCurrent(circuit.kind, lead)) continue;
-    sum_ohm += circuit.lead(lead).in(ohm);
-    ++count;
-  }
-  return sum_ohm / std::max(1, count) * ohm;
-}
-
 }  // namespace
 
 Result<metrology::Model> identifiedModel(const LeadFit& fit, const Rack& rack, const Channel& channel,
@@ -72,13 +57,13 @@ Result<metrology::Model> identifiedModel(const LeadFit& fit, const Rack& rack, c
     added.push_back(part.output);
   }
   out.outputs = base.claims->outputs() + 1;
-  const double leads_ohm = meanLead(nominal.model).in(ohm);
+  const double leads_ohm = meanLead(nominal.model.atCalibration).in(ohm);
   out.function = [base = std::move(base), circuit, added, leads_ohm](std::span<const double> x,
                                                                      std::span<double> y) -> Result<void> {
     const LeadFit::Situation at = base.situationAt(x);
     const auto other = meaningOf(at.model, at.span, base.reading / at.span);
     if (!other) return std::unexpected(other.error());
-    y.back() = meanLead(at.model).in(ohm)-leads_ohm;
+    y.back() = meanLead(at.model.atCalibration).in(ohm)-leads_ohm;
     if (auto done = base.claims->evaluate(*other, y.first(y.size() - 1)); !done) return done;
     for (std::size_t k = 0; k < added.size(); ++k) y[added[k]] += x[circuit + k];
     return {};

@@ -30,7 +30,7 @@ double ratioIn(Ratio r) {
 }  // namespace
 
 std::size_t LeadFit::deviationAt(Terminal lead) const {
-  std::size_t at = strains_ ? 3 : 2;
+  std::size_t at = firstDeviation();
   for (const auto& [terminal, share] : readings_.inequality) {
     if (terminal == lead) break;
     ++at;
@@ -39,11 +39,7 @@ std::size_t LeadFit::deviationAt(Terminal lead) const {
 }
 
 double LeadFit::shareOf(Terminal lead) const {
-  const auto& stated = readings_.nominal.atCalibration;
-  double sum = 0;
-  for (const auto& [terminal, tolerance] : readings_.inequality) sum += stated.lead(terminal).in(ohm);
-  if (sum <= 0) return 1;
-  return stated.lead(lead).in(ohm) * static_cast<double>(readings_.inequality.size()) / sum;
+  return shares_.at(lead);
 }
 
 double LeadFit::unitOf(std::size_t parameter) const {
@@ -61,7 +57,7 @@ LeadFit::Situation LeadFit::situationAt(const std::vector<double>& t) const {
     readings_.known[i].shift(out.model, unitOf(firstKnown_ + i) * t[firstKnown_ + i]);
   }
   const double common = std::max(0.0, valueOf(kCommon, t));
-  std::size_t deviation = strains_ ? 3 : 2;
+  std::size_t deviation = firstDeviation();
   for (const auto& [terminal, share] : readings_.inequality) {
     const Resistance own = std::max(0.0, common * shareOf(terminal) * (1 + valueOf(deviation++, t))) * ohm;
     out.model.atCalibration.lead(terminal) = out.model.inTest.lead(terminal) = own;
@@ -130,6 +126,9 @@ Result<void> LeadFit::setUp() {
   for (const auto& [terminal, share] : in.inequality)
     start_ohm += in.nominal.atCalibration.lead(terminal).in(ohm);
   start_ohm /= static_cast<double>(in.inequality.size());
+  for (const auto& [terminal, share] : in.inequality) {
+    shares_[terminal] = start_ohm > 0 ? in.nominal.atCalibration.lead(terminal).in(ohm) / start_ohm : 1;
+  }
   const std::size_t first = rows_.size();
   rows_.push_back({"common lead resistance", "ohm",
                    metrology::normal(start_ohm, in.nominal.atCalibration.arms[0].resistance.in(ohm))});
@@ -157,12 +156,10 @@ Result<double> LeadFit::chiSquaredAt(const std::vector<double>& t) const {
   return sum;
 }
 
-/// As much of a step as makes the fit no worse; nothing when no part of it does.
-Result<std::optional<std::vector<double>>> LeadFit::moved(const std::vector<double>& by) const {
+/// As much of a step as makes the fit no worse; none when no part of it does.
+Result<LeadFit::Move> LeadFit::moved(const std::vector<double>& by) const {
   constexpr int kHalvings = 20;
   constexpr double kRounding = 1e-9;
-  const auto here = chiSquaredAt(estimate_);
-  if (!here) return std::unexpected(here.error());
   double share = 1;
   for (int half = 0; half < kHalvings; ++half, share /= 2) {
     std::vector<double> next = estimate_;
@@ -172,9 +169,9 @@ Result<std::optional<std::vector<double>>> LeadFit::moved(const std::vector<doub
     next[kSpan] = std::clamp(next[kSpan], -0.9 / kSpanUnknown, 9 / kSpanUnknown);
     const auto there = chiSquaredAt(next);
     if (!there) return std::unexpected(there.error());
-    if (*there <= *here * (1 + kRounding) + kRounding) return next;
+    if (*there <= chiSquared_ * (1 + kRounding) + kRounding) return Move{std::move(next), *there};
   }
-  return std::nullopt;
+  return Move{estimate_, chiSquared_};
 }
 
 Result<void> LeadFit::search() {
@@ -183,6 +180,9 @@ Result<void> LeadFit::search() {
   for (std::size_t r = 0; r < data; ++r)
     errors.uncertainties.push_back(rows_[r].distribution.standardUncertainty);
   errors.uncertainties.resize(data + count, 1.0);
+  const auto start = chiSquaredAt(estimate_);
+  if (!start) return std::unexpected(start.error());
+  chiSquared_ = *start;
   for (int round = 0; round < kRounds; ++round) {
     const auto now = predicted(estimate_);
     if (!now) return std::unexpected(now.error());
@@ -203,22 +203,15 @@ Result<void> LeadFit::search() {
     const auto next = moved(fit->parameters);
     if (!next) return std::unexpected(next.error());
     double by = 0;
-    bool better = false;
-    if (*next) {
-      const auto before = chiSquaredAt(estimate_), after = chiSquaredAt(**next);
-      if (!before || !after) return std::unexpected(before ? after.error() : before.error());
-      better = *before - *after > kSmallGain * (1 + *after);
-      for (std::size_t j = 0; j < count; ++j) {
-        by = std::max(by, std::abs((**next)[j] - estimate_[j]) / fit->standardUncertainty(j));
-      }
-      estimate_ = **next;
+    for (std::size_t j = 0; j < count; ++j) {
+      by = std::max(by, std::abs(next->to[j] - estimate_[j]) / fit->standardUncertainty(j));
     }
+    const bool better = chiSquared_ - next->chiSquared > kSmallGain * (1 + next->chiSquared);
+    estimate_ = next->to;
+    chiSquared_ = next->chiSquared;
     // Steps that do not fit at all creep towards the best there is.
     if (by > 1e-4 && better) continue;
     covariance_ = fit->covariance;
-    const auto chi = chiSquaredAt(estimate_);  // of what is returned, not of a step that a bound cut short
-    if (!chi) return std::unexpected(chi.error());
-    chiSquared_ = *chi;
     gain_ = metrology::Matrix(count, data + count);  // C J^T / u^2
     for (std::size_t i = 0; i < count; ++i) {
       for (std::size_t r = 0; r < data + count; ++r) {
@@ -275,13 +268,14 @@ Result<std::vector<double>> LeadFit::slopesOfStep(std::size_t shunt, const bridg
     if (!step) return std::unexpected(step.error());
     return at.span * ratioIn(*step);
   };
+  const auto low = stepAt(estimate_);
+  if (!low) return std::unexpected(low.error());
   std::vector<double> out;
   for (std::size_t j = 0; j < parameters(); ++j) {
     std::vector<double> up = estimate_;
     up[j] += j <= kSpan ? kSpanStep : kStep;
-    const auto high = stepAt(up), low = stepAt(estimate_);
+    const auto high = stepAt(up);
     if (!high) return std::unexpected(high.error());
-    if (!low) return std::unexpected(low.error());
     out.push_back((*high - *low) / (up[j] - estimate_[j]));
   }
   return out;

@@ -83,18 +83,24 @@ class LeadFit {
   Result<void> setUp();
   Result<void> search();
   Result<double> chiSquaredAt(const std::vector<double>& t) const;
-  Result<std::optional<std::vector<double>>> moved(const std::vector<double>& by) const;
+  struct Move {
+    std::vector<double> to;
+    double chiSquared = 0;
+  };
+  Result<Move> moved(const std::vector<double>& by) const;
+  std::size_t firstDeviation() const { return strains_ ? 3 : 2; }
   Result<std::vector<double>> predicted(const std::vector<double>& t) const;  ///< of the data rows
   Result<metrology::Matrix> slopes(const std::vector<double>& t) const;       ///< data rows x parameters
 
   LeadReadings readings_;
   std::vector<std::size_t> measured_;  ///< which shunts
   bool strains_ = false;               ///< the standing strain is a parameter
+  std::map<description::Terminal, double> shares_;
   std::size_t firstKnown_ = 0;
   std::vector<metrology::Input> rows_;
   std::vector<double> estimate_;
   metrology::Matrix covariance_, gain_;
-  double chiSquared_ = 0;
+  double chiSquared_ = 0;  ///< of the estimate
 };
 
 }  // namespace shuntwright::calibration

@@ -188,10 +188,7 @@ LeadIdentification identified(const LeadFit& fit) {
   const Direction g = meanDirection(fit);
   const auto contributions = contributionsOf(fit, g);
   const auto situation = fit.situationAt(t);
-  const auto leads = carriers(fit);
-  for (const Terminal lead : leads) {
-    out.resistance += situation.model.atCalibration.lead(lead) / static_cast<double>(leads.size());
-  }
+  out.resistance = meanLead(situation.model.atCalibration);
   out.expandedUncertainty = expanded(fit, contributions);
   out.span = situation.span;
   const auto& c = fit.covariance();

@@ -162,10 +162,14 @@ bool has(const ChannelResult& result, std::initializer_list<std::string_view> co
       result.findings, [&](const Finding& f) { return std::ranges::find(codes, f.code) != codes.end(); });
 }
 
+/// A step that is not what it seems bends every line and misleads every fit; it has been told already.
+bool stepsAreDoubtful(const ChannelResult& result) {
+  return has(result, {"relay-error", "step-missing", "wrong-sign", "saturated"});
+}
+
 /// Do several shunts tell of one straight chain?
 void straightness(ChannelResult& result, const description::Limits& limits) {
-  // A step that is not what it seems bends every line; it has been told already.
-  if (!result.straightness || has(result, {"relay-error", "step-missing", "wrong-sign", "saturated"})) return;
+  if (!result.straightness || stepsAreDoubtful(result)) return;
   const Straightness& line = *result.straightness;
   const Bound bound(limits.linearity.in(percent), limits);
   if (!bound.holds(line.worst_percent, line.expandedUncertainty_percent)) {
@@ -186,8 +190,7 @@ void straightness(ChannelResult& result, const description::Limits& limits) {
 }
 
 void leadsAsStated(ChannelResult& result, const description::Limits& limits) {
-  if (!result.leads || !result.leads->identifiable) return;
-  if (has(result, {"relay-error", "step-missing", "wrong-sign", "saturated"})) return;
+  if (!result.leads || !result.leads->identifiable || stepsAreDoubtful(result)) return;
   const double stated = result.leads->stated.in(ohm);
   const Bound bound(limits.leadDeviation.in(percent), limits);
   const double off = stated > 0 ? 100 * std::abs(result.leads->resistance.in(ohm) / stated - 1) : 0;
